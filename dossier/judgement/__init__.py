@@ -1,0 +1,1 @@
+"""Compares findings with what the engineer asked for."""

@@ -1,0 +1,91 @@
+"""The polynomial whose sign decides the decrease of V, and its Bernstein form over a parameter box.
+
+Continuous time: V' = g / D with g = sum_i (dV/dy_i) N_i.  Sampled: V(N/D) - V = g / D^d with
+g = D^d V(N/D) - D^d V and d the degree of V.  N and D as in `dossier.model.polynomial.OffsetField`.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
+from fractions import Fraction
+from itertools import product
+from math import comb, prod
+
+from flint import fmpq_mpoly
+
+from dossier.model.polynomial import Exponents, OffsetField, Ring
+from dossier.model.region import Box
+
+
+@dataclass(frozen=True)
+class DecreaseForm:
+    """`numerator` = g, divided by the denominator D to the power `denominator_power` it gives V' (or the step)."""
+
+    numerator: fmpq_mpoly
+    denominator_power: int
+
+
+def function_in(ring: Ring, function: Mapping[Exponents, Fraction]) -> fmpq_mpoly:
+    """V, given over the offsets, as a polynomial of `ring` (whose first names are the offsets)."""
+    padding = len(ring.names)
+    return ring.from_terms({(*e, *([0] * (padding - len(e)))): c for e, c in function.items()})
+
+
+def decrease_form(field: OffsetField, function: Mapping[Exponents, Fraction]) -> DecreaseForm:
+    """g and the power of D for V = `function` along `field`."""
+    ring = field.ring
+    v = function_in(ring, function)
+    if not field.sampled:
+        g = ring.constant(Fraction(0))
+        for i, numerator in enumerate(field.numerators):
+            g = g + v.derivative(i) * numerator
+        return DecreaseForm(g, 1)
+    degree = max(sum(e) for e in function)
+    g = -(v * field.denominator**degree)
+    for exponents, coefficient in function.items():
+        term = ring.constant(coefficient) * field.denominator ** (degree - sum(exponents))
+        for numerator, count in zip(field.numerators, exponents, strict=True):
+            term = term * numerator**count
+        g = g + term
+    return DecreaseForm(g, degree)
+
+
+def bernstein_coefficients(
+    polynomial: fmpq_mpoly, ring: Ring, parameters: Box
+) -> Iterator[tuple[Exponents, fmpq_mpoly]]:
+    """Bernstein coefficients of `polynomial` over the box of the parameters named there.
+
+    With p_j = l_j + (u_j - l_j) t_j and degree d_j in p_j, the coefficient of index b is
+    sum_k prod_j C(b_j, k_j)/C(d_j, k_j) a_k, a_k being the coefficient of t^k (S. N. Bernstein 1912;
+    any text on Bezier forms).  The Bernstein basis is non-negative and sums to 1 on the box, so a sign
+    shared by all coefficients is the sign of `polynomial`.  For degree 1 they are the vertex values.
+    """
+    places = [ring.names.index(n) for n in parameters.names]
+    scaled = polynomial
+    if places:
+        images = list(ring.context.gens())
+        for place, side in zip(places, parameters.intervals, strict=True):
+            images[place] = ring.constant(side.lower) + ring.constant(side.width) * ring.context.gen(place)
+        scaled = polynomial.compose(*images, ctx=ring.context)
+    degrees = [int(scaled.degrees()[place]) for place in places]
+    power_form: dict[Exponents, dict[Exponents, object]] = {}
+    for exponents, coefficient in scaled.to_dict().items():
+        k = tuple(int(exponents[place]) for place in places)
+        rest = tuple(0 if i in places else int(e) for i, e in enumerate(exponents))
+        power_form.setdefault(k, {})[rest] = coefficient
+    parts = {k: ring.context.from_dict(d) for k, d in power_form.items()}
+    for index in product(*(range(d + 1) for d in degrees)):
+        total = ring.constant(Fraction(0))
+        for k, part in parts.items():
+            if all(a <= b for a, b in zip(k, index, strict=True)):
+                weight = prod((Fraction(comb(b, a), comb(d, a)) for a, b, d in zip(k, index, degrees, strict=True)),
+                              start=Fraction(1))
+                total = total + part * ring.constant(weight)
+        yield index, total
+
+
+def bernstein_count(polynomial: fmpq_mpoly, ring: Ring, parameters: Box) -> int:
+    """How many coefficients `bernstein_coefficients` yields."""
+    degrees = polynomial.degrees() if not polynomial.is_zero() else [0] * len(ring.names)
+    return prod(int(degrees[ring.names.index(n)]) + 1 for n in parameters.names)

@@ -1,0 +1,1 @@
+"""Says what was found; computes nothing."""

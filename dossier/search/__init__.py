@@ -1,0 +1,1 @@
+"""Finds candidates in floating point; nothing here is believed."""
