@@ -6,7 +6,9 @@ from dataclasses import dataclass
 from fractions import Fraction
 from typing import Final, Literal
 
-from dossier.model.ball import Ball
+from flint import arb
+
+from dossier.model.ball import WORKING_BITS, Ball, enclose, from_arb, precision
 from dossier.model.expression import Expression
 from dossier.model.region import Box, Interval
 
@@ -161,3 +163,14 @@ class Case:
     def identifier(self) -> str:
         """The operating point's id, the prefix of the ids of its criteria and evidence."""
         return self.name
+
+
+def value_of(quantity: Quantity) -> Ball:
+    """The SI value (dB for gains) of a stated quantity; exact unless it carries pi."""
+    if quantity.pi_power == 0:
+        return Ball(quantity.factor)
+    with precision(WORKING_BITS):
+        value = from_arb(arb.pi() ** quantity.pi_power * enclose(Ball(quantity.factor)))
+    if value is None:
+        raise ArithmeticError(f"{quantity.written} has no finite value")
+    return value

@@ -79,8 +79,10 @@ def bernstein_coefficients(
         total = ring.constant(Fraction(0))
         for k, part in parts.items():
             if all(a <= b for a, b in zip(k, index, strict=True)):
-                weight = prod((Fraction(comb(b, a), comb(d, a)) for a, b, d in zip(k, index, degrees, strict=True)),
-                              start=Fraction(1))
+                weight = prod(
+                    (Fraction(comb(b, a), comb(d, a)) for a, b, d in zip(k, index, degrees, strict=True)),
+                    start=Fraction(1),
+                )
                 total = total + part * ring.constant(weight)
         yield index, total
 

@@ -317,7 +317,7 @@ def to_text(expression: Expression) -> str:
                 text += f" - {part[0][1:]}" if argument.op == "neg" else f" + {wrap(part, 2)}"
             return text, 1
         if node.op == "neg":
-            return f"-{wrap(parts[0], 3)}", 2 if parts[0][1] >= 3 else 2
+            return f"-{wrap(parts[0], 3)}", 2
         if node.op == "mul":
             return "*".join(wrap(p, 3 if i else 2) for i, p in enumerate(parts)), 2
         if node.op == "div":

@@ -15,7 +15,7 @@ Strength = Literal["exact", "enclosed", "floating", "sampled"]
 
 @dataclass(frozen=True, slots=True)
 class Enclosure:
-    """A measured quantity as a closed enclosure in SI (or the unit named); an end None: no finite value exists there."""
+    """A measured quantity as a closed enclosure in `unit`; an end None: no finite value exists there."""
 
     lower: Fraction | None
     upper: Fraction | None

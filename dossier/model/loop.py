@@ -18,6 +18,8 @@ from dossier.model.expression import (
     symbol,
     to_data,
 )
+from dossier.model.expression import names as symbols_of
+from dossier.model.region import Interval
 
 LOOP_INPUT = "loop input"
 """Name of the free input that replaces a command where its loop is opened; no project name has a space."""
@@ -43,8 +45,6 @@ def inline_signals(expression: Expression, model: Model) -> Expression:
 
 def ordered_signals(model: Model) -> tuple[str, ...]:
     """Signal names such that each uses only earlier ones.  Raises ValueError on a cycle."""
-    from dossier.model.expression import names as symbols_of
-
     open_names = {s.name: symbols_of(s.expression) & {t.name for t in model.signals} for s in model.signals}
     order: list[str] = []
     while open_names:
@@ -150,7 +150,7 @@ def model_data(case: Case) -> dict[str, object]:
     }
 
 
-def _sides(interval) -> list[str | None]:
+def _sides(interval: Interval) -> list[str | None]:
     return [None if v is None else str(v) for v in (interval.lower, interval.upper)]
 
 

@@ -13,10 +13,11 @@ from __future__ import annotations
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import reduce
 
 from flint import Ordering, fmpq_mpoly, fmpq_mpoly_ctx
 
-from dossier.model.ball import Ball, WORKING_BITS, enclose, evaluate, from_arb, precision, to_fmpq, to_fraction
+from dossier.model.ball import WORKING_BITS, Ball, enclose, evaluate, from_arb, precision, to_fmpq, to_fraction
 from dossier.model.expression import Expression, fold, names, number, rebuild, substitute, symbol
 
 Exponents = tuple[int, ...]
@@ -81,53 +82,55 @@ def quotient_of(expression: Expression, ring: Ring, values: Mapping[str, Quotien
 
     Fails with a `NotRational` value for elementary functions, roots and kinks of anything.
     """
-    one = ring.constant(Fraction(1))
 
     def visit(node: Expression, args: tuple[Quotient | NotRational, ...]) -> Quotient | NotRational:
-        for a in args:
-            if isinstance(a, NotRational):
-                return a
-        op = node.op
-        if op == "number":
-            return Quotient(ring.constant(node.value), one)
-        if op == "symbol":
-            return values[str(node.value)]
-        if op == "neg":
-            return Quotient(-args[0].numerator, args[0].denominator)
-        if op == "add":
-            total = args[0]
-            for a in args[1:]:
-                total = _reduced(
-                    total.numerator * a.denominator + a.numerator * total.denominator,
-                    total.denominator * a.denominator,
-                )
-            return total
-        if op == "mul":
-            total = args[0]
-            for a in args[1:]:
-                total = _reduced(total.numerator * a.numerator, total.denominator * a.denominator)
-            return total
-        if op == "div":
-            if args[1].numerator.is_zero():
-                return NotRational("division by an expression that is identically zero", node)
-            return _reduced(args[0].numerator * args[1].denominator, args[0].denominator * args[1].numerator)
-        if op == "pow" and node.value.denominator == 1:
-            k = int(node.value)
-            if k > 0:
-                return Quotient(args[0].numerator**k, args[0].denominator**k)
-            if args[0].numerator.is_zero():
-                return NotRational("division by an expression that is identically zero", node)
-            return _reduced(args[0].denominator ** (-k), args[0].numerator ** (-k))
-        return NotRational(f"{op} of an expression that depends on the variables", node)
+        quotients = [a for a in args if isinstance(a, Quotient)]
+        if len(quotients) < len(args):
+            return next(a for a in args if isinstance(a, NotRational))
+        return _combine(node, quotients, ring, values)
 
     return fold(expression, visit)
 
 
-@dataclass(frozen=True)
-class Constants:
-    """Uncertain constants split off an expression: symbol name -> its enclosure."""
+def _combine(
+    node: Expression, args: list[Quotient], ring: Ring, values: Mapping[str, Quotient]
+) -> Quotient | NotRational:
+    one = ring.constant(Fraction(1))
+    if node.op == "number":
+        return Quotient(ring.constant(Fraction(node.value or 0)), one)
+    if node.op == "symbol":
+        return values[str(node.value)]
+    if node.op == "neg":
+        return Quotient(-args[0].numerator, args[0].denominator)
+    if node.op == "add":
+        return reduce(_sum, args)
+    if node.op == "mul":
+        return reduce(_product, args)
+    if node.op == "div":
+        return _product(args[0], _inverse(args[1])) if args[1].numerator else _pole(node)
+    if node.op == "pow" and _whole_power(node):
+        count = int(Fraction(node.value or 0))
+        if count < 0 and not args[0].numerator:
+            return _pole(node)
+        base = _inverse(args[0]) if count < 0 else args[0]
+        return Quotient(base.numerator ** abs(count), base.denominator ** abs(count))
+    return NotRational(f"{node.op} of an expression that depends on the variables", node)
 
-    balls: Mapping[str, Ball]
+
+def _sum(a: Quotient, b: Quotient) -> Quotient:
+    return _reduced(a.numerator * b.denominator + b.numerator * a.denominator, a.denominator * b.denominator)
+
+
+def _product(a: Quotient, b: Quotient) -> Quotient:
+    return _reduced(a.numerator * b.numerator, a.denominator * b.denominator)
+
+
+def _inverse(a: Quotient) -> Quotient:
+    return _reduced(a.denominator, a.numerator)
+
+
+def _pole(node: Expression) -> NotRational:
+    return NotRational("division by an expression that is identically zero", node)
 
 
 def split_constants(
@@ -239,9 +242,7 @@ def offset_field(
         denominator = denominator * (q.denominator / denominator.gcd(q.denominator))
     cleared = [q.numerator * (denominator / q.denominator) for q in quotients]
     numerators, vanish = zip(*(_without_offset_free_terms(p, ring, len(states)) for p in cleared), strict=True)
-    return OffsetField(
-        ring, states, tuple(symbolic), {**balls, **shift}, numerators, denominator, sampled, all(vanish)
-    )
+    return OffsetField(ring, states, tuple(symbolic), {**balls, **shift}, numerators, denominator, sampled, all(vanish))
 
 
 def _without_offset_free_terms(polynomial: fmpq_mpoly, ring: Ring, count: int) -> tuple[fmpq_mpoly, bool]:

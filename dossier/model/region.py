@@ -50,13 +50,13 @@ class Interval:
 
     def contains(self, other: Interval, *, strictly: bool = False) -> bool:
         """`other` lies inside; with `strictly`, inside the interior (an unbounded side is always clear)."""
-        if self.lower is not None:
-            if other.lower is None or other.lower < self.lower or (strictly and other.lower == self.lower):
-                return False
-        if self.upper is not None:
-            if other.upper is None or other.upper > self.upper or (strictly and other.upper == self.upper):
-                return False
-        return True
+        below = self.lower is not None and (
+            other.lower is None or other.lower < self.lower or (strictly and other.lower == self.lower)
+        )
+        above = self.upper is not None and (
+            other.upper is None or other.upper > self.upper or (strictly and other.upper == self.upper)
+        )
+        return not (below or above)
 
     def shift(self, offset: Fraction) -> Interval:
         """The interval moved by `offset`."""

@@ -18,8 +18,10 @@ from dossier.model.ball import Ball
 from dossier.model.claim import KINDS, Claim, kind_of
 from dossier.model.region import Box, Interval
 
+PAIR = 2
 
-class MalformedClaim(ValueError):
+
+class MalformedClaimError(ValueError):
     """A certificate file that is not the canonical text of a claim."""
 
 
@@ -59,13 +61,13 @@ def claim_to_data(claim: Claim) -> dict[str, Any]:
 
 
 def claim_from_data(data: Any) -> Claim:
-    """Inverse of `claim_to_data`.  Raises MalformedClaim, naming the place, for anything else."""
+    """Inverse of `claim_to_data`.  Raises MalformedClaimErrorError, naming the place, for anything else."""
     if not isinstance(data, dict) or data.get("kind") not in KINDS:
-        raise MalformedClaim("kind: expected one of " + ", ".join(KINDS))
+        raise MalformedClaimError("kind: expected one of " + ", ".join(KINDS))
     kind = KINDS[data["kind"]]
     claim = _decode(kind, {k: v for k, v in data.items() if k != "kind"}, "claim")
     if claim_to_data(claim) != data:
-        raise MalformedClaim("claim: not in canonical form")
+        raise MalformedClaimError("claim: not in canonical form")
     return claim
 
 
@@ -91,18 +93,18 @@ def _decode(expected: Any, data: Any, place: str) -> Any:
         return _decode_record(typing.cast(type, expected), data, place)
     if expected in (int, bool, str) and type(data) is expected:
         return data
-    raise MalformedClaim(f"{place}: expected {getattr(expected, '__name__', expected)}")
+    raise MalformedClaimError(f"{place}: expected {getattr(expected, '__name__', expected)}")
 
 
 def _one_of(options: tuple[Any, ...], data: Any, place: str) -> Any:
     if data not in options:
-        raise MalformedClaim(f"{place}: expected one of {', '.join(map(str, options))}")
+        raise MalformedClaimError(f"{place}: expected one of {', '.join(map(str, options))}")
     return data
 
 
 def _decode_tuple(parts: tuple[Any, ...], data: Any, place: str) -> tuple[Any, ...]:
     if not isinstance(data, list):
-        raise MalformedClaim(f"{place}: expected a list")
+        raise MalformedClaimError(f"{place}: expected a list")
     return tuple(_decode(parts[0], d, f"{place}[{i}]") for i, d in enumerate(data))
 
 
@@ -110,50 +112,50 @@ def _decode_mapping(parts: tuple[Any, ...], data: Any, place: str) -> dict[Any, 
     key, value = parts
     if key is str:
         if not isinstance(data, dict):
-            raise MalformedClaim(f"{place}: expected an object")
+            raise MalformedClaimError(f"{place}: expected an object")
         return {k: _decode(value, v, f"{place}.{k}") for k, v in data.items()}
-    if not isinstance(data, list) or not all(isinstance(d, list) and len(d) == 2 for d in data):
-        raise MalformedClaim(f"{place}: expected a list of pairs")
+    if not isinstance(data, list) or not all(isinstance(d, list) and len(d) == PAIR for d in data):
+        raise MalformedClaimError(f"{place}: expected a list of pairs")
     pairs = [(_decode(key, k, place), _decode(value, v, place)) for k, v in data]
     if [k for k, _ in pairs] != sorted({k for k, _ in pairs}):
-        raise MalformedClaim(f"{place}: monomials repeated or out of order")
+        raise MalformedClaimError(f"{place}: monomials repeated or out of order")
     return dict(pairs)
 
 
 def _decode_fraction(data: Any, place: str) -> Fraction:
     if not isinstance(data, str):
-        raise MalformedClaim(f"{place}: expected a fraction as text")
+        raise MalformedClaimError(f"{place}: expected a fraction as text")
     try:
         value = Fraction(data)
     except (ValueError, ZeroDivisionError) as error:
-        raise MalformedClaim(f"{place}: expected a fraction, got {data!r}") from error
+        raise MalformedClaimError(f"{place}: expected a fraction, got {data!r}") from error
     if str(value) != data:
-        raise MalformedClaim(f"{place}: {data!r} is not in lowest terms")
+        raise MalformedClaimError(f"{place}: {data!r} is not in lowest terms")
     return value
 
 
 def _decode_ball(data: Any, place: str) -> Ball:
     if isinstance(data, str):
         return Ball(_decode_fraction(data, place))
-    if isinstance(data, list) and len(data) == 2:
+    if isinstance(data, list) and len(data) == PAIR:
         radius = _decode_fraction(data[1], place)
         if radius >= 0:
             return Ball(_decode_fraction(data[0], place), radius)
-    raise MalformedClaim(f"{place}: expected a ball")
+    raise MalformedClaimError(f"{place}: expected a ball")
 
 
 def _decode_interval(data: Any, place: str) -> Interval:
-    if not isinstance(data, list) or len(data) != 2:
-        raise MalformedClaim(f"{place}: expected two bounds")
+    if not isinstance(data, list) or len(data) != PAIR:
+        raise MalformedClaimError(f"{place}: expected two bounds")
     lower, upper = (None if d is None else _decode_fraction(d, place) for d in data)
     if lower is not None and upper is not None and lower > upper:
-        raise MalformedClaim(f"{place}: empty interval")
+        raise MalformedClaimError(f"{place}: empty interval")
     return Interval(lower, upper)
 
 
 def _decode_box(data: Any, place: str) -> Box:
     if not isinstance(data, dict) or set(data) != {"names", "sides"} or len(data["names"]) != len(data["sides"]):
-        raise MalformedClaim(f"{place}: expected a box")
+        raise MalformedClaimError(f"{place}: expected a box")
     names = tuple(_decode(str, n, f"{place}.names") for n in data["names"])
     return Box(names, tuple(_decode_interval(s, f"{place}.{n}") for n, s in zip(names, data["sides"], strict=True)))
 
@@ -161,5 +163,5 @@ def _decode_box(data: Any, place: str) -> Box:
 def _decode_record(kind: type, data: Any, place: str) -> Any:
     hints = typing.get_type_hints(kind)
     if not isinstance(data, dict) or set(data) != set(hints):
-        raise MalformedClaim(f"{place}: expected exactly the fields {', '.join(hints)}")
+        raise MalformedClaimError(f"{place}: expected exactly the fields {', '.join(hints)}")
     return kind(**{name: _decode(hint, data[name], f"{place}.{name}") for name, hint in hints.items()})

@@ -1,0 +1,252 @@
+"""Verify a quadratic Lyapunov certificate exactly: definiteness, decrease over the whole set and parameter box.
+
+Theorems T2 and T3 with T7 (`dossier.model.theorem`).  The set is Omega = {V <= level} with V = y'Py and
+P > 0, an ellipsoid, hence compact and connected; its bounding box is |y_i| <= sqrt(level (P^-1)_ii).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
+from fractions import Fraction
+
+from flint import arb
+
+from dossier.checks.boxes import condition_holds, constant_sign
+from dossier.checks.exact import (
+    expand,
+    inverse,
+    is_positive_definite,
+    is_positive_gram,
+    is_positive_semidefinite,
+    is_well_formed,
+    multiply,
+    root_above,
+    subtract,
+    vanishes_only_at_zero,
+)
+from dossier.model.ball import Ball, to_fmpq
+from dossier.model.case import NOMINAL, Case, Scope
+from dossier.model.claim import DecreaseWitness, LyapunovClaim, Matrix
+from dossier.model.decrease import bernstein_coefficients, bernstein_count, decrease_form
+from dossier.model.equilibrium import Equilibrium
+from dossier.model.expression import conditions
+from dossier.model.finding import Finding, Premise, Result, Strength, weakest
+from dossier.model.loop import model_hash, vector_field
+from dossier.model.polynomial import Exponents, NotRational, OffsetField, collapse, offset_field, terms
+from dossier.model.region import Box, Interval
+
+QUADRATIC = 2
+
+
+@dataclass(frozen=True, slots=True)
+class Ellipsoid:
+    """{y'Py <= level} with its exact inverse P^-1 and rational half widths at or above the true ones."""
+
+    matrix: Matrix
+    inverse: Matrix
+    level: Fraction
+    half_widths: tuple[Fraction, ...]
+
+
+def quadratic_matrix(function: Mapping[Exponents, Fraction], size: int) -> Matrix | None:
+    """P of V = y'Py, or None where V is not a quadratic form in `size` variables."""
+    matrix = [[Fraction(0)] * size for _ in range(size)]
+    for exponents, coefficient in function.items():
+        if len(exponents) != size or sum(exponents) != QUADRATIC or min(exponents) < 0:
+            return None
+        places = [i for i, k in enumerate(exponents) for _ in range(k)]
+        i, j = places
+        matrix[i][j] += coefficient / 2
+        matrix[j][i] += coefficient / 2
+    return tuple(tuple(row) for row in matrix)
+
+
+def ellipsoid(claim: LyapunovClaim, size: int) -> Ellipsoid | None:
+    """The set of a quadratic claim, or None unless P is proved positive definite and the level positive."""
+    matrix = quadratic_matrix(claim.function, size)
+    if matrix is None or claim.level <= 0 or not is_positive_definite(matrix):
+        return None
+    inverted = inverse(matrix)
+    if inverted is None:
+        return None
+    widths = tuple(root_above(claim.level * inverted[i][i]) for i in range(size))
+    return Ellipsoid(matrix, inverted, claim.level, widths)
+
+
+def spread_box(case: Case) -> Box:
+    """Every parameter with a spread, in the model's order."""
+    free = [p for p in case.model.parameters if not p.spread.is_point]
+    return Box(tuple(p.name for p in free), tuple(p.spread for p in free))
+
+
+def parameter_box(case: Case, over: Scope) -> Box:
+    """All parameters: the nominal balls, or each one's whole spread."""
+    sides = tuple(
+        Interval(p.nominal.lower, p.nominal.upper) if over == NOMINAL else p.spread for p in case.model.parameters
+    )
+    return Box(tuple(p.name for p in case.model.parameters), sides)
+
+
+def absolute_box(equilibrium: Equilibrium, names: tuple[str, ...], half_widths: tuple[Fraction, ...]) -> Box:
+    """The bounding box of the set in absolute coordinates, whatever the equilibrium's exact place in its ball."""
+    return Box(
+        names,
+        tuple(Interval(b.lower - w, b.upper + w) for b, w in zip(equilibrium.state, half_widths, strict=True)),
+    )
+
+
+def check_lyapunov(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim) -> Finding:
+    """Verify every premise of T2 (T3 for sampled models) for the set of `claim`, without its region.
+
+    Undecided, never proved, where anything is missing or another model was meant.
+    """
+    theorem = "T3" if case.model.time == "sampled" else "T2"
+    premises = tuple(_premises(case, equilibrium, claim))
+    result, strength = weakest(premises)
+    return Finding(
+        claim.identifier, "exact", result, strength, claim.over, theorem, _statement(case, claim), premises,
+        evidence=(claim.identifier,),
+    )  # fmt: skip
+
+
+def _statement(case: Case, claim: LyapunovClaim) -> str:
+    verb = "falls from every sample to the next" if case.model.time == "sampled" else "decreases along every motion"
+    scope = "at the nominal parameters" if claim.over == NOMINAL else "for every parameter combination"
+    return f"V is positive and {verb} in the set V ≤ {claim.level} around {claim.equilibrium}, {scope}"
+
+
+def _premises(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim) -> Iterator[Premise]:
+    ident = claim.identifier
+    if claim.model_hash != model_hash(case) or claim.equilibrium != equilibrium.identifier:
+        yield _premise("model", "the certificate is about this closed loop and equilibrium", False, ident)
+        return
+    names = case.model.state_names
+    shape = ellipsoid(claim, len(names))
+    yield _premise("d", "V = y'Py with P positive definite and a positive level", shape is not None, ident)
+    expected = Box((), ()) if claim.over == NOMINAL else spread_box(case)
+    yield _premise("scope", "the parameter box is the one asked for", claim.parameters == expected, ident)
+    if shape is None or claim.parameters != expected:
+        return
+    yield from _place(case, equilibrium, claim, shape)
+    yield from _decrease(case, equilibrium, claim, shape)
+
+
+def _premise(
+    label: str, statement: str, shown: bool, evidence: str, strength: Strength = "exact", detail: str = ""
+) -> Premise:
+    result: Result = "proved" if shown else "undecided"
+    return Premise(label, statement, result, strength, detail, evidence)
+
+
+def _place(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, shape: Ellipsoid) -> Iterator[Premise]:
+    """T2 (b) and (c): the set lies in the open domain, and the equations are regular there."""
+    names = case.model.state_names
+    place = absolute_box(equilibrium, names, shape.half_widths)
+    inside = case.model.domain.contains(place, strictly=True)
+    yield _premise(
+        "b", "the set is compact and lies in the interior of the domain", inside, claim.identifier,
+        detail=f"bounding box of the set {_sides(place)}",
+    )  # fmt: skip
+    parameters = parameter_box(case, claim.over)
+    whole = Box((*place.names, *parameters.names), (*place.intervals, *parameters.intervals))
+    asked = list(dict.fromkeys(c for e in vector_field(case).equations for c in conditions(e)))
+    proofs = [condition_holds(c, whole) for c in asked]
+    yield _premise(
+        "c", "the right-hand side is smooth near the set: denominators, roots and logarithms stay regular",
+        all(p.holds for p in proofs), claim.identifier, "enclosed" if asked else "exact",
+        f"{len(asked)} conditions on the bounding box, {sum(p.pieces for p in proofs)} pieces"
+        if asked else "no denominator, root or logarithm",
+    )  # fmt: skip
+
+
+def _sides(box: Box) -> str:
+    return ", ".join(f"{n} in [{float(i.lower):.6g}, {float(i.upper):.6g}]" for n, i in box.items())
+
+
+def certified_field(case: Case, equilibrium: Equilibrium, over: Scope) -> OffsetField | NotRational:
+    """The closed loop in offsets from `equilibrium` over the scope's symbolic parameters."""
+    symbolic = () if over == NOMINAL else spread_box(case).names
+    loop = vector_field(case)
+    return offset_field(
+        loop.equations, loop.states, equilibrium.state,
+        {p.name: p.nominal for p in case.model.parameters}, symbolic, sampled=loop.sampled,
+    )  # fmt: skip
+
+
+def _decrease(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, shape: Ellipsoid) -> Iterator[Premise]:
+    """T2 (e) and the conditions of T7."""
+    ident = claim.identifier
+    try:
+        field = certified_field(case, equilibrium, claim.over)
+    except ArithmeticError as error:
+        yield _premise("polynomial", "the equations have finite constants", False, ident, detail=str(error))
+        return
+    if isinstance(field, NotRational):
+        yield _premise("polynomial", "the equations are quotients of polynomials", False, ident, detail=field.reason)
+        return
+    if claim.over != NOMINAL:
+        yield _premise(
+            "fixed", "the equilibrium is the same for every parameter combination",
+            field.constant_terms_vanish and all(b.is_exact for b in equilibrium.state), ident,
+        )  # fmt: skip
+    form = decrease_form(field, claim.function)
+    sign = _denominator_sign(field, claim, shape, form.denominator_power)
+    yield _premise(
+        "polynomial", "the cleared denominator keeps one sign on the set", sign != 0, ident,
+        "exact" if field.denominator.is_constant() else "enclosed",
+    )  # fmt: skip
+    if sign == 0:
+        return
+    numerator = form.numerator * field.ring.constant(Fraction(sign))
+    expected = bernstein_count(numerator, field.ring, claim.parameters)
+    complete = expected == len(claim.decrease)
+    shown = 0
+    if complete:
+        pairs = zip(bernstein_coefficients(numerator, field.ring, claim.parameters), claim.decrease, strict=True)
+        for (index, coefficient), witness in pairs:
+            target = collapse(-coefficient, field.ring, len(field.states), field.balls)
+            if witness.index != index or not _decreases(target, witness, claim, len(field.states)):
+                break
+            shown += 1
+    strength: Strength = "exact" if not field.balls else "enclosed"
+    yield _premise(
+        "e", "V decreases everywhere in the set but at the equilibrium", complete and shown == expected, ident,
+        strength, f"{shown} of {expected} "
+        + ("identities" if claim.over == NOMINAL else "Bernstein coefficients over the parameter box")
+        + " shown by positive definite Gram matrices",
+    )  # fmt: skip
+
+
+def _denominator_sign(field: OffsetField, claim: LyapunovClaim, shape: Ellipsoid, power: int) -> int:
+    """The proved sign of D**power on the set times the parameter box, or 0."""
+    ring = field.ring
+    sides = [Interval(-w, w) for w in shape.half_widths]
+    sides += list(claim.parameters.intervals)
+    sides += [Interval(field.balls[n].lower, field.balls[n].upper) for n in ring.names[len(sides) :]]
+    coefficients = terms(field.denominator)
+
+    def value(environment: Mapping[str, arb]) -> arb:
+        total = arb(0)
+        for exponents, coefficient in coefficients.items():
+            term = arb(to_fmpq(coefficient))
+            for name, count in zip(ring.names, exponents, strict=True):
+                for _ in range(count):
+                    term = term * environment[name]
+            total = total + term
+        return total
+
+    proof = constant_sign(value, Box(ring.names, tuple(sides)))
+    return 0 if not proof.holds else proof.sign**power
+
+
+def _decreases(target: Mapping[Exponents, Ball], witness: DecreaseWitness, claim: LyapunovClaim, size: int) -> bool:
+    """-g = main + multiplier (level - V) with main positive away from zero and multiplier >= 0 on the whole space."""
+    main, multiplier = witness.main, witness.multiplier
+    if not (is_well_formed(main, size) and is_well_formed(multiplier, size)):
+        return False
+    if not vanishes_only_at_zero(main.basis, size) or not is_positive_semidefinite(multiplier.matrix):
+        return False
+    gap = {e: -c for e, c in claim.function.items()}
+    gap[(0,) * size] = claim.level
+    return is_positive_gram(subtract(target, multiply(expand(multiplier), gap)), main)
