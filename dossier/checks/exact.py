@@ -46,8 +46,8 @@ def is_positive_definite(matrix: Sequence[Sequence[Fraction]]) -> bool:
     """x' M x > 0 for every x != 0, decided exactly; False for a matrix that is not symmetric.
 
     The eigenvalues of a symmetric M are real, and all are positive exactly when every coefficient of
-    det(M + s I) is positive: then no s >= 0 is a root, so no eigenvalue is <= 0; conversely the coefficients are the elementary
-    symmetric functions of the eigenvalues (R. Descartes' rule of signs; any text on matrix analysis).
+    det(M + s I) is positive: then no s >= 0 is a root, so no eigenvalue is <= 0; conversely the
+    coefficients are the elementary symmetric functions of the eigenvalues (any text on matrix analysis).
     The empty matrix is positive definite.
     """
     return is_symmetric(matrix) and (not matrix or all(e > 0 for e in _sign_pattern(matrix)))

@@ -121,8 +121,6 @@ def _evaluate_node(node: Expression, args: tuple[arb, ...], environment: Mapping
             total = total + term
         return total
     if op == "mul":
-        if len(args) == 2 and args[0] is args[1]:
-            return square(args[0])
         total = args[0]
         for factor in args[1:]:
             total = total * factor

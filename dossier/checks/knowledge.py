@@ -1,0 +1,54 @@
+"""What the checks have established about one operating point, before the criteria are looked at."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+from dossier.model.case import NOMINAL, Case, Scope
+from dossier.model.claim import Claim, CoverClaim, LyapunovClaim
+from dossier.model.equilibrium import Equilibrium
+from dossier.model.finding import Enclosure, Finding, Premise
+from dossier.model.outcome import LoopMargins
+
+
+@dataclass(frozen=True, slots=True)
+class Knowledge:
+    """`findings` are about claims, keyed by nothing: look them up by subject.
+
+    `spectral` holds nominal enclosures ``decay rate`` (1/s), ``damping ratio`` (1) and ``contraction``
+    (1) where they were enclosed.  `place` is the premise that the chosen point is an equilibrium.
+    """
+
+    case: Case
+    equilibria: tuple[Equilibrium, ...]
+    complete: bool
+    claims: tuple[Claim, ...]
+    findings: tuple[Finding, ...]
+    place: Premise
+    spectral: dict[str, Enclosure]
+    margins: tuple[LoopMargins, ...]
+    unavailable: dict[str, str]
+    """Why a family of quantities could not be measured, by its name (``equilibria``, ``linear part``, loop ids)."""
+
+    @property
+    def chosen(self) -> Equilibrium | None:
+        """The equilibrium the operating point stands for."""
+        return next((e for e in self.equilibria if e.chosen), None)
+
+    def proved(self, identifier: str) -> Finding | None:
+        """The rigorous finding that proves claim `identifier`, exact before interval."""
+        ranked = sorted(self.findings, key=lambda f: f.check)
+        return next((f for f in ranked if f.subject == identifier and f.result == "proved" and f.is_rigorous), None)
+
+    def sets(self, over: Scope) -> Iterator[tuple[LyapunovClaim | CoverClaim, Finding]]:
+        """Proved attractive sets that serve `over`; one proved over tolerances also serves the nominal scope."""
+        for claim in self.claims:
+            if isinstance(claim, LyapunovClaim | CoverClaim) and claim.over in (over, *_wider(over)):
+                finding = self.proved(claim.identifier)
+                if finding is not None:
+                    yield claim, finding
+
+
+def _wider(over: Scope) -> tuple[Scope, ...]:
+    return ("tolerances",) if over == NOMINAL else ()
