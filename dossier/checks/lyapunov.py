@@ -161,7 +161,7 @@ def _place(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, shape: El
 
 
 def _sides(box: Box) -> str:
-    return ", ".join(f"{n} in [{float(i.lower):.6g}, {float(i.upper):.6g}]" for n, i in box.items())
+    return ", ".join(f"{n} in [{float(i.bounds[0]):.6g}, {float(i.bounds[1]):.6g}]" for n, i in box.items())
 
 
 def certified_field(case: Case, equilibrium: Equilibrium, over: Scope) -> OffsetField | NotRational:

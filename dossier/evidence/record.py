@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from decimal import ROUND_CEILING, ROUND_FLOOR, Context, Decimal
 from fractions import Fraction
 from typing import Any, Final
@@ -14,9 +14,10 @@ from dossier.model.dossier import Evidence, PointEvidence
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.finding import Enclosure, Finding
 from dossier.model.outcome import VERDICTS, LoopMargins, Outcome
-from dossier.model.text import encode
+from dossier.model.text import claim_to_data, encode
 
 RECORD_FORMAT: Final = 1
+CERTIFICATE_FORMAT: Final = 1
 DIGITS: Final = 17
 """Significant digits of decimals in the record; a radius says what is lost."""
 
@@ -64,6 +65,7 @@ def record_data(evidence: Evidence) -> dict[str, Any]:
     return {
         "record": RECORD_FORMAT,
         "program": {"name": "dossier", "version": evidence.provenance.program_version},
+        "project_file": evidence.project_files[0][0],
         "project_sha256": evidence.provenance.project_sha256,
         "effort": evidence.provenance.effort,
         "document": {
@@ -71,12 +73,13 @@ def record_data(evidence: Evidence) -> dict[str, Any]:
             "date": document.date, "machine": document.machine, "organisation": document.organisation,
         },
         "conclusion": {v: counts.get(v, 0) for v in VERDICTS},
-        "operating_points": {p.case.name: _point_data(p) for p in evidence.points},
+        "operating_points": {p.case.name: point_data(p) for p in evidence.points},
         "components": [encode(c) for c in evidence.provenance.components],
     }  # fmt: skip
 
 
-def _point_data(point: PointEvidence) -> dict[str, Any]:
+def point_data(point: PointEvidence) -> dict[str, Any]:
+    """The record of one operating point."""
     return {
         "model": point.case.model.name,
         "model_sha256": point.model_hash,
@@ -126,6 +129,28 @@ def _equilibrium_data(equilibrium: Equilibrium, names: tuple[str, ...]) -> dict[
 def _outer_radius(real: Fraction, imaginary: Fraction, radius: Fraction) -> Fraction:
     """Radius of a disc about the printed centre that holds the disc about the exact one."""
     return radius + abs(real - Fraction(decimal_below(real))) + abs(imaginary - Fraction(decimal_below(imaginary)))
+
+
+def certificate_file(claim: Claim, findings: Sequence[Finding]) -> dict[str, Any]:
+    """One certificate file: the claim, and which statement of which check meets which premise of its theorem."""
+    return {
+        "certificate": CERTIFICATE_FORMAT,
+        "claim": claim_to_data(claim),
+        "checks": [
+            {
+                "check": f.check,
+                "theorem": f.theorem,
+                "statement": f.statement,
+                "result": f.result,
+                "premises": [
+                    {"label": p.label, "statement": p.statement, "result": p.result, "strength": p.strength}
+                    for p in f.premises
+                ],
+            }
+            for f in findings
+            if f.subject == claim.identifier
+        ],
+    }
 
 
 def _certificate_data(claim: Claim, point: PointEvidence) -> dict[str, Any]:

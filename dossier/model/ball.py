@@ -110,7 +110,7 @@ def evaluate(expression: Expression, environment: Mapping[str, arb]) -> arb:
 def _evaluate_node(node: Expression, args: tuple[arb, ...], environment: Mapping[str, arb]) -> arb:
     op = node.op
     if op == "number":
-        return arb(to_fmpq(node.value))
+        return arb(to_fmpq(node.fraction))
     if op == "symbol":
         return environment[str(node.value)]
     if op == "pi":
@@ -130,7 +130,7 @@ def _evaluate_node(node: Expression, args: tuple[arb, ...], environment: Mapping
     if op == "div":
         return args[0] / args[1]
     if op == "pow":
-        return _power(args[0], node.value)
+        return _power(args[0], node.fraction)
     if op == "sat":
         return args[0].max(args[1]).min(args[2])
     if op == "abs":

@@ -12,7 +12,7 @@ from fractions import Fraction
 from itertools import product
 from math import comb, prod
 
-from flint import fmpq_mpoly
+from flint import fmpq, fmpq_mpoly
 
 from dossier.model.polynomial import Exponents, OffsetField, Ring
 from dossier.model.region import Box
@@ -66,10 +66,10 @@ def bernstein_coefficients(
     if places:
         images = list(ring.context.gens())
         for place, side in zip(places, parameters.intervals, strict=True):
-            images[place] = ring.constant(side.lower) + ring.constant(side.width) * ring.context.gen(place)
+            images[place] = ring.constant(side.bounds[0]) + ring.constant(side.width) * ring.context.gen(place)
         scaled = polynomial.compose(*images, ctx=ring.context)
     degrees = [int(scaled.degrees()[place]) for place in places]
-    power_form: dict[Exponents, dict[Exponents, object]] = {}
+    power_form: dict[Exponents, dict[Exponents, fmpq]] = {}
     for exponents, coefficient in scaled.to_dict().items():
         k = tuple(int(exponents[place]) for place in places)
         rest = tuple(0 if i in places else int(e) for i, e in enumerate(exponents))

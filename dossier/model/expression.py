@@ -50,6 +50,13 @@ class Expression:
     def __str__(self) -> str:
         return to_text(self)
 
+    @property
+    def fraction(self) -> Fraction:
+        """The value of a ``number`` or the exponent of a ``pow``; raises TypeError for any other node."""
+        if not isinstance(self.value, Fraction):
+            raise TypeError(f"{self.op} carries no number")
+        return self.value
+
 
 def number(value: Fraction | int | str) -> Expression:
     """The constant `value`, exactly."""
@@ -68,7 +75,7 @@ ONE: Final = number(1)
 
 def add(*terms: Expression) -> Expression:
     """Sum, with zeros dropped and constants folded; only for expressions the program derives itself."""
-    constant = sum((t.value for t in terms if t.op == "number"), Fraction(0))
+    constant = sum((t.fraction for t in terms if t.op == "number"), Fraction(0))
     rest = [t for t in terms if t.op != "number"]
     if constant:
         rest.append(number(constant))
@@ -81,7 +88,7 @@ def mul(*factors: Expression) -> Expression:
     rest = []
     for factor in factors:
         if factor.op == "number":
-            constant *= factor.value
+            constant *= factor.fraction
         else:
             rest.append(factor)
     if constant == 0:
@@ -93,7 +100,7 @@ def mul(*factors: Expression) -> Expression:
 
 def neg(argument: Expression) -> Expression:
     """Minus `argument`."""
-    return number(-argument.value) if argument.op == "number" else Expression("neg", (argument,))
+    return number(-argument.fraction) if argument.op == "number" else Expression("neg", (argument,))
 
 
 def sub(left: Expression, right: Expression) -> Expression:
@@ -103,10 +110,10 @@ def sub(left: Expression, right: Expression) -> Expression:
 
 def div(numerator: Expression, denominator: Expression) -> Expression:
     """Quotient; folded only where the denominator is a non-zero constant."""
-    if denominator.op == "number" and denominator.value != 0:
+    if denominator.op == "number" and denominator.fraction != 0:
         if numerator.op == "number":
-            return number(numerator.value / denominator.value)
-        if denominator.value == 1:
+            return number(numerator.fraction / denominator.fraction)
+        if denominator.fraction == 1:
             return numerator
     return Expression("div", (numerator, denominator))
 
@@ -118,8 +125,8 @@ def power(base: Expression, exponent: Fraction | int) -> Expression:
         return base
     if exponent == 0:
         return ONE
-    if base.op == "number" and exponent.denominator == 1 and (base.value != 0 or exponent > 0):
-        return number(base.value ** int(exponent))
+    if base.op == "number" and exponent.denominator == 1 and (base.fraction != 0 or exponent > 0):
+        return number(base.fraction ** int(exponent))
     return Expression("pow", (base,), exponent)
 
 
@@ -213,7 +220,7 @@ def _derivative(node: Expression, pairs: tuple[tuple[Expression, Expression], ..
             return div(du, w)
         return div(sub(mul(du, w), mul(u, dw)), power(w, 2))
     if node.op == "pow":
-        return mul(number(node.value), power(u, node.value - 1), du)
+        return mul(number(node.fraction), power(u, node.fraction - 1), du)
     if node.op == SATURATION:
         raise ValueError("the derivative of a saturation depends on its branch: resolve the branch first")
     return mul(_outer_derivative(node.op, u), du)
@@ -271,9 +278,9 @@ def conditions(expression: Expression) -> tuple[Condition, ...]:
 def _conditions_of(node: Expression) -> Iterator[Condition]:
     if node.op == "div":
         yield Condition("nonzero", node.args[1])
-    elif node.op == "pow" and node.value.denominator != 1:
+    elif node.op == "pow" and node.fraction.denominator != 1:
         yield Condition("positive", node.args[0])
-    elif node.op == "pow" and node.value < 0:
+    elif node.op == "pow" and node.fraction < 0:
         yield Condition("nonzero", node.args[0])
     elif node.op in ("log", "sqrt"):
         yield Condition("positive", node.args[0])
@@ -391,14 +398,14 @@ def simplify(expression: Expression) -> Expression:
                 return ZERO
             return div(*args)
         if op == "pow":
-            return power(args[0], node.value)
+            return power(args[0], node.fraction)
         if op == SATURATION and all(a.op == "number" for a in args):
-            x, lower, upper = (a.value for a in args)
+            x, lower, upper = (a.fraction for a in args)
             return number(min(max(x, lower), upper))
         if op == "abs" and args[0].op == "number":
-            return number(abs(args[0].value))
-        if len(args) == 1 and args[0].op == "number" and (op, args[0].value) in _EXACT_VALUES:
-            return number(_EXACT_VALUES[op, args[0].value])
+            return number(abs(args[0].fraction))
+        if len(args) == 1 and args[0].op == "number" and (op, args[0].fraction) in _EXACT_VALUES:
+            return number(_EXACT_VALUES[op, args[0].fraction])
         return rebuild(node, args)
 
     return fold(expression, visit)

@@ -5,12 +5,14 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from fractions import Fraction
-from typing import Literal
+from typing import Final, Literal
 
 from dossier.model.case import Scope
 
 Result = Literal["proved", "refuted", "undecided", "not run"]
 Strength = Literal["exact", "enclosed", "floating", "sampled"]
+
+WEAKEST_STRENGTH_FIRST: Final[tuple[Strength, ...]] = ("sampled", "floating", "enclosed", "exact")
 
 
 @dataclass(frozen=True, slots=True)
@@ -63,8 +65,8 @@ class Finding:
 
 def weakest(premises: tuple[Premise, ...]) -> tuple[Result, Strength]:
     """Result and strength of a conclusion that needs every premise."""
-    order = ("exact", "enclosed", "floating", "sampled")
-    strength: Strength = max((p.strength for p in premises), key=order.index, default="exact")
+    strengths = [p.strength for p in premises]
+    strength: Strength = next((s for s in WEAKEST_STRENGTH_FIRST if s in strengths), "exact")
     if any(p.result == "refuted" for p in premises):
         return "refuted", strength
     if all(p.result == "proved" for p in premises):

@@ -92,5 +92,4 @@ class LoopMargins:
 
 def roll_up(verdicts: tuple[Verdict, ...]) -> Verdict:
     """The weakest of `verdicts`; ``not applicable`` when there is nothing else."""
-    counted = [v for v in verdicts if v != "not applicable"]
-    return min(counted, key=WEAKEST_FIRST.index, default="not applicable")
+    return next((v for v in WEAKEST_FIRST if v in verdicts), "not applicable")

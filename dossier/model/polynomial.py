@@ -97,7 +97,7 @@ def _combine(
 ) -> Quotient | NotRational:
     one = ring.constant(Fraction(1))
     if node.op == "number":
-        return Quotient(ring.constant(Fraction(node.value or 0)), one)
+        return Quotient(ring.constant(node.fraction), one)
     if node.op == "symbol":
         return values[str(node.value)]
     if node.op == "neg":
@@ -109,7 +109,7 @@ def _combine(
     if node.op == "div":
         return _product(args[0], _inverse(args[1])) if args[1].numerator else _pole(node)
     if node.op == "pow" and _whole_power(node):
-        count = int(Fraction(node.value or 0))
+        count = int(node.fraction)
         if count < 0 and not args[0].numerator:
             return _pole(node)
         base = _inverse(args[0]) if count < 0 else args[0]
@@ -179,7 +179,7 @@ _RATIONAL_OPS = ("number", "add", "mul", "div", "neg", "pow")
 
 
 def _whole_power(node: Expression) -> bool:
-    return node.op != "pow" or node.value.denominator == 1
+    return node.op != "pow" or node.fraction.denominator == 1
 
 
 @dataclass(frozen=True)
@@ -228,10 +228,12 @@ def offset_field(
         if ball.radius:
             place = place + ring.gen(f"shift of {name}")
         values[name] = Quotient(place, one)
-    quotients = [quotient_of(e, ring, values) for e in converted]
-    for q in quotients:
-        if isinstance(q, NotRational):
-            return q
+    quotients: list[Quotient] = []
+    for expression in converted:
+        quotient = quotient_of(expression, ring, values)
+        if isinstance(quotient, NotRational):
+            return quotient
+        quotients.append(quotient)
     if sampled:
         quotients = [
             _reduced(q.numerator - (values[s].numerator - ring.gen(s)) * q.denominator, q.denominator)

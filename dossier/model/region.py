@@ -35,18 +35,23 @@ class Interval:
         return self.is_bounded and self.lower == self.upper
 
     @property
+    def bounds(self) -> tuple[Fraction, Fraction]:
+        """Both ends; raises ValueError where unbounded."""
+        if self.lower is None or self.upper is None:
+            raise ValueError("the interval is unbounded")
+        return self.lower, self.upper
+
+    @property
     def width(self) -> Fraction:
         """Upper minus lower end; raises ValueError where unbounded."""
-        if self.lower is None or self.upper is None:
-            raise ValueError("unbounded interval has no width")
-        return self.upper - self.lower
+        lower, upper = self.bounds
+        return upper - lower
 
     @property
     def middle(self) -> Fraction:
         """Mean of the ends; raises ValueError where unbounded."""
-        if self.lower is None or self.upper is None:
-            raise ValueError("unbounded interval has no middle")
-        return (self.lower + self.upper) / 2
+        lower, upper = self.bounds
+        return (lower + upper) / 2
 
     def contains(self, other: Interval, *, strictly: bool = False) -> bool:
         """`other` lies inside; with `strictly`, inside the interior (an unbounded side is always clear)."""
@@ -98,9 +103,7 @@ class Box:
 
     def corners(self) -> Iterator[tuple[Fraction, ...]]:
         """All corners of a bounded box; degenerate sides count once.  Raises ValueError where unbounded."""
-        if not self.is_bounded:
-            raise ValueError("unbounded box has no corners")
-        return product(*((i.lower,) if i.is_point else (i.lower, i.upper) for i in self.intervals))
+        return product(*(tuple(dict.fromkeys(i.bounds)) for i in self.intervals))
 
     def contains(self, other: Box, *, strictly: bool = False) -> bool:
         """`other`, over the same names in the same order, lies inside (the interior)."""

@@ -1,0 +1,125 @@
+"""Commands, progress and exit codes; no mathematics.
+
+Exit codes: 0 every selected criterion proved (``not applicable`` does not count); 1 at least one is not;
+2 faulty input, nothing written; 3 fault of the program, missing PDF library or internal contradiction;
+4 recheck refused something.
+"""
+
+from __future__ import annotations
+
+import argparse
+import os
+import sys
+import traceback
+from collections.abc import Sequence
+from pathlib import Path
+from typing import Final
+
+PROVED, NOT_PROVED, FAULTY_INPUT, PROGRAM_FAULT, REFUSED = range(5)
+
+EFFORT_NAMES: Final = ("quick", "standard", "thorough")
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Entry point of the ``dossier`` command; returns the exit code."""
+    one_thread()
+    options = _parser().parse_args(arguments)
+    try:
+        return options.run(options)
+    except KeyboardInterrupt:
+        print("\ninterrupted; nothing was written", file=sys.stderr)
+        return PROGRAM_FAULT
+    except Exception as error:  # a bug of the program: say so plainly, keep the trace for the report
+        traceback.print_exc()
+        print(
+            f"\nThis is a fault of the program, not of your project ({type(error).__name__}). Nothing was concluded.",
+            file=sys.stderr,
+        )
+        return PROGRAM_FAULT
+
+
+def one_thread() -> None:
+    """One BLAS thread, set before numpy is imported: the same work gives the same bits."""
+    for name in ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS"):
+        os.environ[name] = "1"
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = argparse.ArgumentParser(
+        prog="dossier",
+        description="Build, inspect and recheck stability dossiers of machine control loops.",
+        epilog="A dossier concerns mathematical models; it does not certify a machine.",
+    )
+    parser.add_argument("--version", action="version", version=_version())
+    commands = parser.add_subparsers(required=True, metavar="COMMAND")
+    build = commands.add_parser("build", help="prove or refute every criterion and write the dossier")
+    build.add_argument(
+        "project", type=Path, metavar="PROJECT", help="project file, or the folder that holds project.yaml"
+    )
+    build.add_argument("--out", type=Path, metavar="DIR", help="output folder (default: out beside the project file)")
+    build.add_argument("--only", nargs="+", default=(), metavar="POINT", help="only these operating points")
+    build.add_argument("--effort", choices=EFFORT_NAMES, default="standard", help="how much work to spend")
+    build.set_defaults(run=_build)
+    inspect = commands.add_parser("inspect", help="show the model as understood, in SI, with warnings")
+    inspect.add_argument("project", type=Path, metavar="PROJECT")
+    inspect.set_defaults(run=_inspect)
+    recheck = commands.add_parser("recheck", help="verify a written dossier again without any search")
+    recheck.add_argument("folder", type=Path, metavar="OUT", help="folder written by build")
+    recheck.set_defaults(run=_recheck)
+    return parser
+
+
+def _version() -> str:
+    from dossier import __version__
+
+    return f"dossier {__version__}"
+
+
+def project_file(path: Path) -> Path:
+    """The project file meant by `path`: itself, or project.yaml in the folder."""
+    return path / "project.yaml" if path.is_dir() else path
+
+
+def _build(options: argparse.Namespace) -> int:
+    from dossier.evidence.store import NotADossierError
+    from dossier.pipeline import build
+    from dossier.project.reader import Faults
+    from dossier.terminal import Terminal
+
+    terminal = Terminal()
+    try:
+        with terminal.progress() as progress:
+            result = build(project_file(options.project), options.out, tuple(options.only), options.effort, progress)
+    except (NotADossierError, OSError) as error:
+        terminal.error(str(error))
+        return FAULTY_INPUT
+    if isinstance(result, Faults):
+        terminal.faults(result.faults)
+        return FAULTY_INPUT
+    if isinstance(result, str):
+        terminal.error(result)
+        return FAULTY_INPUT
+    return terminal.report(result)
+
+
+def _inspect(options: argparse.Namespace) -> int:
+    from dossier.project.reader import Faults, read_project
+    from dossier.terminal import Terminal
+
+    terminal = Terminal()
+    project = read_project(project_file(options.project))
+    if isinstance(project, Faults):
+        terminal.faults(project.faults)
+        return FAULTY_INPUT
+    terminal.model(project)
+    return PROVED
+
+
+def _recheck(options: argparse.Namespace) -> int:
+    from dossier.recheck import recheck
+    from dossier.terminal import Terminal
+
+    terminal = Terminal()
+    result = recheck(options.folder)
+    terminal.recheck(result)
+    return REFUSED if result.refusals else PROVED
