@@ -65,8 +65,10 @@ class Finding:
 
 def weakest(premises: tuple[Premise, ...]) -> tuple[Result, Strength]:
     """Result and strength of a conclusion that needs every premise."""
-    strengths = [p.strength for p in premises]
-    strength: Strength = next((s for s in WEAKEST_STRENGTH_FIRST if s in strengths), "exact")
+    strength: Strength = "exact"
+    for candidate in reversed(WEAKEST_STRENGTH_FIRST):
+        if any(p.strength == candidate for p in premises):
+            strength = candidate
     if any(p.result == "refuted" for p in premises):
         return "refuted", strength
     if all(p.result == "proved" for p in premises):

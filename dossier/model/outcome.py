@@ -92,4 +92,7 @@ class LoopMargins:
 
 def roll_up(verdicts: tuple[Verdict, ...]) -> Verdict:
     """The weakest of `verdicts`; ``not applicable`` when there is nothing else."""
-    return next((v for v in WEAKEST_FIRST if v in verdicts), "not applicable")
+    for verdict in WEAKEST_FIRST:
+        if verdict in verdicts:
+            return verdict
+    return "not applicable"
