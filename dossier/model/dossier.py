@@ -69,13 +69,15 @@ class Campaign:
 class FigureData:
     """Floating-point data of one figure of an operating point; for looking at, never evidence.
 
-    `plane` are the two state names drawn; `vector_field` samples (x, y, dx, dy) in offsets;
-    the proved set is drawn from the claim itself.
+    `plane` are the two state names drawn; `flow` samples (x, y, dx, dy) in offsets;
+    the proved set is drawn from the claim itself.  `responses` holds, per loop, the open loop as
+    (angular frequency in rad/s, real part, imaginary part).
     """
 
     plane: tuple[str, str]
     trajectories: tuple[Trajectory, ...]
     flow: tuple[tuple[float, float, float, float], ...]
+    responses: tuple[tuple[str, tuple[tuple[float, float, float], ...]], ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
