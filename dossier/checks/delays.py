@@ -7,9 +7,8 @@ from typing import Final
 from flint import fmpq, fmpq_poly
 
 from dossier.checks.boundary import Coefficients, add, multiply, number_of
-from dossier.checks.crossings import INFINITE_FREQUENCY, ZERO_FREQUENCY, Extreme, Measured, Undecided, bounds
+from dossier.checks.crossings import INFINITE_FREQUENCY, ZERO_FREQUENCY, Extreme, Measured, Undecided
 from dossier.checks.hurwitz import is_hurwitz
-from dossier.model.ball import enclose
 from dossier.model.loop_polynomials import LoopPolynomials
 
 MOST_SAMPLES: Final = 40
@@ -27,7 +26,7 @@ def whole_sample_delay(polynomials: LoopPolynomials, crossing: Measured) -> Meas
     if crossing is None:
         return None
     a, c = ([number_of(b) for b in reversed(p)] for p in (polynomials.open_loop, polynomials.gain))
-    least, most = bounds(enclose(polynomials.interval))
+    least, most = polynomials.interval.lower, polynomials.interval.upper
     place = ZERO_FREQUENCY.around(INFINITE_FREQUENCY)
     for m in range(1, MOST_SAMPLES + 1):
         stable = is_hurwitz(list(reversed(_delayed(a, c, m))))

@@ -253,7 +253,7 @@ def _margins(
         facts.get("gain up"), at("gain up"),
         facts.get("gain down"), at("gain down"),
         facts.get("phase"), at("phase"),
-        facts.get("delay"), at("delay"),
+        facts.get("delay"), None if scale.interval is not None else at("delay"),
         facts.get("peak sensitivity"), at("peak sensitivity"),
         claim.identifier,
     )  # fmt: skip

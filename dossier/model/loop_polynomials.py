@@ -11,7 +11,6 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 from fractions import Fraction
-from functools import cache
 from typing import Final, cast
 
 from flint import arb, arb_mat, fmpq, fmpq_mat, fmpq_poly
@@ -21,8 +20,8 @@ from dossier.model.case import Case
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.linear_part import LinearLoop, NoLinearPart, Number, linear_loop
 
-LARGEST_EXPANSION: Final = 12
-"""Most states for which determinants of balls are expanded by rows (2**n column subsets at worst)."""
+LARGEST_EXPANSION: Final = 8_192
+"""Most minors one determinant of balls is expanded into; beyond, structural zeros are given up (2**n at worst)."""
 
 STORED_DIGITS: Final = 40
 """Decimal digits kept of an inexact coefficient: certificates stay short, results need fewer than half."""
@@ -62,8 +61,8 @@ def _polynomials(linear: LinearLoop) -> LoopPolynomials:
     if linear.is_exact:
         opened, closed = _exact(linear)
         gain = [w - v for v, w in zip(opened, closed, strict=True)]
-    elif len(linear.matrix) <= LARGEST_EXPANSION:
-        opened, gain = _by_expansion(linear)
+    elif (expanded := _by_expansion(linear)) is not None:
+        opened, gain = expanded
         closed = [v + w for v, w in zip(opened, gain, strict=True)]
     else:
         opened, closed = _by_flint(linear)
@@ -107,18 +106,18 @@ def _mapped(coefficients: Sequence[Number], linear: LinearLoop) -> list[Number]:
     return result
 
 
-def _by_expansion(linear: LinearLoop) -> tuple[list[Number], list[Number]]:
+def _by_expansion(linear: LinearLoop) -> tuple[list[Number], list[Number]] | None:
     """a = det M and c = det [[M, b], [k, 0]] with M = sI - A0 (matrix determinant lemma); lowest power first.
 
-    Sampled: M = (1 + s) I - (1 - s) A0, and b is multiplied by 1 - s.
+    Sampled: M = (1 + s) I - (1 - s) A0, and b is multiplied by 1 - s.  None where that is too long.
     """
     size, sampled = len(linear.matrix), linear.interval is not None
     rows = [[_entry(arb(v), i == j, sampled) for j, v in enumerate(row)] for i, row in enumerate(linear.matrix)]
     column = [[arb(g), -arb(g)] if sampled else [arb(g)] for g in linear.input]
     bordered = [[*row, g] for row, g in zip(rows, column, strict=True)]
     bordered.append([*([arb(k)] for k in linear.feedback), [arb(0)]])
-    opened, gain = (_padded(_determinant(m), size) for m in (rows, bordered))
-    return opened, gain
+    opened, gain = _determinant(rows), _determinant(bordered)
+    return None if opened is None or gain is None else (_padded(opened, size), _padded(gain, size))
 
 
 def _entry(value: arb, diagonal: bool, sampled: bool) -> list[arb]:
@@ -130,25 +129,26 @@ def _padded(coefficients: Sequence[arb], degree: int) -> list[Number]:
     return [*coefficients, *[arb(0)] * (degree + 1 - len(coefficients))]
 
 
-def _determinant(matrix: Sequence[Sequence[list[arb]]]) -> list[arb]:
-    """Laplace expansion along the rows over column subsets; division free, so structural zeros stay exact."""
-    size = len(matrix)
+def _determinant(matrix: Sequence[Sequence[list[arb]]]) -> list[arb] | None:
+    """Laplace expansion along the rows; division free, so structural zeros stay exact.
 
-    @cache
-    def minor(row: int, columns: int) -> tuple[arb, ...]:
-        if row == size:
-            return (arb(1),)
-        total: list[arb] = []
-        sign = 1
-        for j in range(size):
-            if columns >> j & 1:
-                if not all(v.is_zero() for v in matrix[row][j]):
-                    rest = minor(row + 1, columns & ~(1 << j))
-                    total = _sum(total, _product([sign * v for v in matrix[row][j]], rest))
-                sign = -sign
-        return tuple(total)
-
-    return list(minor(0, (1 << size) - 1))
+    Row by row, `minors` maps a set of used columns (bits) to the signed sum over all ways to use them.
+    None where the columns in use come in more than `LARGEST_EXPANSION` ways.
+    """
+    minors: dict[int, list[arb]] = {0: [arb(1)]}
+    for row in matrix:
+        following: dict[int, list[arb]] = {}
+        for used, value in minors.items():
+            for j, entry in enumerate(row):
+                if used >> j & 1 or all(v.is_zero() for v in entry):
+                    continue
+                sign = -1 if (used >> j).bit_count() % 2 else 1
+                term = _product([sign * v for v in entry], value)
+                following[used | 1 << j] = _sum(following.get(used | 1 << j, []), term)
+        if len(following) > LARGEST_EXPANSION:
+            return None
+        minors = following
+    return minors.get((1 << len(matrix)) - 1, [])
 
 
 def _sum(left: Sequence[arb], right: Sequence[arb]) -> list[arb]:

@@ -12,7 +12,7 @@ from fractions import Fraction
 from typing import Final, cast
 
 import numpy as np
-from flint import acb, acb_poly, arb, fmpq_poly
+from flint import acb, fmpq_poly
 
 from dossier.model.attempt import Attempt
 from dossier.model.ball import exact_value, precision, to_fmpq
@@ -35,9 +35,6 @@ SHARE: Final = Fraction(1, 3)
 ROUNDING: Final = Fraction(1, 8)
 """Interval ends are rounded to decimals within this part of the half-width, so that certificates stay short."""
 
-REAL_PART: Final = 1e-20
-"""Imaginary part, relative to the root, below which a root of a polynomial with inexact coefficients is real."""
-
 SLOWEST: Final = 1e-9
 """Roots slower than this share of the fastest count as zero when a figure's range is chosen."""
 
@@ -54,7 +51,7 @@ def seek_crossings(case: Case, equilibrium: Equilibrium, loop: str) -> tuple[tup
     if isinstance(polynomials, NoLinearPart):
         return (Attempt(subject, method, "out of reach", polynomials.reason),), None
     with precision(GUESS_BITS):
-        gain, phase, peak = (isolate(p, polynomials.is_exact) for p in crossing_polynomials(polynomials))
+        gain, phase, peak = (isolate(p) for p in crossing_polynomials(polynomials))
     claim = SturmClaim(
         claim_identifier(case, loop), model_hash(case), NOMINAL, "T11", equilibrium.identifier, loop,
         polynomials.open_loop, polynomials.closed_loop, gain, phase, peak,
@@ -92,9 +89,9 @@ def _fractions(polynomial: fmpq_poly) -> Polynomial:
     return [Fraction(int(v.p), int(v.q)) for v in polynomial.coeffs()]
 
 
-def isolate(polynomial: Polynomial, exact: bool) -> tuple[Crossing, ...]:
-    """Disjoint rational intervals around the positive roots, in order."""
-    roots = _exact_roots(polynomial) if exact else _floating_roots(polynomial)
+def isolate(polynomial: Polynomial) -> tuple[Crossing, ...]:
+    """Disjoint rational intervals around the distinct positive roots, in order."""
+    roots = _positive_roots(polynomial)
     result = []
     for i, root in enumerate(roots):
         gaps = [abs(root - other) for other in roots[max(0, i - 1) : i + 2] if other != root]
@@ -113,8 +110,8 @@ def _near(value: Fraction, reach: Fraction) -> Fraction:
     return round(value / step) * step
 
 
-def _exact_roots(polynomial: Polynomial) -> list[Fraction]:
-    """Distinct positive roots of a rational polynomial, approximated far below their distances."""
+def _positive_roots(polynomial: Polynomial) -> list[Fraction]:
+    """Distinct positive roots, approximated far below their distances."""
     p = fmpq_poly([to_fmpq(v) for v in polynomial])
     if p.degree() < 1:
         return []
@@ -123,21 +120,6 @@ def _exact_roots(polynomial: Polynomial) -> list[Fraction]:
         root for root, _ in cast(list[tuple[acb, int]], square_free.complex_roots()) if root.imag == 0 and root.real > 0
     ]
     return sorted(exact_value(root.real.mid()) for root in values)
-
-
-def _floating_roots(polynomial: Polynomial) -> list[Fraction]:
-    """Positive roots of the midpoint polynomial that are real within rounding."""
-    coefficients = list(polynomial)
-    while coefficients and coefficients[0] == 0:
-        coefficients.pop(0)
-    if len(coefficients) <= 1:
-        return []
-    p = acb_poly([acb(arb(to_fmpq(v))) for v in coefficients])
-    found = []
-    for root in cast(list[acb], p.roots()):
-        if root.real > 0 and abs(root.imag) < REAL_PART * root.real + root.imag.rad():
-            found.append(exact_value(root.real.mid()))
-    return sorted(found)
 
 
 @dataclass(frozen=True, slots=True)
