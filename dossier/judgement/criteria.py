@@ -75,7 +75,7 @@ def _judge_findings(
     if contradictions:
         return _from(blank, criterion, "contradicted", contradictions[0])
     if unmet:
-        return replace(blank, verdict="not applicable", because=_sentence(unmet[0].statement))
+        return _set_aside(blank, criterion, unmet[0])
     return _open(blank, criterion, findings, attempts)
 
 
@@ -89,6 +89,14 @@ def _from(blank: Outcome, criterion: Criterion, verdict: Verdict, finding: Findi
         blank, verdict=verdict, strength=finding.strength, theorem=finding.theorem,
         because=_sentence(finding.statement), evidence=finding.evidence, value=value, bound=bound,
         reserve=reserve, counter_example=finding.counter_example,
+    )  # fmt: skip
+
+
+def _set_aside(blank: Outcome, criterion: Criterion, finding: Finding) -> Outcome:
+    verdict: Verdict = "not attempted" if finding.premises[0].label == "not attempted" else "not applicable"
+    return replace(
+        blank, verdict=verdict, because=_sentence(finding.statement), value=finding.facts.get("value"),
+        bound=stated_bound(criterion),
     )  # fmt: skip
 
 

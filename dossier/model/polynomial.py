@@ -253,8 +253,11 @@ def _without_offset_free_terms(polynomial: fmpq_mpoly, ring: Ring, count: int) -
 
 
 def collapse(polynomial: fmpq_mpoly, ring: Ring, keep: int, balls: Mapping[str, Ball]) -> dict[Exponents, Ball]:
-    """Coefficients of `polynomial` as balls over the first `keep` names; the rest take values in `balls`."""
-    values = [balls[n] for n in ring.names[keep:]]
+    """Coefficients of `polynomial` as balls over the first `keep` names; the rest take values in `balls`.
+
+    Raises ValueError where a name without a ball occurs in `polynomial`.
+    """
+    values = [balls.get(n) for n in ring.names[keep:]]
     sums: dict[Exponents, list[Fraction]] = {}
     for exponents, coefficient in terms(polynomial).items():
         middle, radius = _monomial_ball(coefficient, exponents[keep:], values)
@@ -264,11 +267,13 @@ def collapse(polynomial: fmpq_mpoly, ring: Ring, keep: int, balls: Mapping[str, 
     return {e: Ball(m, r) for e, (m, r) in sums.items() if m or r}
 
 
-def _monomial_ball(coefficient: Fraction, exponents: Exponents, values: list[Ball]) -> tuple[Fraction, Fraction]:
+def _monomial_ball(coefficient: Fraction, exponents: Exponents, values: list[Ball | None]) -> tuple[Fraction, Fraction]:
     """coefficient * product of balls: |prod (m+d) - prod m| <= prod (|m|+r) - prod |m|."""
     middle, reach, size = coefficient, abs(coefficient), abs(coefficient)
     for exponent, ball in zip(exponents, values, strict=True):
-        for _ in range(exponent):
+        if exponent and ball is None:
+            raise ValueError("a symbolic parameter is left in the polynomial")
+        for _ in range(exponent if ball is not None else 0):
             middle *= ball.middle
             size *= abs(ball.middle)
             reach *= abs(ball.middle) + ball.radius

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from fractions import Fraction
+from typing import Literal
 
 from dossier.checks.knowledge import Knowledge
 from dossier.model.case import Criterion, value_of
@@ -90,3 +91,17 @@ def within(value: Enclosure, criterion: Criterion) -> bool | None:
     low_ok = lower is None or (value.lower is not None and value.lower >= lower)
     high_ok = upper is None or (value.upper is not None and value.upper <= upper)
     return True if low_ok and high_ok else None
+
+
+def set_aside(
+    knowledge: Knowledge,
+    criterion: Criterion,
+    kind: Literal["not applicable", "not attempted"],
+    why: str,
+    facts: Mapping[str, Enclosure] | None = None,
+) -> Finding:
+    """The criterion has no meaning here, or this version does not decide it; `why` says which and why."""
+    premise = Premise(kind, why, "not run", "exact")
+    return Finding(
+        subject_of(knowledge, criterion), "exact", "not run", "exact", criterion.over, "", why, (premise,), facts or {}
+    )  # fmt: skip
