@@ -1,0 +1,139 @@
+"""The certificates of one operating point: V typeset, level, method, how it was checked, theorem and premises."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+from dossier.model.claim import CoverClaim, LyapunovClaim, RootsClaim, SturmClaim
+from dossier.model.dossier import PointEvidence
+from dossier.model.finding import Finding
+from dossier.model.theorem import THEOREMS
+from dossier.report import formulas, numbers, wording
+from dossier.report.blocks import Block, Column, Equations, Facts, Paragraph, Row, Subheading, Table
+from dossier.report.content.context import Context
+from dossier.report.rich import Formula, Rich, rich
+
+METHODS = {
+    "quadratic": "quadratic form, proved by exact Gram identities",
+    "sum of squares": "sum of squares, rounded to fractions and proved exactly",
+    "given": "the engineer’s own candidate, proved as given",
+}
+SetClaim = LyapunovClaim | CoverClaim
+
+
+def certificate_blocks(context: Context, point: PointEvidence) -> Iterator[Block]:
+    """Every certificate with a function V, then the evidence of other kinds."""
+    sets = [c for c in point.claims if isinstance(c, LyapunovClaim | CoverClaim)]
+    others = [c for c in point.claims if isinstance(c, RootsClaim | SturmClaim)]
+    if sets:
+        yield Paragraph((wording.CERTIFICATE_CAUTION,), "caution")
+    for claim in sets:
+        yield from _set_blocks(context, point, claim)
+    if others:
+        yield _other_table(context, point)
+
+
+def _set_blocks(context: Context, point: PointEvidence, claim: SetClaim) -> Iterator[Block]:
+    kind = "certificate" if isinstance(claim, LyapunovClaim) else "second witness by intervals"
+    yield Subheading((f"{claim.identifier}, {kind}",), claim.identifier)
+    states, notation = point.case.model.state_names, context.notations[point.case.model.name]
+    degree = max((sum(e) for e in claim.function), default=0)
+    said = f"function V of degree {degree} in the offsets of the states, with {len(claim.function)} terms"
+    yield Equations((Formula(formulas.function_of_offsets(claim.function, states, notation), said, display=True),))
+    yield Facts(tuple(_set_facts(context, point, claim, degree)))
+    for finding in point.findings:
+        if finding.subject == claim.identifier and finding.premises:
+            yield premise_table(context, finding)
+
+
+def _set_facts(context: Context, point: PointEvidence, claim: SetClaim, degree: int) -> Iterator[tuple[str, Rich]]:
+    level = numbers.exactly(claim.level) or f"{claim.level}"
+    yield "Set", rich(
+        Formula(rf"\{{V \le {formulas.number_piece(claim.level)[0]}\}}", f"all states with V at most {level}"),
+        " around ", context.link(claim.equilibrium),
+    )  # fmt: skip
+    if isinstance(claim, LyapunovClaim):
+        multiplier = len(claim.decrease)
+        yield "Form", (f"degree {degree}, {METHODS[claim.method]}; {multiplier} decrease identity(ies)",)
+    else:
+        yield "Form", (f"degree {degree}; the decrease was closed by {numbers.count(claim.boxes)} boxes",)
+    yield "Parameters", (wording.scope_words(claim.over),)
+    theorem = THEOREMS.get(claim.theorem)
+    if theorem is not None:
+        yield "Theorem", (f"{theorem.name}, {theorem.title}: {theorem.conclusion}. Source: {theorem.source}.",)
+    for finding in point.findings:
+        if finding.subject == claim.identifier:
+            word = wording.CHECK_WORDS[finding.check]
+            yield (
+                "Checked by",
+                (
+                    f"{word}: {finding.result}, {wording.STRENGTH_WORDS[finding.strength]}. {_capital(finding.statement)}.",
+                ),
+            )
+
+
+def _capital(text: str) -> str:
+    return text[:1].upper() + text[1:]
+
+
+def premise_table(context: Context, finding: Finding) -> Table:
+    """The premises of one finding, each with its own result and evidence."""
+    rows = tuple(
+        Row(
+            (
+                (p.label,),
+                rich(p.statement, *([f" ({p.detail})"] if p.detail else [])),
+                (f"{wording.RESULT_WORDS[p.result][0]} {wording.RESULT_WORDS[p.result][1]}",),
+                (wording.STRENGTH_WORDS[p.strength],),
+                context.links(p.evidence.split(", ")),
+            )
+        )
+        for p in finding.premises
+    )
+    columns = (
+        Column("Premise", "short", 11),
+        Column("Statement", share=49),
+        Column("Result", "short", 13),
+        Column("Checked", "short", 10),
+        Column("Evidence", "id", 17),
+    )
+    return Table(f"Premises of theorem {finding.theorem or 'none'} for {finding.subject}", columns, rows)
+
+
+def _other_table(context: Context, point: PointEvidence) -> Table:
+    rows = []
+    for claim in point.claims:
+        if isinstance(claim, RootsClaim):
+            text = (
+                f"{len(claim.solutions)} uniqueness box(es), {len(claim.undecided)} undecided, "
+                f"{numbers.count(claim.boxes)} boxes closed"
+            )
+        elif isinstance(claim, SturmClaim):
+            text = (
+                f"loop {claim.loop}: {len(claim.gain_crossings)} crossing(s) of the real axis, "
+                f"{len(claim.phase_crossings)} of the unit circle, {len(claim.peak_candidates)} candidate(s) for the peak"
+            )
+        else:
+            continue
+        finding = next((f for f in point.findings if f.subject == claim.identifier), None)
+        result = "–" if finding is None else f"{finding.result}, {wording.STRENGTH_WORDS[finding.strength]}"
+        theorem = THEOREMS[claim.theorem].title if claim.theorem in THEOREMS else claim.theorem
+        rows.append(
+            Row(
+                (context_cell(claim.identifier), (text,), (f"{claim.theorem}, {theorem}",), (result,)), claim.identifier
+            )
+        )
+    columns = (
+        Column("Evidence", "id", 20),
+        Column("Content", share=38),
+        Column("Theorem", share=27),
+        Column("Check", "short", 15),
+    )
+    return Table("Other evidence of this operating point", columns, tuple(rows))
+
+
+def context_cell(identifier: str) -> Rich:
+    """The id of the row's own evidence."""
+    from dossier.report.rich import Mono
+
+    return (Mono(identifier),)

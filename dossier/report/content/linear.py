@@ -1,0 +1,158 @@
+"""The linear part at the operating point: eigenvalue discs, what was proved of them, and loop margins."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from fractions import Fraction
+
+from dossier.model.claim import MatrixClaim, RouthClaim
+from dossier.model.dossier import PointEvidence
+from dossier.model.equilibrium import Eigenvalue, Equilibrium
+from dossier.report import formulas, numbers, wording
+from dossier.report.blocks import Block, Column, Equations, Paragraph, Row, Table
+from dossier.report.content.context import Context
+from dossier.report.content.quantities import margin_rows
+from dossier.report.rich import Formula, Mono, Rich, rich
+
+LARGEST_POLYNOMIAL = 8
+"""Degree up to which a characteristic polynomial is printed; the certificate holds every one."""
+
+
+def linear_blocks(context: Context, point: PointEvidence) -> Iterator[Block]:
+    """Eigenvalues of every equilibrium, and the claims about the linear part."""
+    shown = [e for e in point.equilibria if e.eigenvalues]
+    claims = [c for c in point.claims if isinstance(c, MatrixClaim | RouthClaim)]
+    if not shown and not claims:
+        return
+    yield Paragraph((wording.LINEAR_CAUTION,), "caution")
+    if shown:
+        yield _eigenvalue_table(point, shown)
+    if claims:
+        yield _claim_table(context, point)
+    for claim in claims:
+        if isinstance(claim, RouthClaim) and 1 < len(claim.polynomial) <= LARGEST_POLYNOMIAL + 1:
+            yield Equations((_polynomial(claim),), f"characteristic polynomial, {claim.identifier}")
+
+
+def _eigenvalue_table(point: PointEvidence, shown: list[Equilibrium]) -> Table:
+    unit = "1" if point.case.model.time == "sampled" else "1/s"
+    rows = [Row(((Mono(e.identifier),), *_disc(value))) for e in shown for value in e.eigenvalues]
+    columns = (
+        Column("Equilibrium", "id", 28),
+        Column(f"Real part in {unit}", "number", 19),
+        Column(f"Imaginary part in {unit}", "number", 19),
+        Column(f"Radius of the disc in {unit}", "number", 20),
+        Column("Holds", "number", 14),
+    )
+    note: Rich = (
+        "Each disc is proved to hold the stated number of eigenvalues of the nominal linear part; its centre is printed "
+        "with its first digits.",
+    )
+    return Table("Eigenvalues", columns, tuple(rows), note)
+
+
+def _disc(value: Eigenvalue) -> tuple[Rich, ...]:
+    return (
+        (_centre(value.real),),
+        (_centre(value.imaginary),),
+        (f"≤ {numbers.radius(value.radius)}" if value.radius else "exact",),
+        (str(value.multiplicity),),
+    )
+
+
+def _centre(value: Fraction) -> str:
+    return numbers.first_digits(value, value) or "0"
+
+
+def _claim_table(context: Context, point: PointEvidence) -> Table:
+    rows = []
+    for claim in point.claims:
+        finding = next((f for f in point.findings if f.subject == claim.identifier), None)
+        result = "not checked" if finding is None else f"{finding.result}, {finding.strength}"
+        if isinstance(claim, MatrixClaim):
+            method = f"Lyapunov inequality, {numbers.count(len(claim.cells))} parameter cell(s)"
+            rows.append(
+                Row(
+                    (
+                        (Mono(claim.identifier),),
+                        _region(claim),
+                        (method,),
+                        (wording.scope_short(claim.over),),
+                        (result,),
+                    ),
+                    claim.identifier,
+                )
+            )
+        elif isinstance(claim, RouthClaim):
+            counts = f"{claim.inside} eigenvalues inside, {claim.boundary} on, {claim.outside} outside the stability boundary"
+            rows.append(
+                Row(
+                    (
+                        (Mono(claim.identifier),),
+                        (counts,),
+                        ("Routh array of exact integers" if claim.array else "characteristic polynomial",),
+                        (wording.scope_short(claim.over),),
+                        (result,),
+                    ),
+                    claim.identifier,
+                )
+            )
+    columns = (
+        Column("Evidence", "id", 18),
+        Column("Statement", share=36),
+        Column("Method", share=22),
+        Column("Parameters", "short", 11),
+        Column("Check", "short", 13),
+    )
+    return Table("What was proved of the linear part", columns, tuple(rows))
+
+
+def _region(claim: MatrixClaim) -> Rich:
+    level = formulas.figure(numbers.number(claim.level))
+    said = numbers.number(claim.level)
+    if claim.region == "half-plane":
+        negative = formulas.figure(numbers.number(-claim.level))
+        return rich(
+            "every eigenvalue has ",
+            Formula(rf"\operatorname{{Re}}\lambda < {negative}", f"real part below minus {said}"),
+            " 1/s",
+        )
+    if claim.region == "disc":
+        return rich("every multiplier has ", Formula(rf"\left|\lambda\right| < {level}", f"modulus below {said}"))
+    return rich("every mode has a damping ratio above ", Formula(level, said))
+
+
+def _polynomial(claim: RouthClaim) -> Formula:
+    degree = len(claim.polynomial) - 1
+    exact = all(b.is_exact and numbers.exactly(b.middle) for b in claim.polynomial)
+    body = ""
+    for power, ball in zip(range(degree, -1, -1), claim.polynomial, strict=True):
+        if ball.is_exact and ball.middle == 0:
+            continue
+        size = formulas.figure(numbers.number(abs(ball.middle)))
+        monomial = "" if power == 0 else r"\lambda" if power == 1 else rf"\lambda^{{{power}}}"
+        sign = "-" if ball.middle < 0 else "+" if body else ""
+        body += f" {sign} {monomial if monomial and abs(ball.middle) == 1 else size + chr(92) + ',' + monomial}"
+    relation = "=" if exact else r"\approx"
+    return Formula(rf"\chi(\lambda) {relation}{body}", "characteristic polynomial of the linear part", display=True)
+
+
+def margin_blocks(context: Context, point: PointEvidence) -> Iterator[Block]:
+    """The measured margins of every loop."""
+    if not point.margins:
+        return
+    yield Paragraph((wording.MARGIN_CAUTION,), "caution")
+    rows = [
+        Row(((Mono(margins.loop),), (name,), (value,), (at,), (context.link(margins.evidence),)))
+        for margins in point.margins
+        for name, value, at in margin_rows(margins)
+        if value != "–"
+    ]
+    columns = (
+        Column("Loop", "id", 16),
+        Column("Margin", share=22),
+        Column("Enclosure", "number", 26),
+        Column("At", "number", 18),
+        Column("Evidence", "id", 18),
+    )
+    yield Table("Margins of the loops, nominal", columns, tuple(rows))
