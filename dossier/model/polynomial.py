@@ -271,9 +271,11 @@ def _monomial_ball(coefficient: Fraction, exponents: Exponents, values: list[Bal
     """coefficient * product of balls: |prod (m+d) - prod m| <= prod (|m|+r) - prod |m|."""
     middle, reach, size = coefficient, abs(coefficient), abs(coefficient)
     for exponent, ball in zip(exponents, values, strict=True):
-        if exponent and ball is None:
-            raise ValueError("a symbolic parameter is left in the polynomial")
-        for _ in range(exponent if ball is not None else 0):
+        if ball is None:
+            if exponent:
+                raise ValueError("a symbolic parameter is left in the polynomial")
+            continue
+        for _ in range(exponent):
             middle *= ball.middle
             size *= abs(ball.middle)
             reach *= abs(ball.middle) + ball.radius
