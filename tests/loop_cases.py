@@ -5,7 +5,7 @@ from collections.abc import Mapping, Sequence
 from fractions import Fraction
 from itertools import pairwise
 
-from dossier.model.ball import Ball
+from dossier.model.ball import Ball, enclose, to_fmpq
 from dossier.model.case import Case, Model, Parameter, Quantity, Signal, State
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.expression import PI, Expression, add, call, div, mul, neg, number, power, sub, symbol
@@ -82,3 +82,19 @@ def transfer_loop(numerator: Sequence, denominator: Sequence) -> Case:
     equations = dict(pairwise(states))
     equations[states[-1]] = f"u - ({combined(list(denominator)[1:])})"
     return loop_case(equations, {"u": f"-({combined(padded)})"})
+
+
+def polynomial(roots, pairs=()):
+    """Product of (x - r) and (x^2 - 2 p x + p^2 + q^2), lowest power first."""
+    result = [Fraction(1)]
+    for factor in [[-r, 1] for r in roots] + [[p * p + q * q, -2 * p, 1] for p, q in pairs]:
+        longer = [Fraction(0)] * (len(result) + len(factor) - 1)
+        for i, u in enumerate(result):
+            for j, v in enumerate(factor):
+                longer[i + j] += u * v
+        result = longer
+    return [to_fmpq(Fraction(v)) for v in result]
+
+
+def blurred(coefficients, radius=Fraction(1, 10**30)):
+    return [enclose(Ball(Fraction(int(c.p), int(c.q)), radius)) for c in coefficients]

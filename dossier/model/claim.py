@@ -152,6 +152,7 @@ class SturmClaim(Claim):
 
     1 + L = (a + c)/a with `open_loop` = a and `closed_loop` = a + c, highest power first, as balls.
     The three lists isolate every positive root of Im(c conj a), |a|^2 - |c|^2 and d|S|^2/dW.
+    Sampled models: after the bilinear map, so that w is the tangent of half the angle per sample.
     """
 
     equilibrium: str

@@ -62,7 +62,7 @@ def seek_crossings(case: Case, equilibrium: Equilibrium, loop: str) -> tuple[tup
 
 def claim_identifier(case: Case, loop: str) -> str:
     """Id of the certificate of a loop's margins."""
-    return f"{case.identifier}.S.{loop}"
+    return f"{case.identifier}.M-{loop}"
 
 
 def crossing_polynomials(polynomials: LoopPolynomials) -> tuple[Polynomial, Polynomial, Polynomial]:

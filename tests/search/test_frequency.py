@@ -49,7 +49,7 @@ def test_the_guess_of_a_loop_says_what_was_tried():
     attempts, claim = seek_crossings(transfer_loop([3], [1, 3, 3, 1]), ORIGIN, "u")
     assert attempts[0].ending == "found"
     assert attempts[0].work == {"states": 3, "roots": 3}
-    assert claim.identifier == "point.S.u"
+    assert claim.identifier == "point.M-u"
 
 
 def test_guesses_of_a_long_chain_are_complete():
@@ -76,5 +76,10 @@ def test_the_response_of_a_sampled_loop_stays_below_half_the_sampling_frequency(
 
 
 @pytest.mark.parametrize("command", ["-abs(x)", "sat(1 - x, 1, 2)"])
-def test_a_loop_at_a_kink_has_no_response(command):
-    assert response(loop_case({"x": "-x + u"}, {"u": command}), equilibrium_at(0), "u", 10) is None
+def test_a_loop_at_a_kink_has_no_crossings_and_no_response(command):
+    case = loop_case({"x": "-x + u"}, {"u": command})
+    attempts, claim = seek_crossings(case, equilibrium_at(0), "u")
+    assert claim is None
+    assert attempts[0].ending == "out of reach"
+    assert "kink" in attempts[0].remark
+    assert response(case, equilibrium_at(0), "u", 10) is None
