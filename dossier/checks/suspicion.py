@@ -10,9 +10,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dossier.checks.field import Columns, Flow
-from dossier.checks.motion import Ending
 from dossier.checks.trial import MARGIN, Trial, confirm
-from dossier.checks.watch import DIVERGENCE, NEIGHBOURHOOD, ROUNDING, FallRecorder, Row
+from dossier.checks.watch import NEIGHBOURHOOD, ROUNDING, FallRecorder, Row
 from dossier.model.case import Case, Criterion, value_of
 
 TRIED: Final = 3
@@ -64,9 +63,14 @@ def worst_confirmed(
     case: Case, trial: Trial, criterion: Criterion, violating: NDArray[np.bool_],
     found: tuple[Columns, Columns, NDArray[np.intp]],
 ) -> Violation | None:  # fmt: skip
-    """The worst motion whose violation a more accurate motion confirms, or None."""
+    """The worst motion whose violation a more accurate motion confirms, or None.
+
+    Worst is the largest excess over a bound; among motions that leave the domain or go away, the earliest.
+    """
     excess, at, row = found
-    order = np.argsort(-np.where(violating, np.nan_to_num(excess, nan=-np.inf), -np.inf), kind="stable")
+    domain = np.array([r.kind == "domain" for r in trial.watched.rows])[row]
+    severity = np.where(domain, 0.0, np.maximum(np.nan_to_num(excess, nan=0.0), 0.0))
+    order = np.lexsort((at, -severity, ~violating))
     for column in order[: min(TRIED, int(np.count_nonzero(violating)))]:
         if excess[column] > ROUNDING:
             violation = _confirm_row(case, trial, criterion, int(column), int(row[column]), float(at[column]))
@@ -102,18 +106,17 @@ def _confirm_away(case: Case, trial: Trial, criterion: Criterion, column: int) -
     def read(flow: Flow, offsets: Columns) -> float:
         return float(np.max(np.abs(offsets[:, 0]) / trial.scale))
 
-    time = float(trial.motions.times[column])
+    away = bool(trial.diverged[column])
+    time = float(trial.recorder.far_at[column] if away else trial.motions.times[column])
     seen = confirm(trial, column, time, read)
-    away = trial.motions.endings[column] == Ending.DIVERGED
-    bound = DIVERGENCE if away else NEIGHBOURHOOD
-    margin = seen.exceeds(bound, bound)
-    if not (seen.value > bound and margin > MARGIN):
+    margin = seen.exceeds(NEIGHBOURHOOD, 1.0)
+    if not (seen.value > NEIGHBOURHOOD and margin > MARGIN):
         return None
-    event = (
-        f"the distance from the equilibrium passes {DIVERGENCE:.0e} times the region"
-        if away
-        else f"the motion comes to rest elsewhere, at {_state_text(case, trial.motions.offsets[:, column])}"
-    )
+    if away:
+        last = trial.recorder.distance[column]
+        event = f"the motion goes away and does not come back: {seen.value:.3g} regions, last seen at {last:.1e}"
+    else:
+        event = f"the motion comes to rest elsewhere, at {_state_text(case, trial.motions.offsets[:, column])}"
     statement = f"a simulated motion violates it: {event}"
     return Violation(statement, _counter_example(case, trial, column, time_text(case, time), event, margin))
 

@@ -13,7 +13,7 @@ from dossier.checks.branch import linear_part, newton
 from dossier.checks.field import Columns, Flow, Formulas
 from dossier.checks.motion import Ending, Motions, Observer, Work, integrate, iterate, never_stop
 from dossier.checks.starts import Starts
-from dossier.checks.watch import NEIGHBOURHOOD, Recorder, Watched
+from dossier.checks.watch import FAR, NEIGHBOURHOOD, Recorder, Watched
 from dossier.model.case import Case
 
 RELATIVE: Final = 1e-8
@@ -108,8 +108,9 @@ class Trial:
 
     @property
     def diverged(self) -> NDArray[np.bool_]:
-        """Motions that went away beyond all measure."""
-        return self.motions.endings == Ending.DIVERGED
+        """Motions that went away beyond all measure, or were far away where no further step could be made."""
+        endings = self.motions.endings
+        return (endings == Ending.DIVERGED) | ((endings == Ending.SINGULAR) & (self.recorder.distance > FAR))
 
     @property
     def left_domain(self) -> NDArray[np.bool_]:

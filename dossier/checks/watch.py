@@ -30,6 +30,10 @@ DIVERGENCE: Final = 1e6
 """A motion this many times the region away has diverged."""
 
 
+FAR: Final = 100.0
+"""A motion that once was this many regions away and never came back has diverged or escaped in finite time."""
+
+
 @dataclass(frozen=True, slots=True)
 class Row:
     """A watched quantity with its allowed range; ``state`` rows are offsets, all others absolute (SI)."""
@@ -120,6 +124,7 @@ class Recorder:
         self.still_since = np.zeros(count)
         self.still_at = np.full((flow.centres.shape[0], count), np.inf)
         self.distance = np.zeros(count)
+        self.far_at = np.full(count, np.inf)
         slack = ROUNDING * np.array([r.size for r in watched.rows])
         domain = np.array([r.kind == "domain" for r in watched.rows])
         self._lower = np.where(domain, np.array([r.lower for r in watched.rows]) - slack, -np.inf)[:, None]
@@ -133,6 +138,7 @@ class Recorder:
         with np.errstate(all="ignore"):
             distance = np.max(np.abs(offsets) / self.scale, axis=0)
         self.distance[index] = distance
+        self.far_at[index] = np.where(distance > FAR, np.minimum(self.far_at[index], times), self.far_at[index])
         codes[self._still(index, times, offsets, distance)] = Ending.RESTS
         codes[self._near(index, times, distance)] = Ending.CONVERGED
         codes[~(distance <= DIVERGENCE)] = Ending.DIVERGED
