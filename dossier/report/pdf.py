@@ -1,0 +1,88 @@
+"""The record copy: PDF/A-3a and PDF/UA-1, with the evidence embedded; or a value that says what is missing."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from datetime import UTC, datetime
+from typing import Any, Final
+
+from dossier.report import fonts, locate
+from dossier.report.blocks import Paper
+from dossier.report.equations import FlatMath, PaperMath
+from dossier.report.finish import finish
+from dossier.report.layout import lay_out
+
+Attachment = tuple[str, bytes, str]
+"""Name, content and media type of an embedded file."""
+
+APT_LINE: Final = "apt-get install -y --no-install-recommends libpangoft2-1.0-0 libharfbuzz-subset0"
+VARIANT: Final = "pdf/a-3a"
+
+
+@dataclass(frozen=True, slots=True)
+class PdfUnavailable:
+    """No PDF could be written here; `message` says what to install."""
+
+    message: str
+
+
+def pdf_of(paper: Paper, attachments: tuple[Attachment, ...] = ()) -> bytes | PdfUnavailable:
+    """The PDF of `paper` with `attachments` embedded, or why there is none."""
+    try:
+        import weasyprint
+    except OSError as error:
+        missing = str(error).splitlines()[0]
+        return PdfUnavailable(
+            f"The PDF was not written: a native library is missing ({missing}). "
+            f"On Debian and Ubuntu install it with: {APT_LINE}"
+        )
+    return finish(_written(weasyprint, paper, attachments), paper)
+
+
+def _written(weasyprint: Any, paper: Paper, attachments: tuple[Attachment, ...]) -> bytes:
+    from dossier.report import glyphs
+
+    folder = locate.templates()
+    style = fonts.face_rules(embed=False) + "".join(
+        (folder / name).read_text(encoding="utf-8") for name in ("base.css", "print.css")
+    )
+    math = PaperMath() if glyphs.is_supported() else FlatMath()
+    text = lay_out(paper, math, "print", style)
+    cache: Mapping[str, Any] = (
+        {key: glyphs.EquationImage(equation) for key, equation in math.images.items()}
+        if isinstance(math, PaperMath)
+        else {}
+    )
+    when = issued(paper)
+    files = [
+        weasyprint.Attachment(
+            string=content, name=name, description=description_of(name), created=when, modified=when,
+            relationship=relationship_of(name),
+        )
+        for name, content, _ in attachments
+    ]  # fmt: skip
+    document = weasyprint.HTML(string=text, base_url=str(folder))
+    return document.write_pdf(
+        pdf_variant=VARIANT, pdf_forms=True, pdf_tags=True, cache=dict(cache), attachments=files, custom_metadata=False
+    )
+
+
+def issued(paper: Paper) -> datetime:
+    """The date of issue the engineer stated, as the only time in the file; 1 January 2000 where it is no date."""
+    try:
+        return datetime.fromisoformat(paper.cover.date).replace(tzinfo=UTC)
+    except ValueError:
+        return datetime(2000, 1, 1, tzinfo=UTC)
+
+
+def relationship_of(name: str) -> str:
+    """How an embedded file relates to the document (ISO 32000-2, table 43): the project is its source."""
+    return "Source" if name.startswith("project/") or name.endswith((".yaml", ".yml")) else "Data"
+
+
+def description_of(name: str) -> str:
+    """What an embedded file is."""
+    if relationship_of(name) == "Source":
+        return "Project text from which the dossier was built"
+    return "Certificate: exact evidence" if name.startswith("certificates/") else "Machine-readable evidence"
