@@ -1,8 +1,9 @@
 """Margins from crossings at the ends of the frequency axis and in loops no state model produces, in closed form."""
 
 from fractions import Fraction
-from math import pi
+from math import atan2, pi, sqrt
 
+import pytest
 from flint import fmpq, fmpq_poly
 
 from dossier.checks.boundary import on_boundary, quotient_slope
@@ -99,3 +100,19 @@ def test_the_least_crossing_is_found_among_uncertain_ones():
     assert least([sure, perhaps, later]) == Extreme(Fraction(2), Fraction(4), Place(Fraction(1), Fraction(3)))
     assert least([perhaps]) == Extreme(Fraction(2), None, Place(Fraction(3), Fraction(3)))
     assert least([]) is None
+
+
+def test_a_loop_value_of_plus_one_is_a_half_turn_in_either_sense():
+    # a = s^2 + s + 3, c = s + 2: a - c = s^2 + 1, so L(j) = 1; at W = 5, -L = (-1 + 4 sqrt(5) j)/9
+    loop = boundary([1, 1, 3], [0, 1, 2])
+    margins = phase_margins(loop, [Crossing(Fraction(1, 2), Fraction(3, 2)), Crossing(Fraction(4), Fraction(6))])
+    lag = atan2(4 * sqrt(5), -1)
+    assert float(margins.lag.lower) == pytest.approx(lag, abs=1e-12)
+    assert float(margins.lead.lower) == pytest.approx(pi, abs=1e-12)
+    assert float(margins.delay.lower) == pytest.approx(lag / sqrt(5), abs=1e-12)
+
+
+def test_the_gain_at_infinity_that_may_be_one_leaves_the_delay_undecided():
+    blur = Ball(Fraction(1), Fraction(1, 10**9))
+    loop = on_boundary(exact(1, 2), (blur, *exact(1)), (Ball(Fraction(2), Fraction(1, 10**9)), *exact(3)))
+    assert isinstance(phase_margins(loop, ()).delay, Undecided)

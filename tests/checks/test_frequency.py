@@ -6,10 +6,11 @@ from math import asin, log10, pi, sqrt
 
 import numpy as np
 import pytest
-from hypothesis import assume, given
+from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 from loop_cases import equilibrium_at, loop_case, transfer_loop
 
+from dossier.checks.delays import MOST_SAMPLES
 from dossier.checks.frequency import check_margins, outward
 from dossier.model.ball import Ball
 from dossier.model.claim import Crossing
@@ -160,6 +161,7 @@ def reference_gain_up(numerator, denominator):
     return low
 
 
+@settings(max_examples=40)
 @given(st.lists(RATE, min_size=2, max_size=4), RATE, RATE)
 def test_the_loop_is_stable_inside_its_gain_margins_and_not_beyond(rates, gain, zero):
     opened = np.array([Fraction(1)])
@@ -180,6 +182,7 @@ def test_the_loop_is_stable_inside_its_gain_margins_and_not_beyond(rates, gain, 
             assert np.roots(np.polyadd(a, end * beyond * c)).real.max() > 0
 
 
+@settings(max_examples=40)
 @given(st.lists(RATE, min_size=2, max_size=4), RATE, RATE)
 def test_margins_meet_the_bounds_that_follow_from_the_peak_sensitivity(rates, gain, zero):
     # GM >= Ms/(Ms - 1), 1/GM_down <= Ms/(Ms + 1), PM >= 2 asin(1/(2 Ms)) (Skogestad and Postlethwaite, from memory)
@@ -199,6 +202,7 @@ def test_margins_meet_the_bounds_that_follow_from_the_peak_sensitivity(rates, ga
         assert float(margins.phase.upper) >= 2 * asin(1 / (2 * ms)) - 1e-12
 
 
+@settings(max_examples=40)
 @given(st.lists(RATE, min_size=2, max_size=4), RATE)
 def test_at_the_delay_margin_a_root_lies_on_the_imaginary_axis(rates, gain):
     opened = np.array([Fraction(1)])
@@ -237,3 +241,27 @@ def test_frequencies_are_those_of_the_crossing():
     _, margins = check_margins(CUBE, ORIGIN, cube_claim())
     assert float(margins.gain_up_at.lower) == pytest.approx(sqrt(3), abs=1e-12)
     assert margins.gain_down_at is None
+
+
+def test_a_sampled_loop_of_gain_below_one_has_no_finite_delay_margin():
+    case = loop_case({"x": "x/2 + u"}, {"u": "-x/4"}, sample_interval="1/50")
+    finding, margins = measure(case, equilibrium_at(0))
+    assert finding.result == "proved"
+    assert margins.delay.lower is margins.delay.upper is None
+
+
+def test_a_sampled_loop_that_tolerates_all_delays_tried_is_bounded_on_one_side():
+    # the integrator above with k = 0.01: m = (pi/(2 asin(k/2)) - 1)/2 = 156 whole samples
+    case = loop_case({"x": "x + u"}, {"u": "-x/100"}, sample_interval="1/50")
+    _, margins = measure(case, equilibrium_at(0))
+    assert margins.delay.lower == Fraction(MOST_SAMPLES, 50)
+    assert margins.delay.upper is None
+
+
+def test_an_equilibrium_enclosed_too_widely_leaves_stability_undecided():
+    case = loop_case({"x": "-x^3 + u"}, {"u": "x^2"})
+    place = equilibrium_at(Ball(Fraction(1), Fraction(1, 2)))
+    _, claim = seek_crossings(case, place, "u")
+    finding, margins = check_margins(case, place, claim)
+    assert finding.result == "undecided"
+    assert margins is None

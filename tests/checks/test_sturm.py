@@ -5,7 +5,7 @@ from itertools import pairwise, product
 
 import pytest
 from flint import arb, fmpq
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from loop_cases import blurred, polynomial
 
@@ -40,6 +40,7 @@ def test_the_count_between_two_points_includes_the_upper_one_only(roots, first, 
     assert roots_between(p, low, high) == len({r for r in roots if low < r <= high})
 
 
+@settings(max_examples=40)
 @given(st.lists(ROOT.filter(lambda r: r > 0), min_size=1, max_size=4, unique=True), st.booleans())
 def test_a_complete_list_is_accepted_and_one_with_a_root_left_out_is_not(roots, with_balls):
     roots.sort()
@@ -131,3 +132,9 @@ def test_variations_are_the_extremes_over_all_signs_the_balls_allow(signs):
         kept = [s for s in choice if s]
         counts.append(sum(a != b for a, b in pairwise(kept)))
     assert variations(numbers) == (min(counts), max(counts))
+
+
+def test_three_roots_in_one_interval_of_a_polynomial_with_balls_are_refused():
+    p = polynomial([Fraction(1), Fraction(2), Fraction(3)])
+    with precision(256):
+        assert not isolates(blurred(p), [Crossing(Fraction(1, 2), Fraction(4))]).holds

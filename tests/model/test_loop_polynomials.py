@@ -42,6 +42,12 @@ def test_where_the_loop_is_not_proved_differentiable_it_has_no_linear_part(equat
     assert "equilibrium" in refusal.reason
 
 
+def test_a_term_that_vanishes_does_not_hide_where_the_loop_is_undefined():
+    case = loop_case({"x": "-x + u"}, {"u": "-x + z*log(x)"}, {"z": "0"})
+    assert isinstance(loop_polynomials(case, equilibrium_at(0), "u"), NoLinearPart)
+    assert loop_polynomials(case, equilibrium_at(1), "u").gain == exact(0, 1)
+
+
 def test_a_kink_that_an_uncertain_equilibrium_may_touch_is_not_decided():
     case = loop_case({"x": "-x + u"}, {"u": "-abs(x - 1)"})
     near = Ball(Fraction(1001, 1000), Fraction(1, 100))

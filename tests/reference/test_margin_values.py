@@ -315,6 +315,7 @@ def test_a_resonance_that_only_touches_gain_one_limits_the_phase():
         ([1, 1, 20], [1, 2, 21, 20, 5]),
         ([30, 40], [1, 3, -4, 8]),
         ([6, 11, 12], [1, 1, 1, -3]),
+        ([-0.5], [1, 0.2, 1]),
     ],
 )
 def test_margins_agree_with_a_dense_frequency_grid(numerator, denominator):
