@@ -54,10 +54,11 @@ class Column:
 
 @dataclass(frozen=True, slots=True)
 class Row:
-    """A row; `anchor` is the id other places refer to."""
+    """A row; `anchor` is the id other places refer to; a `spanning` row has one cell, over all columns."""
 
     cells: tuple[Cell, ...]
     anchor: str = ""
+    spanning: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -241,6 +242,8 @@ class Paper:
     subject: str
     keywords: str
     author: str
+    issued: str
+    """Date of issue, or a fixed date where the project states none that is a date."""
 
 
 def cell(*parts: Part) -> Rich:

@@ -18,6 +18,9 @@ GREEK: Final = (
 CAPITAL_GREEK: Final = ("Gamma", "Delta", "Theta", "Lambda", "Xi", "Pi", "Sigma", "Upsilon", "Phi", "Psi", "Omega")
 _VARIANTS: Final = {"epsilon": r"\varepsilon", "phi": r"\varphi"}
 
+WORD_SPACE: Final = r"\ "
+"""Between the words of a long index."""
+
 _STEM: Final = re.compile(r"^([A-Za-z]+?)(\d*)$")
 _CAPITAL_INDEX: Final = re.compile(r"^([A-Z])([a-z]{1,3})$")
 """``Kp``, ``Ts``, ``Fmax``: a capital letter with a lower-case index, as control engineers write gains."""
@@ -47,7 +50,10 @@ def sign_of(name: str) -> str:
     head, *rest = [part for part in name.split("_") if part] or [name]
     sign, index = _stem(head)
     subscripts = [index] if index else []
-    subscripts.extend(_subscript(part) for part in rest)
+    if all(len(part) == 1 or part.isdigit() or part in GREEK for part in rest):
+        subscripts.extend(_subscript(part) for part in rest)
+    else:
+        subscripts.append(rf"\mathrm{{{WORD_SPACE.join(rest)}}}")
     return sign if not subscripts else f"{sign}_{{{','.join(subscripts)}}}"
 
 

@@ -23,7 +23,11 @@ DIGITS: Final = 4
 """Significant digits of a printed bound: more than any tolerance of a machine supports."""
 
 FIRST_DIGITS: Final = 6
-"""Digits printed of a number known far more closely than anyone reads."""
+FEWEST_SHARED: Final = 4
+"""Most and fewest digits printed of a number known more closely than anyone reads; with fewer, both ends are."""
+
+STATED_CLOSENESS: Final = Fraction(1, 10**12)
+"""An input converted through pi is printed as the short decimal it came from, if that is relatively this close."""
 
 EXACT_DIGITS: Final = 9
 """A decimal of at most this many digits is printed whole."""
@@ -64,6 +68,14 @@ def number(value: Fraction, digits: int = DIGITS) -> str:
     return exactly(value) or f"{ABOUT}{GROUP}{nearest(value, digits)}"
 
 
+def stated(value: Fraction) -> str:
+    """An input: its own short decimal, also where a conversion through pi has moved it in the last place."""
+    decimal = _round(value, EXACT_DIGITS, ROUND_HALF_EVEN)
+    if abs(Fraction(decimal) - value) <= abs(value) * STATED_CLOSENESS:
+        return _print(decimal.normalize())
+    return number(value)
+
+
 def estimate(value: float, digits: int = 3) -> str:
     """A floating-point result, marked as an estimate."""
     return f"{ABOUT}{GROUP}{nearest(Fraction(value), digits)}"
@@ -87,9 +99,9 @@ def enclosure(lower: Fraction | None, upper: Fraction | None, digits: int = DIGI
     if lower is None and upper is not None:
         return f"at most {above(upper, digits)}; no finite lower end"
     assert lower is not None and upper is not None
-    shared = first_digits(lower, upper)
-    if shared is not None:
-        return shared
+    for shared in (first_digits(lower, upper, d) for d in range(FIRST_DIGITS, FEWEST_SHARED - 1, -1)):
+        if shared is not None:
+            return shared
     return f"{below(lower, digits)} {ELLIPSIS} {above(upper, digits)}"
 
 

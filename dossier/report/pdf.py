@@ -37,7 +37,7 @@ def pdf_of(paper: Paper, attachments: tuple[Attachment, ...] = ()) -> bytes | Pd
             f"The PDF was not written: a native library is missing ({missing}). "
             f"On Debian and Ubuntu install it with: {APT_LINE}"
         )
-    return finish(_written(weasyprint, paper, attachments), paper)
+    return finish(_written(weasyprint, paper, attachments), paper, {name: kind for name, _, kind in attachments})
 
 
 def _written(weasyprint: Any, paper: Paper, attachments: tuple[Attachment, ...]) -> bytes:
@@ -54,7 +54,7 @@ def _written(weasyprint: Any, paper: Paper, attachments: tuple[Attachment, ...])
         if isinstance(math, PaperMath)
         else {}
     )
-    when = issued(paper)
+    when = datetime.fromisoformat(paper.issued).replace(tzinfo=UTC)
     files = [
         weasyprint.Attachment(
             string=content, name=name, description=description_of(name), created=when, modified=when,
@@ -66,14 +66,6 @@ def _written(weasyprint: Any, paper: Paper, attachments: tuple[Attachment, ...])
     return document.write_pdf(
         pdf_variant=VARIANT, pdf_forms=True, pdf_tags=True, cache=dict(cache), attachments=files, custom_metadata=False
     )
-
-
-def issued(paper: Paper) -> datetime:
-    """The date of issue the engineer stated, as the only time in the file; 1 January 2000 where it is no date."""
-    try:
-        return datetime.fromisoformat(paper.cover.date).replace(tzinfo=UTC)
-    except ValueError:
-        return datetime(2000, 1, 1, tzinfo=UTC)
 
 
 def relationship_of(name: str) -> str:

@@ -108,11 +108,16 @@ def with_unit(figure: str, unit: str) -> str:
 
 def as_written(quantity: Quantity) -> str:
     """A stated quantity as the engineer wrote it, with printed signs and its unit."""
-    match = _WRITTEN.match(quantity.written)
+    return written(quantity.written, quantity.unit)
+
+
+def written(text: str, unit: str = "") -> str:
+    """A number as typed, perhaps with a unit, in printed signs; any other text unchanged."""
+    match = _WRITTEN.match(text)
     if match is None:
-        return quantity.written
+        return text
     figure = match[1].lstrip("+").replace("-", "−") if "e" not in match[1].lower() else _power_of_ten(match[1])
-    return with_unit(figure, match[2] or quantity.unit)
+    return with_unit(figure, match[2] or unit)
 
 
 def _power_of_ten(text: str) -> str:

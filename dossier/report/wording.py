@@ -38,7 +38,7 @@ VERDICT_WORDS: Final[Mapping[Verdict, VerdictWord]] = {
         "“unstable”, “probably stable”, “almost proved”, “failed”",
     ),
     "contradicted": VerdictWord(
-        "▲", "contradicted by simulation",
+        "▴", "contradicted by simulation",
         "A floating-point motion violates it by far more than its estimated error, not yet enclosed. Treat as not met.",
         "“refuted”",
     ),
@@ -56,7 +56,7 @@ VERDICT_WORDS: Final[Mapping[Verdict, VerdictWord]] = {
         "–", "not applicable", "The criterion has no meaning here; the reason is given.", "anything about the criterion"
     ),
     "not attempted": VerdictWord(
-        "◌", "not attempted", "Outside this issue; the reason is given.", "anything about the criterion"
+        "□", "not attempted", "Outside this issue; the reason is given.", "anything about the criterion"
     ),
 }  # fmt: skip
 
@@ -64,7 +64,7 @@ RESULT_WORDS: Final[Mapping[Result, tuple[str, str]]] = {
     "proved": ("●", "proved"),
     "refuted": ("⊗", "refuted"),
     "undecided": ("○", "undecided"),
-    "not run": ("◌", "not run"),
+    "not run": ("□", "not run"),
 }
 
 STRENGTH_WORDS: Final[Mapping[Strength, str]] = {
@@ -163,6 +163,11 @@ def property_of(criterion: Criterion, bounds: str, to: str, within: str) -> str:
     )
 
 
+def counted(count: int, noun: str, nouns: str = "") -> str:
+    """A count with its noun, in the plural where it is not one."""
+    return f"{count} {noun if count == 1 else nouns or noun + 's'}"
+
+
 def scope_words(over: Scope) -> str:
     """The parameter values a verdict speaks of."""
     if over == TOLERANCES:
@@ -172,7 +177,7 @@ def scope_words(over: Scope) -> str:
 
 def scope_short(over: Scope) -> str:
     """The same in one or two words."""
-    return "all spreads" if over == TOLERANCES else "nominal"
+    return "tolerances" if over == TOLERANCES else "nominal"
 
 
 COVER_CAUTION: Final = (

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from datetime import date
 
 from dossier.model.dossier import Evidence
 from dossier.report.blocks import Paper, Picture, Section
@@ -15,6 +16,9 @@ from dossier.report.content.record import file_annex, guide_annex, record_sectio
 from dossier.report.content.scope import assumption_section, caution_section, scope_section
 from dossier.report.content.summary import summary_section
 from dossier.report.content.trace import trace_section
+
+NO_DATE = "2000-01-01"
+"""Stands in the files' properties where the project states no date; nothing of it is printed."""
 
 FIRST_POINT = 5
 """Sections 1 to 4 are summary, scope, assumptions and models."""
@@ -48,5 +52,13 @@ def paper_of(evidence: Evidence, pictures: Mapping[str, Sequence[Picture]]) -> P
     return Paper(
         cover_of(evidence), control_blocks(evidence), tuple(sections), evidence.provenance.project_sha256,
         f"dossier {evidence.provenance.program_version}", f"Stability evidence for {document.machine}",
-        "stability, control loop, certificate, machine", author,
+        "stability, control loop, certificate, machine", author, issued(document.date),
     )  # fmt: skip
+
+
+def issued(text: str) -> str:
+    """The stated date of issue as an ISO date; the only time that enters the papers."""
+    try:
+        return date.fromisoformat(text).isoformat()
+    except ValueError:
+        return NO_DATE

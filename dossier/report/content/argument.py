@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from typing import Final
 
 from dossier.model.dossier import PointEvidence
 from dossier.model.finding import Finding
@@ -13,6 +14,10 @@ from dossier.report.blocks import Argument, Block, Heading, Paragraph, Section, 
 from dossier.report.content.context import Context, assumptions_of, short_hash
 from dossier.report.content.verdicts import criterion_of, property_text
 from dossier.report.rich import Link, Rich, Strong, joined, rich
+
+
+SETTLED: Final = ("proved", "refuted", "no operating point", "contradicted")
+"""Verdicts that rest on a finding; all others leave the claim undeveloped."""
 
 
 def argument_section(context: Context, number: str) -> Section:
@@ -53,7 +58,7 @@ def _top(context: Context) -> Iterator[Step]:
 def _criterion(context: Context, point: PointEvidence, outcome: Outcome) -> Iterator[Step]:
     criterion = criterion_of(point, outcome)
     word = wording.VERDICT_WORDS[outcome.verdict]
-    yield Step(0, "Claim", rich(Link(outcome.identifier, outcome.identifier), " ", _capital(property_text(criterion)),
+    yield Step(0, "Claim", rich(Link(outcome.identifier, outcome.identifier), " ", property_text(criterion),
                                 ", ", wording.scope_words(criterion.over), "."), word.mark)  # fmt: skip
     covered = assumptions_of(context.evidence, point, outcome.identifier)
     model = rich(
@@ -67,10 +72,15 @@ def _criterion(context: Context, point: PointEvidence, outcome: Outcome) -> Iter
         yield Step(1, "Reason", (f"{theorem.name}, {theorem.title}: {theorem.conclusion}",))
     finding = deciding_finding(point, outcome)
     if finding is None:
-        yield Step(1, "Undeveloped", (outcome.because or "no check established anything",))
+        settled = outcome.verdict in SETTLED
+        text = rich(
+            outcome.because or "no check established anything",
+            *((" ", *context.links(outcome.evidence, "")) if settled else ()),
+        )
+        yield Step(1, "Finding" if settled else "Undeveloped", text)
         return
     if not finding.premises:
-        yield Step(1, "Finding", rich(_capital(finding.statement), "; ", context.links(finding.evidence)),
+        yield Step(1, "Finding", rich(finding.statement, "; ", context.links(finding.evidence)),
                    wording.RESULT_WORDS[finding.result][0])  # fmt: skip
     for premise in finding.premises:
         detail = f" ({premise.detail})" if premise.detail else ""
@@ -79,10 +89,6 @@ def _criterion(context: Context, point: PointEvidence, outcome: Outcome) -> Iter
                           *((", ", *sources) if sources else ()))  # fmt: skip
         yield Step(2, "Premise", text, wording.RESULT_WORDS[premise.result][0])
     yield Step(1, "Evidence", context.links(finding.evidence, "the stated model alone"))
-
-
-def _capital(text: str) -> str:
-    return text[:1].upper() + text[1:]
 
 
 def deciding_finding(point: PointEvidence, outcome: Outcome) -> Finding | None:

@@ -11,7 +11,7 @@ from dossier.model.theorem import THEOREMS
 from dossier.report import formulas, numbers, wording
 from dossier.report.blocks import Block, Column, Equations, Facts, Paragraph, Row, Subheading, Table
 from dossier.report.content.context import Context
-from dossier.report.rich import Formula, Rich, rich
+from dossier.report.rich import Formula, Mono, Rich, rich
 
 METHODS = {
     "quadratic": "quadratic form, proved by exact Gram identities",
@@ -38,12 +38,26 @@ def _set_blocks(context: Context, point: PointEvidence, claim: SetClaim) -> Iter
     yield Subheading((f"{claim.identifier}, {kind}",), claim.identifier)
     states, notation = point.case.model.state_names, context.notations[point.case.model.name]
     degree = max((sum(e) for e in claim.function), default=0)
-    said = f"function V of degree {degree} in the offsets of the states, with {len(claim.function)} terms"
-    yield Equations((Formula(formulas.function_of_offsets(claim.function, states, notation), said, display=True),))
+    twin = _earlier_twin(point, claim)
+    if twin is None:
+        said = f"function V of degree {degree} in the offsets of the states, with {len(claim.function)} terms"
+        yield Equations((Formula(formulas.function_of_offsets(claim.function, states, notation), said, display=True),))
+    else:
+        yield Paragraph(rich("The same function V as in ", context.link(twin.identifier), "."))
     yield Facts(tuple(_set_facts(context, point, claim, degree)))
     for finding in point.findings:
         if finding.subject == claim.identifier and finding.premises:
             yield premise_table(context, finding)
+
+
+def _earlier_twin(point: PointEvidence, claim: SetClaim) -> SetClaim | None:
+    """An earlier claim about the same function, so that it is printed once."""
+    for other in point.claims:
+        if other is claim:
+            return None
+        if isinstance(other, LyapunovClaim | CoverClaim) and other.function == claim.function:
+            return other
+    return None
 
 
 def _set_facts(context: Context, point: PointEvidence, claim: SetClaim, degree: int) -> Iterator[tuple[str, Rich]]:
@@ -53,8 +67,9 @@ def _set_facts(context: Context, point: PointEvidence, claim: SetClaim, degree: 
         " around ", context.link(claim.equilibrium),
     )  # fmt: skip
     if isinstance(claim, LyapunovClaim):
-        multiplier = len(claim.decrease)
-        yield "Form", (f"degree {degree}, {METHODS[claim.method]}; {multiplier} decrease identity(ies)",)
+        count = len(claim.decrease)
+        identities = f"; {wording.counted(count, 'decrease identity', 'decrease identities')}" if count else ""
+        yield "Form", (f"degree {degree}, {METHODS[claim.method]}{identities}",)
     else:
         yield "Form", (f"degree {degree}; the decrease was closed by {numbers.count(claim.boxes)} boxes",)
     yield "Parameters", (wording.scope_words(claim.over),)
@@ -66,14 +81,8 @@ def _set_facts(context: Context, point: PointEvidence, claim: SetClaim, degree: 
             word = wording.CHECK_WORDS[finding.check]
             yield (
                 "Checked by",
-                (
-                    f"{word}: {finding.result}, {wording.STRENGTH_WORDS[finding.strength]}. {_capital(finding.statement)}.",
-                ),
+                (f"{word}: {finding.result}, {wording.STRENGTH_WORDS[finding.strength]}. {finding.statement}.",),
             )
-
-
-def _capital(text: str) -> str:
-    return text[:1].upper() + text[1:]
 
 
 def premise_table(context: Context, finding: Finding) -> Table:
@@ -105,13 +114,14 @@ def _other_table(context: Context, point: PointEvidence) -> Table:
     for claim in point.claims:
         if isinstance(claim, RootsClaim):
             text = (
-                f"{len(claim.solutions)} uniqueness box(es), {len(claim.undecided)} undecided, "
-                f"{numbers.count(claim.boxes)} boxes closed"
+                f"{wording.counted(len(claim.solutions), 'uniqueness box', 'uniqueness boxes')}, {len(claim.undecided)} undecided, "
+                f"{numbers.count(claim.boxes)} boxes looked at"
             )
         elif isinstance(claim, SturmClaim):
             text = (
-                f"loop {claim.loop}: {len(claim.gain_crossings)} crossing(s) of the real axis, "
-                f"{len(claim.phase_crossings)} of the unit circle, {len(claim.peak_candidates)} candidate(s) for the peak"
+                f"loop {claim.loop}: {wording.counted(len(claim.gain_crossings), 'crossing')} of the real axis, "
+                f"{len(claim.phase_crossings)} of the unit circle, {wording.counted(len(claim.peak_candidates), 'candidate')} "
+                "for the peak"
             )
         else:
             continue
@@ -119,9 +129,7 @@ def _other_table(context: Context, point: PointEvidence) -> Table:
         result = "–" if finding is None else f"{finding.result}, {wording.STRENGTH_WORDS[finding.strength]}"
         theorem = THEOREMS[claim.theorem].title if claim.theorem in THEOREMS else claim.theorem
         rows.append(
-            Row(
-                (context_cell(claim.identifier), (text,), (f"{claim.theorem}, {theorem}",), (result,)), claim.identifier
-            )
+            Row(((Mono(claim.identifier),), (text,), (f"{claim.theorem}, {theorem}",), (result,)), claim.identifier)
         )
     columns = (
         Column("Evidence", "id", 20),
@@ -130,10 +138,3 @@ def _other_table(context: Context, point: PointEvidence) -> Table:
         Column("Check", "short", 15),
     )
     return Table("Other evidence of this operating point", columns, tuple(rows))
-
-
-def context_cell(identifier: str) -> Rich:
-    """The id of the row's own evidence."""
-    from dossier.report.rich import Mono
-
-    return (Mono(identifier),)

@@ -10,7 +10,7 @@ from dossier.report import numbers, wording
 from dossier.report.blocks import Block, Column, Facts, Paragraph, Row, Subheading, Table
 from dossier.report.content.context import Context
 from dossier.report.content.quantities import NOTHING
-from dossier.report.rich import Formula, Mono, Rich, rich
+from dossier.report.rich import Formula, Mono, Rich, joined, rich
 
 REVEALS: Final = {
     "exact": "an inequality that fails, however slightly; rounding that spoilt a certificate",
@@ -32,26 +32,22 @@ def check_blocks(context: Context, point: PointEvidence) -> Iterator[Block]:
 
 
 def _check_table(context: Context, point: PointEvidence) -> Table:
-    rows = tuple(
-        Row(
-            (
-                context.links((finding.subject,)),
-                (wording.CHECK_WORDS[finding.check],),
-                (REVEALS[finding.check],),
-                (f"{wording.RESULT_WORDS[finding.result][0]} {finding.result}",),
-                (wording.STRENGTH_WORDS[finding.strength],),
+    rows = []
+    for kind in REVEALS:
+        findings = [f for f in point.findings if f.check == kind]
+        if findings:
+            marked = joined(
+                [rich(wording.RESULT_WORDS[f.result][0], numbers.GROUP, context.link(f.subject)) for f in findings],
+                "  ",
             )
-        )
-        for finding in point.findings
-    )
+            rows.append(Row(((wording.CHECK_WORDS[kind],), (REVEALS[kind],), marked)))
     columns = (
-        Column("Of", "id", 18),
-        Column("Check", share=23),
-        Column("What it would reveal", share=36),
-        Column("Result", "short", 13),
-        Column("Strength", "short", 10),
+        Column("Check", share=22),
+        Column("What it would reveal", share=30),
+        Column("Of, with its result", share=48),
     )
-    return Table("Checks", columns, rows)
+    key = "; ".join(f"{mark} {word}" for mark, word in wording.RESULT_WORDS.values())
+    return Table("Checks", columns, tuple(rows), (f"Results: {key}.",))
 
 
 def _campaign_blocks(context: Context, point: PointEvidence, campaign: Campaign) -> Iterator[Block]:

@@ -8,7 +8,7 @@ from typing import Final
 from dossier.model.claim import RootsClaim
 from dossier.model.dossier import PointEvidence
 from dossier.model.equilibrium import Equilibrium
-from dossier.report import numbers, units
+from dossier.report import numbers, units, wording
 from dossier.report.blocks import Block, Bullets, Column, Paragraph, Row, Table
 from dossier.report.content.context import Context
 from dossier.report.notation import spoken
@@ -44,10 +44,8 @@ def _completeness(context: Context, point: PointEvidence) -> Rich:
             f"Proved: the search box holds exactly {noun} at the nominal parameter values, the listed one"
             f"{'' if count == 1 else 's'}", proof,
         )  # fmt: skip
-    open_boxes = numbers.count(len(roots.undecided))
-    return rich(
-        f"The list is not proved to be complete: {open_boxes} part(s) of the search box stayed undecided", proof
-    )
+    parts = wording.counted(len(roots.undecided), "part")
+    return rich(f"The list is not proved to be complete: {parts} of the search box stayed undecided", proof)
 
 
 def _tables(context: Context, point: PointEvidence) -> Iterator[Table]:

@@ -70,7 +70,7 @@ def _claim_table(context: Context, point: PointEvidence) -> Table:
         finding = next((f for f in point.findings if f.subject == claim.identifier), None)
         result = "not checked" if finding is None else f"{finding.result}, {finding.strength}"
         if isinstance(claim, MatrixClaim):
-            method = f"Lyapunov inequality, {numbers.count(len(claim.cells))} parameter cell(s)"
+            method = f"Lyapunov inequality, {wording.counted(len(claim.cells), 'parameter cell')}"
             rows.append(
                 Row(
                     (

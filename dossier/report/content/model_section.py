@@ -128,8 +128,8 @@ def side_text(side: Interval, unit: units.PrintedUnit) -> str:
     if side.lower is None and side.upper is None:
         return "not bounded"
     low, high = unit.from_si(side.lower, side.upper)
-    left = "" if low is None else numbers.number(low)
-    right = "" if high is None else numbers.number(high)
+    left = "" if low is None else numbers.stated(low)
+    right = "" if high is None else numbers.stated(high)
     if low is None:
         return f"up to {right}"
     return f"from {left}" if high is None else f"{left} {numbers.ELLIPSIS} {right}"
@@ -161,17 +161,17 @@ def _parameter_cells(
     context: Context, model: Model, parameter: Parameter, notation: Notation, changed: bool
 ) -> tuple[Rich, ...]:
     unit = units.absolute_unit(parameter.unit, parameter.scale)
-    spread = NOTHING if parameter.spread.is_point else parameter.spread_written
+    spread = NOTHING if parameter.spread.is_point else side_text(parameter.spread, unit)
     kind = KIND_WORDS[parameter.kind] + (", varies" if parameter.varies else "") + (", set below" if changed else "")
     low, high = unit.from_si(parameter.nominal.lower, parameter.nominal.upper)
-    value = numbers.enclosure(low, high)
+    value = numbers.stated((low + high) / 2) if low is not None and high is not None else NOTHING
     return (
         (Formula(notation.latex(parameter.name), spoken(parameter.name)),),
         (Mono(parameter.name),),
         (parameter.meaning or NOTHING,),
         (value,),
         (units.unit_text(parameter.unit) or "1",),
-        (spread.replace("-", numbers.MINUS),),
+        (spread,),
         (kind,),
         (parameter.source or NOTHING,),
     )
@@ -179,7 +179,14 @@ def _parameter_cells(
 
 def _set_table(context: Context, model: Model, notation: Notation) -> Table:
     rows = tuple(
-        Row(((context.link(p.case.name),), (Formula(notation.latex(name), spoken(name)),), (Mono(name),), (value,)))
+        Row(
+            (
+                (context.link(p.case.name),),
+                (Formula(notation.latex(name), spoken(name)),),
+                (Mono(name),),
+                (units.written(value),),
+            )
+        )
         for p in _points(context, model)
         for name, value in p.case.set_values
     )

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator, Sequence
 
 from dossier.model.dossier import PointEvidence
-from dossier.report import wording
+from dossier.report import units, wording
 from dossier.report.blocks import (
     Block,
     Card,
@@ -59,7 +59,7 @@ def _asked(context: Context, point: PointEvidence) -> Iterator[Block]:
         ("Fingerprint as analysed", (Mono(point.model_hash),)),
     ]
     if case.set_values:
-        facts.append(("Set here", ("; ".join(f"{n} = {v}" for n, v in case.set_values),)))
+        facts.append(("Set here", ("; ".join(f"{n} = {units.written(v)}" for n, v in case.set_values),)))
     facts.append(("Equilibrium", (_equilibrium_words(point),)))
     yield Facts(tuple(facts))
     yield _sets_table(context, point)
@@ -104,7 +104,7 @@ def _cards(context: Context, point: PointEvidence) -> Iterator[Block]:
         criterion = criterion_of(point, outcome)
         title = rich(Strong(outcome.identifier), "  ", wording.claim_name(criterion.claim))
         blocks: list[Block] = [Paragraph(issue_sentence(context, point, outcome))]
-        if outcome.because:
+        if outcome.because and (outcome.verdict != "proved" or outcome.contradiction):
             blocks.append(Paragraph((outcome.because,), "small"))
         facts = _card_facts(context, point, outcome.identifier)
         if facts:
@@ -120,9 +120,12 @@ def _card_facts(context: Context, point: PointEvidence, identifier: str) -> tupl
     value = quantities.obtained(outcome, criterion, point.case)
     if asked and value:
         gauge = quantities.reserve(outcome)
-        left = f"; reserve {gauge.text}" if gauge is not None else ""
-        facts.append(("Required, obtained", rich(f"{asked}; {value}{left} (", context.links(outcome.evidence), ")")))
+        left = f", reserve {gauge.text}" if gauge is not None else ""
+        words = f"required {asked}, obtained {value}{left} ("
+        facts.append(("Value", rich(words, context.links(outcome.evidence), ")")))
     if outcome.sub_scope:
         facts.append(("Proved part", (outcome.sub_scope,)))
-    facts.extend((f"Counter-example: {name}", (text,)) for name, text in outcome.counter_example.items())
+    if outcome.counter_example:
+        words = "; ".join(f"{name}: {text}" for name, text in outcome.counter_example.items())
+        facts.append(("Counter-example", (words,)))
     return tuple(facts)

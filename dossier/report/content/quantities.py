@@ -49,8 +49,10 @@ def _bounds(criterion: Criterion) -> tuple[Quantity, ...]:
 def required(criterion: Criterion) -> str:
     """The bounds as the engineer wrote them; nothing for a yes-no claim."""
     if criterion.between is not None:
-        low, high = criterion.between
-        return f"{units.as_written(low)} {numbers.ELLIPSIS} {units.as_written(high)}"
+        low, high = (units.as_written(q) for q in criterion.between)
+        figure, _, unit = low.partition(units.SPACE)
+        shared = unit and high.endswith(units.SPACE + unit)
+        return f"{figure if shared else low} {numbers.ELLIPSIS} {high}"
     if criterion.at_least is not None:
         return f"{WANTED_UP}{units.SPACE}{units.as_written(criterion.at_least)}"
     if criterion.at_most is not None:

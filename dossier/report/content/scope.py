@@ -101,4 +101,6 @@ def _covers(context: Context, covers: tuple[str, ...]) -> Rich:
 
 def caution_section(number: str) -> Section:
     """The fixed cautions; nothing in a project can change them."""
-    return Section("cautions", number, "Cautions and deferral", tuple(Paragraph((t,)) for t in wording.CAUTIONS))
+    return Section(
+        "cautions", number, "Cautions and deferral", tuple(Paragraph((t,)) for t in wording.CAUTIONS), new_page=True
+    )

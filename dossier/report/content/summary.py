@@ -76,21 +76,26 @@ def _contradictions(context: Context) -> Iterator[Block]:
 
 
 def _criteria_table(context: Context) -> Table:
-    rows = [
-        Row(_summary_cells(context, point, outcome)) for point in context.evidence.points for outcome in point.outcomes
-    ]
+    rows = [row for point in context.evidence.points for row in _point_rows(context, point)]
     columns = (
-        Column("Criterion", "id", 9),
-        Column("Asks", share=19),
-        Column("Parameters", "short", 8),
-        Column("Required", "number", 12),
+        Column("Criterion", "id", 8),
+        Column("Asks", share=21),
+        Column("Parameters", "short", 9),
+        Column("Required", "number", 14),
         Column("Obtained", "number", 14),
-        Column("Reserve", "short", 11),
-        Column("Verdict", "short", 15),
-        Column("Checked", "short", 7),
-        Column("Where", "short", 5),
+        Column("Reserve", "short", 9),
+        Column("Verdict", "short", 16),
+        Column("Checked", "short", 6),
+        Column("Page", "short", 3),
     )
     return Table("Criteria and verdicts", columns, tuple(rows), _reserve_note())
+
+
+def _point_rows(context: Context, point: PointEvidence) -> Iterator[Row]:
+    meaning = f"  {point.case.meaning}" if point.case.meaning else ""
+    yield Row((rich(Link(point.case.name, point.case.name), meaning),), spanning=True)
+    for outcome in point.outcomes:
+        yield Row(_summary_cells(context, point, outcome))
 
 
 def _reserve_note() -> Rich:
@@ -109,7 +114,7 @@ def _summary_cells(context: Context, point: PointEvidence, outcome: Outcome) -> 
         asks.append(f", loop {criterion.loop}")
     value = quantities.obtained(outcome, criterion, point.case) or _scale(point, outcome)
     return (
-        (Link(outcome.identifier, outcome.identifier),),
+        (Link(outcome.identifier, spoken_id(outcome.identifier)),),
         tuple(asks),
         (wording.scope_short(criterion.over),),
         (quantities.required(criterion) or quantities.NOTHING,),

@@ -75,9 +75,8 @@ def _proved(context: Context, point: PointEvidence, outcome: Outcome, criterion:
     under = rich(" Assumptions: ", joined([context.link(a) for a in premises]), ".") if premises else ()
     return rich(
         "For ", _model(point), ", ", wording.scope_words(criterion.over), starts, f": {asked}. ",
-        "Checked in ", _arithmetic(outcome), " by the checks of this program, version ",
-        context.evidence.provenance.program_version, ", which do not rely on the search that produced the evidence",
-        _resting(context, outcome), ".", under,
+        "Checked in ", _arithmetic(outcome), f" by checker {context.evidence.provenance.program_version}, ",
+        "which does not rely on the search that produced the evidence", _resting(context, outcome), ".", under,
     )  # fmt: skip
 
 
