@@ -1,0 +1,79 @@
+"""The only module that sees the conic solvers: states a program, runs it, and reports how it ended as a value.
+
+A solver may panic (an exception that does not derive from Exception crosses Python), answer nonsense or
+give up; every ending is a `Solved`, and nothing it says is believed.
+"""
+
+from __future__ import annotations
+
+import time
+import warnings
+from dataclasses import dataclass, field
+from typing import Any, Final, Literal
+
+import cvxpy
+
+ITERATIONS: Final = 100
+"""Interior-point iterations; well-scaled programs of this size need 10 to 30."""
+
+OPTIONS: Final[dict[str, dict[str, Any]]] = {
+    "CLARABEL": {"max_iter": ITERATIONS, "max_threads": 1},
+    "SCS": {"max_iters": 20_000, "eps": 1e-7},
+}
+"""Work limits per solver, never time limits."""
+
+
+@dataclass(frozen=True, slots=True)
+class Solved:
+    """`status`: ``optimal`` and ``inaccurate`` leave values in the variables, the others do not."""
+
+    status: Literal["optimal", "inaccurate", "infeasible", "failed"]
+    remark: str
+
+    @property
+    def has_values(self) -> bool:
+        """The variables hold a candidate."""
+        return self.status in ("optimal", "inaccurate")
+
+
+@dataclass
+class Meter:
+    """Programs solved and seconds spent inside the solvers by this process; only for benchmarks and the run log."""
+
+    programs: int = 0
+    seconds: float = 0.0
+    solver_seconds: float = field(default=0.0)
+
+
+meter: Final = Meter()
+
+
+def solve(problem: cvxpy.Problem, solver: str = "CLARABEL") -> Solved:
+    """Run `solver` on `problem`; never raises except for an interruption by the user."""
+    begin = time.perf_counter()
+    try:
+        with warnings.catch_warnings():
+            warnings.simplefilter("ignore")
+            problem.solve(solver=solver, ignore_dpp=False, **OPTIONS[solver])
+        solved = _ending(problem)
+    except (KeyboardInterrupt, SystemExit):
+        raise
+    except BaseException as error:  # a panicking solver raises outside the Exception hierarchy
+        solved = Solved("failed", f"{solver}: {type(error).__name__}")
+    meter.programs += 1
+    meter.seconds += time.perf_counter() - begin
+    stats = problem.solver_stats
+    if stats is not None and stats.solve_time is not None:
+        meter.solver_seconds += float(stats.solve_time)
+    return solved
+
+
+def _ending(problem: cvxpy.Problem) -> Solved:
+    status = str(problem.status)
+    if status == cvxpy.OPTIMAL:
+        return Solved("optimal", "optimal")
+    if status == cvxpy.OPTIMAL_INACCURATE:
+        return Solved("inaccurate", "optimal within reduced accuracy")
+    if status in (cvxpy.INFEASIBLE, cvxpy.INFEASIBLE_INACCURATE):
+        return Solved("infeasible", "reported infeasible")
+    return Solved("failed", status.replace("_", " "))
