@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from fractions import Fraction
-from typing import Literal
+from typing import Final, Literal
 
 from dossier.model.outcome import Verdict
 from dossier.report.rich import Formula, Part, Rich
@@ -40,6 +40,9 @@ class PageReference:
     text: str
 
 
+SHORT_TABLE: Final = 9
+"""Rows up to which a table is kept together: a few lines more than a third of a page."""
+
 Cell = Rich | VerdictMark | Gauge | PageReference
 
 
@@ -69,6 +72,11 @@ class Table:
     columns: tuple[Column, ...]
     rows: tuple[Row, ...]
     note: Rich = ()
+
+    @property
+    def is_short(self) -> bool:
+        """It should stand on one page."""
+        return len(self.rows) <= SHORT_TABLE
 
 
 @dataclass(frozen=True, slots=True)
@@ -148,9 +156,10 @@ class Argument:
 
 @dataclass(frozen=True, slots=True)
 class Picture:
-    """A figure in both papers' colours."""
+    """A figure in both papers' colours; `kind` says to which part of an operating point it belongs."""
 
     anchor: str
+    kind: str
     print_svg: str
     screen_svg: str
     alternative: str

@@ -54,6 +54,7 @@ class ScreenMath:
     glyphs: dict[str, str] = field(default_factory=dict)
 
     def __call__(self, formula: Formula) -> Markup:
+        """The markup of `formula`."""
         equation = typeset(formula.latex, formula.speech, formula.display)
         drawing = equation.drawing
         uses = []
@@ -81,6 +82,7 @@ class PaperMath:
     images: dict[str, Equation] = field(default_factory=dict)
 
     def __call__(self, formula: Formula) -> Markup:
+        """The markup of `formula`."""
         equation = typeset(formula.latex, formula.speech, formula.display)
         self.images[equation.key] = equation
         return Markup(
@@ -98,6 +100,7 @@ class FlatMath:
     """Equations as self-contained inline SVG: larger and slower, for a PDF writer without `PaperMath`'s hook."""
 
     def __call__(self, formula: Formula) -> Markup:
+        """The markup of `formula`."""
         equation = typeset(formula.latex, formula.speech, formula.display)
         drawing = equation.drawing
         box = " ".join(decimal(v) for v in drawing.view_box)

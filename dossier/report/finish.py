@@ -88,7 +88,7 @@ def _name_formulas(elements: Mapping[Any, Any]) -> None:
     """Equations are formulas with their words, not figures (ISO 14289-1, 7.7)."""
     for element in elements.values():
         words = str(element.get(Name.Alt, ""))
-        if element.S == Name.Figure and words.startswith(FORMULA_MARK):
+        if Name.Figure == element.S and words.startswith(FORMULA_MARK):
             element.S = Name.Formula
             element.Alt = pikepdf.String(words.removeprefix(FORMULA_MARK))
 
@@ -99,7 +99,7 @@ def _free_running_heads(pdf: pikepdf.Pdf, real: set[Any]) -> None:
     parents = {int(numbers[i]): numbers[i + 1] for i in range(0, len(numbers), 2)}
     for page in pdf.pages:
         owners = parents.get(int(page.get(Name.StructParents, -1)))
-        if not isinstance(owners, Array):
+        if owners is None or not isinstance(owners, Array):
             continue
         loose = {i for i, owner in enumerate(owners) if isinstance(owner, Dictionary) and owner.objgen not in real}
         if loose:
@@ -110,29 +110,32 @@ def _free_running_heads(pdf: pikepdf.Pdf, real: set[Any]) -> None:
 
 def _mark_artifacts(pdf: pikepdf.Pdf, page: pikepdf.Page, loose: set[int]) -> None:
     middle = float(page.mediabox[3]) / PIXEL / 2
-    instructions = list(pikepdf.parse_content_stream(page))
-    for position, (operands, operator) in enumerate(instructions):
-        if (
-            str(operator) == "BDC"
-            and isinstance(operands[1], Dictionary)
-            and int(operands[1].get("/MCID", -1)) in loose
-        ):
+    instructions: list[Any] = list(pikepdf.parse_content_stream(page))
+    for position, instruction in enumerate(instructions):
+        if _mark_number(instruction) in loose:
             kind = _pagination(instructions[position:], middle)
-            instructions[position] = pikepdf.ContentStreamInstruction([Name.Artifact, kind], operator)
+            instructions[position] = pikepdf.ContentStreamInstruction([Name.Artifact, kind], instruction.operator)
     page.Contents = pdf.make_stream(pikepdf.unparse_content_stream(instructions))
+
+
+def _mark_number(instruction: Any) -> int:
+    """The marked-content number that an instruction opens, or -1."""
+    if str(instruction.operator) != "BDC" or not isinstance(instruction.operands[1], Dictionary):
+        return -1
+    return int(instruction.operands[1].get("/MCID", -1))
 
 
 def _pagination(following: list[Any], middle: float) -> Dictionary:
     """Header or footer, by the height at which the first text after the mark stands."""
-    for operands, operator in following:
-        if str(operator) == "Tm":
-            above = float(operands[5]) < middle
+    for instruction in following:
+        if str(instruction.operator) == "Tm":
+            above = float(instruction.operands[5]) < middle
             return Dictionary(
                 Type=Name.Pagination,
                 Subtype=Name.Header if above else Name.Footer,
                 Attached=Array([Name.Top if above else Name.Bottom]),
             )
-        if str(operator) == "EMC":
+        if str(instruction.operator) == "EMC":
             break
     return Dictionary(Type=Name.Layout)
 
@@ -140,7 +143,7 @@ def _pagination(following: list[Any], middle: float) -> Dictionary:
 def _unwrap_forms(elements: Mapping[Any, Any]) -> None:
     """A form element's only kid stands alone: validators of signed files look for the field there."""
     for element in elements.values():
-        if element.S == Name.Form:
+        if Name.Form == element.S:
             kids = _kids(element)
             if len(kids) == 1:
                 element.K = kids[0]
@@ -191,5 +194,4 @@ def _identify(pdf: pikepdf.Pdf, paper: Paper) -> None:
     metadata = pdf.make_stream(xmp.packet(identity))
     metadata.Type, metadata.Subtype = Name.Metadata, Name.XML
     pdf.Root.Metadata = metadata
-    if Name.Info in pdf.trailer:
-        del pdf.trailer.Info
+    pdf.trailer.Info = pdf.make_indirect(Dictionary(Title=pikepdf.String(identity.title)))

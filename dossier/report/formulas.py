@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
 from fractions import Fraction
+from itertools import pairwise
 from typing import Final
 
 from dossier.model.expression import Expression, fold
@@ -65,7 +66,7 @@ def _sum(node: Expression, parts: tuple[Piece, ...]) -> str:
 
 def _product(parts: tuple[Piece, ...]) -> str:
     text = _wrapped(parts[0], PRODUCT)
-    for before, part in zip(parts, parts[1:], strict=False):
+    for before, part in pairwise(parts):
         both_numbers = before[0][-1:].isdigit() and part[0][:1].isdigit()
         text += (r" \cdot " if both_numbers else r"\,") + _wrapped(part, PRODUCT)
     return text
@@ -87,7 +88,9 @@ def _call(node: Expression, parts: tuple[Piece, ...]) -> str:
         return rf"\left|{parts[0][0]}\right|"
     if node.op == "sqrt":
         return rf"\sqrt{{{parts[0][0]}}}"
-    arguments = r";\, ".join((parts[0][0], r",\, ".join(p[0] for p in parts[1:]))) if len(parts) > 1 else parts[0][0]
+    first, *rest = (p[0] for p in parts)
+    comma = r",\, "
+    arguments = rf"{first};\, {comma.join(rest)}" if rest else first
     return rf"{_NAMED[node.op]}\left({arguments}\right)"
 
 
@@ -186,8 +189,3 @@ def rounded_matrix(rows: Sequence[Sequence[Fraction]]) -> tuple[str, bool]:
     """A rational matrix with the first digits of its entries, and whether all of them are exact."""
     exact = all(numbers.exactly(v) is not None for row in rows for v in row)
     return matrix([[figure(numbers.number(v)) for v in row] for row in rows]), exact
-
-
-def column(entries: Sequence[str]) -> str:
-    """A column vector of LaTeX entries."""
-    return matrix([[e] for e in entries])

@@ -11,6 +11,8 @@ import hashlib
 from dataclasses import dataclass
 from typing import Any
 
+import pydyf
+
 from dossier.report.equations import Equation
 from dossier.report.outlines import Outline, Placed, decimal
 
@@ -47,8 +49,6 @@ def _use(placed: Placed, key: str) -> bytes:
 
 def _form_of(stream: Any, outline: Outline) -> str:
     """The name of the form object with this outline, made on first use."""
-    import pydyf
-
     forms = stream._resources["XObject"]
     key = "g" + hashlib.sha256(repr(outline).encode("ascii")).hexdigest()[:12]
     if key not in forms:
@@ -61,8 +61,6 @@ def _form_of(stream: Any, outline: Outline) -> str:
     return key
 
 
-def is_supported() -> bool:
-    """This WeasyPrint draws objects from its cache into streams with a resource dictionary."""
-    from weasyprint.pdf.stream import Stream
-
-    return hasattr(Stream, "set_color") and "_resources" in Stream.__init__.__code__.co_names
+def is_supported(stream_type: type) -> bool:
+    """This stream class of WeasyPrint still has the resource dictionary that `EquationImage` reaches into."""
+    return hasattr(stream_type, "set_color") and "_resources" in stream_type.__init__.__code__.co_names

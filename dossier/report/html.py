@@ -11,8 +11,7 @@ from dossier.report.layout import lay_out
 def html_of(paper: Paper) -> str:
     """The whole page as text."""
     folder = locate.templates()
-    style = fonts.face_rules(embed=True) + "".join(
-        (folder / name).read_text(encoding="utf-8") for name in ("base.css", "screen.css")
-    )
+    sheets = "".join((folder / name).read_text(encoding="utf-8") for name in ("base.css", "screen.css"))
+    style = fonts.face_rules(embed=True) + sheets
     script = (folder / "page.js").read_text(encoding="utf-8")
     return lay_out(paper, ScreenMath(), "screen", style, script)

@@ -22,7 +22,9 @@ _SUPERSCRIPT: Final = frozenset("⁰¹²³⁴⁵⁶⁷⁸⁹⁻")
 class Typesetter(Protocol):
     """Sets formulas for one document."""
 
-    def __call__(self, formula: Formula) -> Markup: ...
+    def __call__(self, formula: Formula) -> Markup:
+        """The markup of one formula."""
+        ...
 
     def definitions(self) -> Markup:
         """What the document must carry for its formulas."""

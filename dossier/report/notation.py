@@ -13,8 +13,9 @@ from types import MappingProxyType
 from typing import Final
 
 GREEK: Final = (
-    "alpha beta gamma delta epsilon zeta eta theta iota kappa lambda mu nu xi pi rho sigma tau upsilon phi chi psi omega"
-).split()
+    "alpha", "beta", "gamma", "delta", "epsilon", "zeta", "eta", "theta", "iota", "kappa", "lambda", "mu", "nu", "xi",
+    "pi", "rho", "sigma", "tau", "upsilon", "phi", "chi", "psi", "omega",
+)  # fmt: skip
 CAPITAL_GREEK: Final = ("Gamma", "Delta", "Theta", "Lambda", "Xi", "Pi", "Sigma", "Upsilon", "Phi", "Psi", "Omega")
 _VARIANTS: Final = {"epsilon": r"\varepsilon", "phi": r"\varphi"}
 

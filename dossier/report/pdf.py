@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from datetime import UTC, datetime
 from typing import Any, Final
 
-from dossier.report import fonts, locate
+from dossier.report import fonts, glyphs, locate
 from dossier.report.blocks import Paper
 from dossier.report.equations import FlatMath, PaperMath
 from dossier.report.finish import finish
@@ -30,24 +30,24 @@ class PdfUnavailable:
 def pdf_of(paper: Paper, attachments: tuple[Attachment, ...] = ()) -> bytes | PdfUnavailable:
     """The PDF of `paper` with `attachments` embedded, or why there is none."""
     try:
-        import weasyprint
+        import weasyprint  # noqa: PLC0415 - without its native library the HTML must still be written
+        from weasyprint.pdf.stream import Stream  # noqa: PLC0415
     except OSError as error:
         missing = str(error).splitlines()[0]
         return PdfUnavailable(
             f"The PDF was not written: a native library is missing ({missing}). "
             f"On Debian and Ubuntu install it with: {APT_LINE}"
         )
-    return finish(_written(weasyprint, paper, attachments), paper, {name: kind for name, _, kind in attachments})
+    raw = _written(weasyprint, paper, attachments, shared_glyphs=glyphs.is_supported(Stream))
+    return finish(raw, paper, {name: kind for name, _, kind in attachments})
 
 
-def _written(weasyprint: Any, paper: Paper, attachments: tuple[Attachment, ...]) -> bytes:
-    from dossier.report import glyphs
-
+def _written(weasyprint: Any, paper: Paper, attachments: tuple[Attachment, ...], *, shared_glyphs: bool) -> bytes:
     folder = locate.templates()
     style = fonts.face_rules(embed=False) + "".join(
         (folder / name).read_text(encoding="utf-8") for name in ("base.css", "print.css")
     )
-    math = PaperMath() if glyphs.is_supported() else FlatMath()
+    math = PaperMath() if shared_glyphs else FlatMath()
     text = lay_out(paper, math, "print", style)
     cache: Mapping[str, Any] = (
         {key: glyphs.EquationImage(equation) for key, equation in math.images.items()}

@@ -36,7 +36,12 @@ def _pictures(figures: tuple[Figure, ...]) -> dict[str, tuple[Picture, ...]]:
     grouped: dict[str, list[Picture]] = {}
     for figure in figures:
         picture = Picture(
-            f"figure-{figure.name}", figure.svg_print, figure.svg_screen, figure.alternative, (figure.caption,)
+            f"figure-{figure.name}",
+            figure.kind,
+            figure.svg_print,
+            figure.svg_screen,
+            figure.alternative,
+            (figure.caption,),
         )
         grouped.setdefault(figure.operating_point, []).append(picture)
     return {point: tuple(pictures) for point, pictures in grouped.items()}

@@ -24,12 +24,14 @@ class VerdictWord:
 VERDICT_WORDS: Final[Mapping[Verdict, VerdictWord]] = {
     "proved": VerdictWord(
         "●", "proved",
-        "Every premise of a named theorem was established in exact or interval arithmetic, for the stated model, set and parameters.",
+        "Every premise of a named theorem was established in exact or interval arithmetic, for the stated model, set "
+        "and parameters.",
         "“the machine is stable”, “safe”, “guaranteed”; anything outside the stated sets",
     ),
     "supported": VerdictWord(
         "◐", "supported by sampling",
-        "No violation occurred in the stated number of sampled motions. Not a proof: a violation between samples is not excluded.",
+        "No violation occurred in the stated number of sampled motions. Not a proof: a violation between samples is "
+        "not excluded.",
         "“verified”, “shown”, “for all”; a probability about the machine",
     ),
     "not established": VerdictWord(
@@ -200,7 +202,10 @@ SAMPLING_CAUTION: Final = (
     "Sampled results are not proofs. A campaign can only refute; where it finds no violation, one between the samples "
     "is not excluded."
 )
-CERTIFICATE_CAUTION: Final = "Certificates hold for the listed sets and models only. The first digits are printed; the exact numbers are in the files."
+CERTIFICATE_CAUTION: Final = (
+    "Certificates hold for the listed sets and models only. The first digits are printed; the exact numbers are in the "
+    "files."
+)
 LINEAR_CAUTION: Final = "The linear part speaks of motions near the equilibrium only; no amplitude is bounded by it."
 ATTEMPT_CAUTION: Final = (
     "A search that found nothing says nothing about the criterion: it neither supports it nor speaks against it."
@@ -213,7 +218,8 @@ ROLE_STATEMENTS: Final = {
     "prepared": "The project file describes the machine, its control release and its use as I know them.",
     "checked": "I have compared the inputs of sections 2 to 4 with the sources named and found them as stated, except "
     "as noted under conditions.",
-    "independently reviewed": "I am not involved in this design. I re-ran / did not re-run the checks (strike out one).",
+    "independently reviewed": "I am not involved in this design. I re-ran / did not re-run the checks (strike "
+    "out one).",
     "approved": "I accept the open criteria, the limitations and the assumptions listed.",
     "accepted": "I accept the dossier for the machine and the use named.",
 }

@@ -88,7 +88,8 @@ def _extension_schemas() -> str:
         _schema("PDF/UA Universal Accessibility Schema", "http://www.aiim.org/pdfua/ns/id/", "pdfuaid",
                 (("part", "Integer", "internal", "Part of ISO 14289 that is followed"),)),
         _schema("Identification of a stability dossier", DOSSIER_NAMESPACE, "dossier",
-                (("documentNumber", "Text", "external", "document number"), ("revision", "Text", "external", "revision"),
+                (("documentNumber", "Text", "external", "document number"),
+                 ("revision", "Text", "external", "revision"),
                  ("projectSha256", "Text", "external", "SHA-256 of the project text"))),
     )  # fmt: skip
     return (

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
-from dossier.model.claim import CoverClaim, LyapunovClaim, RootsClaim, SturmClaim
+from dossier.model.claim import Claim, CoverClaim, LyapunovClaim, RootsClaim, SturmClaim
 from dossier.model.dossier import PointEvidence
 from dossier.model.finding import Finding
 from dossier.model.theorem import THEOREMS
@@ -112,25 +112,13 @@ def premise_table(context: Context, finding: Finding) -> Table:
 def _other_table(context: Context, point: PointEvidence) -> Table:
     rows = []
     for claim in point.claims:
-        if isinstance(claim, RootsClaim):
-            text = (
-                f"{wording.counted(len(claim.solutions), 'uniqueness box', 'uniqueness boxes')}, {len(claim.undecided)} undecided, "
-                f"{numbers.count(claim.boxes)} boxes looked at"
-            )
-        elif isinstance(claim, SturmClaim):
-            text = (
-                f"loop {claim.loop}: {wording.counted(len(claim.gain_crossings), 'crossing')} of the real axis, "
-                f"{len(claim.phase_crossings)} of the unit circle, {wording.counted(len(claim.peak_candidates), 'candidate')} "
-                "for the peak"
-            )
-        else:
+        text = _content(claim)
+        if not text:
             continue
         finding = next((f for f in point.findings if f.subject == claim.identifier), None)
         result = "–" if finding is None else f"{finding.result}, {wording.STRENGTH_WORDS[finding.strength]}"
-        theorem = THEOREMS[claim.theorem].title if claim.theorem in THEOREMS else claim.theorem
-        rows.append(
-            Row(((Mono(claim.identifier),), (text,), (f"{claim.theorem}, {theorem}",), (result,)), claim.identifier)
-        )
+        theorem = f"{claim.theorem}, {THEOREMS[claim.theorem].title}" if claim.theorem in THEOREMS else claim.theorem
+        rows.append(Row(((Mono(claim.identifier),), (text,), (theorem,), (result,)), claim.identifier))
     columns = (
         Column("Evidence", "id", 20),
         Column("Content", share=38),
@@ -138,3 +126,16 @@ def _other_table(context: Context, point: PointEvidence) -> Table:
         Column("Check", "short", 15),
     )
     return Table("Other evidence of this operating point", columns, tuple(rows))
+
+
+def _content(claim: Claim) -> str:
+    """What a certificate without a function V holds; nothing for the kinds shown elsewhere."""
+    if isinstance(claim, RootsClaim):
+        boxes = wording.counted(len(claim.solutions), "uniqueness box", "uniqueness boxes")
+        return f"{boxes}, {len(claim.undecided)} undecided, {numbers.count(claim.boxes)} boxes looked at"
+    if isinstance(claim, SturmClaim):
+        real = wording.counted(len(claim.gain_crossings), "crossing")
+        peaks = wording.counted(len(claim.peak_candidates), "candidate")
+        circle = len(claim.phase_crossings)
+        return f"loop {claim.loop}: {real} of the real axis, {circle} of the unit circle, {peaks} for the peak"
+    return ""

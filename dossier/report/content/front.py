@@ -25,7 +25,8 @@ def cover_of(evidence: Evidence) -> Cover:
     )
     return Cover(
         document.number, document.revision, document.date, document.title, document.scope, document.organisation,
-        document.machine, conclusion(evidence), weakest(evidence), strips, tuple(_fields(evidence)), wording.COVER_CAUTION,
+        document.machine, conclusion(evidence), weakest(evidence), strips, tuple(_fields(evidence)),
+        wording.COVER_CAUTION,
     )  # fmt: skip
 
 

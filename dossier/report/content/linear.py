@@ -14,6 +14,9 @@ from dossier.report.content.context import Context
 from dossier.report.content.quantities import margin_rows
 from dossier.report.rich import Formula, Mono, Rich, rich
 
+LARGEST_MATRIX = 5
+"""Rows up to which a matrix is printed; the certificate holds every one."""
+
 LARGEST_POLYNOMIAL = 8
 """Degree up to which a characteristic polynomial is printed; the certificate holds every one."""
 
@@ -32,6 +35,8 @@ def linear_blocks(context: Context, point: PointEvidence) -> Iterator[Block]:
     for claim in claims:
         if isinstance(claim, RouthClaim) and 1 < len(claim.polynomial) <= LARGEST_POLYNOMIAL + 1:
             yield Equations((_polynomial(claim),), f"characteristic polynomial, {claim.identifier}")
+        if isinstance(claim, MatrixClaim) and len(claim.cells) == 1 and len(claim.cells[0].matrix) <= LARGEST_MATRIX:
+            yield Equations((_matrix(claim),), f"matrix of the Lyapunov inequality, {claim.identifier}")
 
 
 def _eigenvalue_table(point: PointEvidence, shown: list[Equilibrium]) -> Table:
@@ -45,8 +50,8 @@ def _eigenvalue_table(point: PointEvidence, shown: list[Equilibrium]) -> Table:
         Column("Holds", "number", 14),
     )
     note: Rich = (
-        "Each disc is proved to hold the stated number of eigenvalues of the nominal linear part; its centre is printed "
-        "with its first digits.",
+        "Each disc is proved to hold the stated number of eigenvalues of the nominal linear part; of its centre the "
+        "first digits are printed.",
     )
     return Table("Eigenvalues", columns, tuple(rows), note)
 
@@ -67,36 +72,13 @@ def _centre(value: Fraction) -> str:
 def _claim_table(context: Context, point: PointEvidence) -> Table:
     rows = []
     for claim in point.claims:
+        if not isinstance(claim, MatrixClaim | RouthClaim):
+            continue
         finding = next((f for f in point.findings if f.subject == claim.identifier), None)
         result = "not checked" if finding is None else f"{finding.result}, {finding.strength}"
-        if isinstance(claim, MatrixClaim):
-            method = f"Lyapunov inequality, {wording.counted(len(claim.cells), 'parameter cell')}"
-            rows.append(
-                Row(
-                    (
-                        (Mono(claim.identifier),),
-                        _region(claim),
-                        (method,),
-                        (wording.scope_short(claim.over),),
-                        (result,),
-                    ),
-                    claim.identifier,
-                )
-            )
-        elif isinstance(claim, RouthClaim):
-            counts = f"{claim.inside} eigenvalues inside, {claim.boundary} on, {claim.outside} outside the stability boundary"
-            rows.append(
-                Row(
-                    (
-                        (Mono(claim.identifier),),
-                        (counts,),
-                        ("Routh array of exact integers" if claim.array else "characteristic polynomial",),
-                        (wording.scope_short(claim.over),),
-                        (result,),
-                    ),
-                    claim.identifier,
-                )
-            )
+        statement, method = _matrix_words(claim) if isinstance(claim, MatrixClaim) else _routh_words(claim)
+        cells = ((Mono(claim.identifier),), statement, (method,), (wording.scope_short(claim.over),), (result,))
+        rows.append(Row(cells, claim.identifier))
     columns = (
         Column("Evidence", "id", 18),
         Column("Statement", share=36),
@@ -105,6 +87,16 @@ def _claim_table(context: Context, point: PointEvidence) -> Table:
         Column("Check", "short", 13),
     )
     return Table("What was proved of the linear part", columns, tuple(rows))
+
+
+def _matrix_words(claim: MatrixClaim) -> tuple[Rich, str]:
+    return _region(claim), f"Lyapunov inequality, {wording.counted(len(claim.cells), 'parameter cell')}"
+
+
+def _routh_words(claim: RouthClaim) -> tuple[Rich, str]:
+    inside = wording.counted(claim.inside, "eigenvalue")
+    statement = f"{inside} inside, {claim.boundary} on, {claim.outside} outside the stability boundary"
+    return (statement,), "Routh array of exact integers" if claim.array else "characteristic polynomial"
 
 
 def _region(claim: MatrixClaim) -> Rich:
@@ -120,6 +112,14 @@ def _region(claim: MatrixClaim) -> Rich:
     if claim.region == "disc":
         return rich("every multiplier has ", Formula(rf"\left|\lambda\right| < {level}", f"modulus below {said}"))
     return rich("every mode has a damping ratio above ", Formula(level, said))
+
+
+def _matrix(claim: MatrixClaim) -> Formula:
+    rows = claim.cells[0].matrix
+    body, exact = formulas.rounded_matrix(rows)
+    size = len(rows)
+    words = f"P, a symmetric matrix of {size} rows and columns; its entries are in the certificate"
+    return Formula(rf"P {'=' if exact else chr(92) + 'approx'} {body}", words, display=True)
 
 
 def _polynomial(claim: RouthClaim) -> Formula:

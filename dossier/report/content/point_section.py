@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Iterator, Sequence
 
 from dossier.model.dossier import PointEvidence
 from dossier.report import units, wording
@@ -24,24 +24,25 @@ from dossier.report.content.checks_section import check_blocks
 from dossier.report.content.context import Context
 from dossier.report.content.equilibria import equilibrium_blocks
 from dossier.report.content.linear import linear_blocks, margin_blocks
-from dossier.report.content.model_section import absolute_side, offset_side
+from dossier.report.content.sides import absolute_side, offset_side
 from dossier.report.content.verdicts import criterion_of, issue_sentence
 from dossier.report.notation import spoken
 from dossier.report.rich import Formula, Link, Mono, Rich, Strong, rich
 
-Builder = Callable[[Context, PointEvidence], Sequence[Block]]
-
 
 def point_section(context: Context, point: PointEvidence, number: str, pictures: Sequence[Picture]) -> Section:
     """The section of one operating point; parts without content are left out."""
+
+    def drawn(kind: str) -> tuple[Picture, ...]:
+        return tuple(p for p in pictures if p.kind == kind)
+
     parts: tuple[tuple[str, str, Sequence[Block]], ...] = (
         ("asked", "What is asked", tuple(_asked(context, point))),
-        ("verdicts", "Verdicts", tuple(_cards(context, point))),
+        ("verdicts", "Verdicts", (*drawn("reserves"), *_cards(context, point))),
         ("equilibria", "Equilibria", tuple(equilibrium_blocks(context, point))),
-        ("linear", "Linear part", tuple(linear_blocks(context, point))),
-        ("margins", "Loop margins", tuple(margin_blocks(context, point))),
-        ("certificates", "Certificates", tuple(certificate_blocks(context, point))),
-        ("figures", "Figures", tuple(pictures)),
+        ("linear", "Linear part", (*linear_blocks(context, point), *drawn("eigenvalues"))),
+        ("margins", "Loop margins", (*margin_blocks(context, point), *drawn("loop"))),
+        ("certificates", "Certificates", (*certificate_blocks(context, point), *drawn("plane"))),
         ("checks", "Independent checks and failed attempts", tuple(check_blocks(context, point))),
     )
     blocks: list[Block] = []

@@ -55,8 +55,8 @@ def record_section(context: Context, number: str) -> Section:
         ),
         Paragraph(
             (
-                "A search in floating point only guesses. What counts was established again by the trusted core, in exact "
-                "rational or outward-rounded arithmetic, from the project text and the certificate files alone.",
+                "A search in floating point only guesses. What counts was established again by the trusted core, in "
+                "exact rational or outward-rounded arithmetic, from the project text and the certificates alone.",
             )
         ),
         _components(context.evidence),
@@ -110,8 +110,8 @@ def sign_off_section(context: Context, number: str) -> Section:
         for i, r in enumerate(context.evidence.document.sign_off, start=1)
     )
     text = (
-        "A signature stands for the statement beside it and for nothing else. The program fills in no decision, date or "
-        "signature. Decisions: accepted, accepted with conditions, returned, rejected."
+        "A signature stands for the statement beside it and for nothing else. The program fills in no decision, date "
+        "or signature. Decisions: accepted, accepted with conditions, returned, rejected."
     )
     if not rows:
         return Section("sign-off", number, "Sign-off", (Paragraph(("The project names no role to sign.",)),))

@@ -12,8 +12,8 @@ EXCLUSIONS = (
     "safety of the machine, its guards and its safety functions; random hardware faults; software defects",
     "behaviour outside the listed regions, domains, parameter spreads and operating points",
     "transitions between operating points, start-up, emergency stop and its release",
-    "effects the models leave out: resonances above the modelled band, unmodelled friction, quantisation, estimator and "
-    "measurement noise, sampling and delay where the model has none",
+    "effects the models leave out: resonances above the modelled band, unmodelled friction, quantisation, estimator "
+    "and measurement noise, sampling and delay where the model has none",
 )
 
 
@@ -42,7 +42,7 @@ def scope_section(context: Context, number: str) -> Section:
     )
     blocks.append(Table("Operating points", columns, rows))
     if document.standards:
-        standards = joined([s for s in document.standards])
+        standards = joined(document.standards)
         blocks.append(
             Facts((("Named as applicable", standards), ("Standing", ("named by the project, not assessed here",))))
         )

@@ -86,7 +86,7 @@ def _criteria_table(context: Context) -> Table:
         Column("Reserve", "short", 9),
         Column("Verdict", "short", 16),
         Column("Checked", "short", 6),
-        Column("Page", "short", 3),
+        Column("Where", "short", 3),
     )
     return Table("Criteria and verdicts", columns, tuple(rows), _reserve_note())
 
@@ -140,9 +140,10 @@ def _limitations(context: Context) -> Iterator[Rich]:
     evidence = context.evidence
     unmet = [o for o in all_outcomes(evidence) if o.verdict in NEEDS_ACTION]
     if unmet:
+        worst_first = sorted(unmet, key=lambda o: NEEDS_ACTION.index(o.verdict))
         yield rich(
             f"{len(unmet)} criteria are not proved and need a decision: ",
-            joined([context.link(o.identifier) for o in sorted(unmet, key=lambda o: NEEDS_ACTION.index(o.verdict))]), ".",
+            context.links(o.identifier for o in worst_first), ".",
         )  # fmt: skip
     open_ones = [a for a in evidence.assumptions if a.state not in ("accepted", "confirmed")]
     if open_ones:

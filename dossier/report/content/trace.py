@@ -39,7 +39,7 @@ def trace_section(context: Context, number: str) -> Section:
         Column("Evidence", "id", 15),
         Column("Verdict", "short", 10),
         Column("Checked", "short", 6),
-        Column("Page", "short", 4),
+        Column("Where", "short", 4),
     )
     blocks: list[Block] = [Table("From requirement to evidence", columns, rows)]
     blocks.extend(_orphans(context))

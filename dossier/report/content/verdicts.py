@@ -31,8 +31,8 @@ def issue_sentence(context: Context, point: PointEvidence, outcome: Outcome) -> 
         return _proved(context, point, outcome, criterion, asked)
     if outcome.verdict == "refuted":
         return rich(
-            "For ", _model(point), ", ", wording.scope_words(criterion.over), ", it is ", Strong("false"), f" that {asked}. ",
-            "Established in ", _arithmetic(outcome), _resting(context, outcome), ".",
+            "For ", _model(point), ", ", wording.scope_words(criterion.over), ", it is ", Strong("false"),
+            f" that {asked}. Established in ", _arithmetic(outcome), _resting(context, outcome), ".",
         )  # fmt: skip
     if outcome.verdict == "contradicted":
         return rich(
@@ -86,7 +86,8 @@ def _supported(context: Context, point: PointEvidence, asked: str) -> Rich:
         return (f"No violation was found in the samples drawn. {wording.SAMPLING_CAUTION}",)
     return rich(
         "No violation occurred in ", campaign_words(campaign), f", when it was asked whether {asked}. ",
-        "This is not a proof; a violation between the samples is not excluded (", context.link(campaign.identifier), ").",
+        "This is not a proof; a violation between the samples is not excluded (",
+        context.link(campaign.identifier), ").",
     )  # fmt: skip
 
 
