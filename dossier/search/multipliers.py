@@ -11,7 +11,6 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from fractions import Fraction
 from itertools import combinations_with_replacement
-from math import ceil
 from typing import Final
 
 import cvxpy
@@ -20,7 +19,7 @@ from numpy.typing import NDArray
 
 from dossier.model.claim import DecreaseWitness, Gram
 from dossier.model.decrease import DecreaseForm, bernstein_coefficients
-from dossier.model.polynomial import Exponents, OffsetField, collapse
+from dossier.model.polynomial import Exponents, OffsetField, collapse, terms
 from dossier.model.region import Box
 from dossier.search.conic import solve
 from dossier.search.rounding import power_of_two_near, rescale, to_matrix
@@ -73,7 +72,7 @@ def program(variables: int, degree: int, function: Mapping[Exponents, float], le
 
     None where the basis would be too large.
     """
-    half = ceil(degree / 2)
+    half = (degree + 1) // 2
     basis = monomials(variables, 1, half)
     multiplier_basis = monomials(variables, 1, half - 1)
     if len(basis) > LARGEST_BASIS:
@@ -132,7 +131,7 @@ def seek_witnesses(
     """One witness per Bernstein coefficient of sign * g, in order, or why there is none."""
     size = len(scales)
     numerator = form.numerator * field.ring.constant(Fraction(sign))
-    degree = max((sum(e[:size]) for e in numerator.to_dict()), default=0)
+    degree = max((sum(e[:size]) for e in terms(numerator)), default=0)
     if degree == 0:
         return "the derivative of V vanishes identically"
     scaled = {e: float(c * _scale_of(e, scales)) for e, c in function.items()}
