@@ -31,7 +31,13 @@ POINTS: Final = 240
 GRID: Final = (49, 37)
 """Flow samples across and up: enough to draw smooth streamlines by interpolation."""
 
-AROUND: Final = 1.25
+FARTHEST: Final = 4.0
+"""Motions are followed out to this many times the reach of region and set; farther, they leave the picture."""
+
+NEAR: Final = 1.6
+"""Limits and edges of the domain are shown where they lie within this many times the reach of the motions."""
+
+AROUND: Final = 1.15
 """The plane shown reaches this much further than everything that must be seen in it."""
 
 FREQUENCIES: Final = 400
@@ -57,7 +63,7 @@ def figure_data(
     plane = choose_plane(case, flow, scale)
     offsets, drawn = _starts(case, claims, scale)
     trajectories = _trajectories(case, equilibrium, field, offsets, scale)
-    window = _window(case, plane, drawn, scale)
+    window = _window(case, plane, centre, drawn, _seen(trajectories))
     responses = tuple(_responses(case, equilibrium))
     return FigureData((case.model.state_names[plane[0]], case.model.state_names[plane[1]]), trajectories,
                       _flow(flow, plane, window), responses)  # fmt: skip
@@ -160,17 +166,27 @@ def sample_interval(case: Case) -> float:
     return float(Formulas((case.model.sample_interval,), names)(values)[0, 0])
 
 
-def _window(case: Case, plane: tuple[int, int], drawn: Columns, scale: Columns) -> list[tuple[float, float]]:
-    """Range of offsets to show of each of the two states, limits included where they are not far off."""
+def _seen(trajectories: tuple[Trajectory, ...]) -> Columns:
+    return np.array([offsets for t in trajectories for offsets in t.offsets]).T
+
+
+def _window(
+    case: Case, plane: tuple[int, int], centre: Columns, drawn: Columns, moved: Columns
+) -> list[tuple[float, float]]:
+    """Range of offsets to show of each of the two states.
+
+    Everything in `drawn`, the motions unless they go far away, and limits and domain where they are near.
+    """
     sides = []
     for i in plane:
-        limits = case.limits[case.model.state_names[i]]
-        reach = [
-            float(np.max(np.abs(drawn[i]))),
-            *(abs(float(e)) for e in (limits.lower, limits.upper) if e is not None),
-        ]
-        near = max(e for e in reach if e <= 3 * max(reach[0], float(scale[i])))
-        sides.append((-AROUND * near, AROUND * near))
+        name = case.model.state_names[i]
+        least, sizes = float(np.max(np.abs(drawn[i]))), np.abs(moved[i])
+        reach = float(np.max(sizes[sizes <= FARTHEST * least], initial=least))
+        edges = [(e, 0.0) for e in (case.limits[name].lower, case.limits[name].upper)]
+        edges += [(e, float(centre[i])) for e in (case.model.domain[name].lower, case.model.domain[name].upper)]
+        near = [abs(float(e) - shift) for e, shift in edges if e is not None]
+        reach = max([reach, *(d for d in near if d <= NEAR * reach)])
+        sides.append((-AROUND * reach, AROUND * reach))
     return sides
 
 

@@ -171,9 +171,11 @@ def _mark(inner: Canvas, axes: Axes, omega: float, ends: tuple[float, float], te
 
 
 def _least(enclosure: Enclosure, unit: PrintedUnit) -> str:
-    """A proved margin, rounded to the less favourable side."""
-    low, _ = units.convert(enclosure, unit)
-    return "" if low is None else units.with_unit(numbers.below(low, 3), unit.name)
+    """A proved margin, rounded to the less favourable side (towards zero)."""
+    low, high = units.convert(enclosure, unit)
+    if low is None or high is None:
+        return ""
+    return units.with_unit(numbers.below(low, 3) if low >= 0 else numbers.above(high, 3), unit.name)
 
 
 def _draw_phase(canvas: Canvas, loop: Loop, decades: tuple[float, float]) -> None:

@@ -23,7 +23,7 @@ from dossier.report.formulas import offset
 from dossier.report.notation import Notation, notation, spoken
 from dossier.report.plots.axes import KEY_LINE, Axes, Key, Shown, shown_unit
 from dossier.report.plots.streamlines import directions, draw_streamlines
-from dossier.report.svg import Canvas, Point, Stroke
+from dossier.report.svg import Canvas, Point, Stroke, decimals
 from dossier.report.units import difference_unit
 
 HEIGHT: Final = 330.0
@@ -44,6 +44,8 @@ PROJECTIONS = (Stroke("accent", 1.4, "6 3.4"), Stroke("no-operating-point", 1.4,
 LIMIT = Stroke("refuted", 1.3, "9 3 1.5 3")
 DOMAIN = Stroke("mid", 1.6)
 MOTION = Stroke("ink", 1.0)
+DOT: Final = 2.6
+"""Diameter in pixels of the dots that stand for samples."""
 
 SetClaim = LyapunovClaim | CoverClaim
 
@@ -280,20 +282,44 @@ def _ellipse(claim: SetClaim, places: tuple[int, int], size: int, *, project: bo
 
 
 def _draw_motions(inner: Canvas, plane: Plane, key: Key) -> None:
+    sampled = plane.point.case.model.time == "sampled"
     for motion in plane.data.trajectories:
         points = plane.axes.place(plane.to_axes(o) for o in motion.offsets)
-        if plane.point.case.model.time == "sampled":
-            for x, y in points:
-                inner.circle(x, y, 1.3, "ink")
+        if sampled:
+            _dots(inner, _apart([p for p in points if _within(plane.axes, p)]))
         else:
             inner.line(points, MOTION)
         inner.circle(*points[0], 2.7, "ink")
     if plane.data.trajectories:
-        key.entry("simulated motion", "dot: start; not evidence", partial(_motion_sample, key.canvas))
+        remark = "large dot: start" if sampled else "dot: start; not evidence"
+        key.entry("simulated motion", remark, partial(_motion_sample, key.canvas, sampled))
 
 
-def _motion_sample(canvas: Canvas, x: float, y: float) -> None:
-    canvas.line(((x + 3, y), (x + KEY_LINE, y)), MOTION)
+def _within(axes: Axes, place: Point) -> bool:
+    x, y = place
+    return axes.left <= x <= axes.left + axes.width and axes.top <= y <= axes.top + axes.height
+
+
+def _apart(points: Sequence[Point]) -> list[Point]:
+    """`points` without those that would be drawn on top of the one before."""
+    kept: list[Point] = []
+    for point in points:
+        if not kept or math.dist(kept[-1], point) > DOT:
+            kept.append(point)
+    return kept
+
+
+def _dots(canvas: Canvas, points: Sequence[Point]) -> None:
+    """Small dots, as the round ends of lines too short to be seen: one element for all of them."""
+    if points:
+        canvas.path("".join(f"M{decimals(x)} {decimals(y)}h.01" for x, y in points), Stroke("ink", DOT))
+
+
+def _motion_sample(canvas: Canvas, sampled: bool, x: float, y: float) -> None:
+    if sampled:
+        _dots(canvas, [(x + 3 + 5 * i, y) for i in range(1, 5)])
+    else:
+        canvas.line(((x + 3, y), (x + KEY_LINE, y)), MOTION)
     canvas.circle(x + 3, y, 2.7, "ink")
 
 

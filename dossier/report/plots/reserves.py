@@ -117,10 +117,7 @@ def _draw_row(canvas: Canvas, point: PointEvidence, row: Reserve, y: float) -> N
         _fitted(canvas, OBTAINED_X, base, _obtained(point, row), SCALE[0])
     token = colour_of(outcome.verdict)
     if row.share is None:
-        words = "met; no number to compare" if outcome.verdict == "proved" else VERDICT_WORDS[outcome.verdict].word
-        canvas.text(
-            SCALE[0] + 7, base, words, TICK_SIZE, fill=token if outcome.verdict != "proved" else "mid", halo=True
-        )
+        canvas.text(SCALE[0] + 7, base, VERDICT_WORDS[outcome.verdict].word, TICK_SIZE, fill=token, halo=True)
         return
     share = float(row.share)
     x = _place(min(max(share, 0.0), FULL))

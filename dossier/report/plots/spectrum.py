@@ -238,7 +238,7 @@ def describe_spectrum(point: PointEvidence, chosen: Equilibrium) -> tuple[str, s
     """Title, alternative text and caption of the figure."""
     case, demands = point.case, demands_of(point.case)
     sampled = demands.interval is not None
-    title = f"Eigenvalues of {case.name}"
+    title = f"{'Multipliers' if sampled else 'Eigenvalues'} of {case.name}"
     count = sum(e.multiplicity for e in chosen.eigenvalues)
     if sampled:
         modulus = max(
@@ -249,8 +249,10 @@ def describe_spectrum(point: PointEvidence, chosen: Equilibrium) -> tuple[str, s
     else:
         rightmost = max(e.real + e.radius for e in chosen.eigenvalues)
         slow = f"the rightmost real part is at most {numbers.above(rightmost, 4)} per second"
-    where = "multipliers in the unit disc picture" if sampled else "eigenvalues in the complex plane"
-    words = [f"{count} {where} of {spoken(case.name)}; {slow}, and the equilibrium is {chosen.stability}."]
+    what = "multipliers" if sampled else "eigenvalues"
+    words = [
+        f"{count} {what} in the complex plane of {spoken(case.name)}; {slow}; the equilibrium is {chosen.stability}."
+    ]
     for demand, name in (
         (demands.rate, "decay rate"),
         (demands.damping, "damping ratio"),
