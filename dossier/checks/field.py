@@ -82,16 +82,19 @@ class Formulas:
             row = self._rows[str(node.value)]
             return lambda registers, values: values[row]
         if node.op == "add":
-            return lambda registers, values: reduce(np.add, [registers[s] for s in slots])
+            return _chain(np.add, slots)
         if node.op == "mul":
-            return lambda registers, values: reduce(np.multiply, [registers[s] for s in slots])
+            return _chain(np.multiply, slots)
         if node.op == "sat":
             x, low, high = slots
             return lambda registers, values: np.minimum(np.maximum(registers[x], registers[low]), registers[high])
         if node.op == "pow":
             return _power(slots[0], _as_float(node))
         function = _FUNCTIONS[node.op]
-        return lambda registers, values: function(*(registers[s] for s in slots))
+        if len(slots) == 1:
+            (argument,) = slots
+            return lambda registers, values: function(registers[argument])
+        return _chain(function, slots)
 
 
 def _as_float(node: Expression) -> float:
@@ -103,6 +106,14 @@ def _as_float(node: Expression) -> float:
 def _constant(value: float) -> Callable[[list[Any], Columns], Any]:
     scalar = np.float64(value)
     return lambda registers, values: scalar
+
+
+def _chain(function: Callable[..., Any], slots: list[int]) -> Callable[[list[Any], Columns], Any]:
+    """`function` of two arguments applied from the left along all `slots`."""
+    first, second, *rest = slots
+    if not rest:
+        return lambda registers, values: function(registers[first], registers[second])
+    return lambda registers, values: reduce(function, [registers[s] for s in slots])
 
 
 def _power(slot: int, exponent: float) -> Callable[[list[Any], Columns], Any]:

@@ -21,10 +21,10 @@ from dossier.checks.suspicion import (
     DIGITS,
     TRIED,
     confirm_rise,
+    duration_text,
     largest_excess,
     not_attracted,
     rows_of,
-    time_text,
     worst_confirmed,
 )
 from dossier.checks.trial import ABSOLUTE, RELATIVE, Pace, Trial, run_trial
@@ -272,10 +272,10 @@ def _plan(groups: list[_Group], falls: list[Trial]) -> str:
 
 def _horizon(case: Case, trials: list[Trial]) -> str:
     longest = max(trials, key=lambda t: t.pace.horizon).pace
-    horizon = time_text(case, longest.horizon)
+    horizon = duration_text(case, longest.horizon)
     if not longest.stable:
         return horizon
-    dwell = time_text(case, longest.dwell)
+    dwell = duration_text(case, longest.dwell)
     return f"{horizon}, or until within {NEIGHBOURHOOD * 100:g} % of the region for {dwell}"
 
 

@@ -149,6 +149,11 @@ def time_text(case: Case, time: float) -> str:
     return f"{time:.4g} s"
 
 
+def duration_text(case: Case, time: float) -> str:
+    """A length of simulated time in words."""
+    return f"{time:.0f} samples" if case.model.time == "sampled" else time_text(case, time)
+
+
 def _state_text(case: Case, offsets: Columns) -> str:
     parts = []
     for state, offset in zip(case.model.states, offsets, strict=True):
