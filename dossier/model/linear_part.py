@@ -30,7 +30,7 @@ from dossier.model.expression import (
     substitute,
     to_text,
 )
-from dossier.model.loop import LOOP_INPUT, jacobian, open_loop
+from dossier.model.loop import LOOP_INPUT, jacobian, open_loop, vector_field
 
 Number = fmpq | arb
 """An exact rational, or a ball that contains the true number."""
@@ -119,6 +119,18 @@ def linear_loop(case: Case, equilibrium: Equilibrium, loop: str) -> LinearLoop |
     with precision(WORKING_BITS):
         try:
             return _linear_loop(case, equilibrium, loop)
+        except _RefusalError as refusal:
+            return NoLinearPart(str(refusal))
+
+
+def closed_matrix(case: Case, equilibrium: Equilibrium) -> tuple[tuple[Number, ...], ...] | NoLinearPart:
+    """Linear part A (n x n, SI) of the closed loop at `equilibrium` and the nominal parameters, proved as above."""
+    with precision(WORKING_BITS):
+        try:
+            point = _Point(case, equilibrium)
+            field = vector_field(case)
+            equations = tuple(_smooth(e, point, {}) for e in field.equations)
+            return tuple(tuple(point.value(e) for e in row) for row in jacobian(equations, field.states))
         except _RefusalError as refusal:
             return NoLinearPart(str(refusal))
 
