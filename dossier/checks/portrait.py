@@ -25,8 +25,11 @@ from dossier.model.linear_part import LinearLoop, linear_loop
 
 CORNER_MOTIONS: Final = 4
 BOUNDARY_MOTIONS: Final = 8
-POINTS: Final = 240
-"""Motions drawn, from corners of the region and from the boundary of a proved set, and points kept of each."""
+POINTS: Final = 480
+"""Motions drawn, from corners of the region and from the boundary of a proved set, and points kept of each.
+
+Long motions are cut short, not thinned: a spiral of many turns would become a polygon.
+"""
 
 GRID: Final = (49, 37)
 """Flow samples across and up: enough to draw smooth streamlines by interpolation."""
@@ -137,7 +140,7 @@ def _trajectories(
     found = []
     for motion in range(count):
         times, points = _path(trial.recorder.sights, motion)
-        keep = np.unique(np.linspace(0, len(times) - 1, min(POINTS, len(times))).round().astype(int))
+        keep = range(min(POINTS, len(times)))
         found.append(
             Trajectory(
                 tuple(float(times[i]) * interval for i in keep),

@@ -126,7 +126,7 @@ class Axes:
         up: Sequence[float],
         across_label: Label,
         up_label: Label,
-        text: Callable[[float], str] = tick_text,
+        text: Callable[[float], str | Label] = tick_text,
     ) -> None:
         """Axis lines, ticks with numbers, and the labels: below on the right, above on the left."""
         c, bottom, edge = self.canvas, self.top + self.height, Stroke("mid", 0.8)

@@ -15,7 +15,7 @@ from dossier.report import numbers, units
 from dossier.report.content.quantities import printed, required
 from dossier.report.notation import spoken
 from dossier.report.plots.axes import Axes, tick_text, ticks
-from dossier.report.svg import Canvas, Point, Sign, Stroke, label_width
+from dossier.report.svg import Canvas, Label, Point, Raised, Sign, Stroke, label_width
 from dossier.report.units import PrintedUnit
 
 Sample = tuple[float, float, float]
@@ -33,6 +33,9 @@ NYQUIST_ACROSS: Final = (-2.6, 1.1)
 
 DECIBELS: Final = (-60.0, 60.0)
 """Magnitudes shown at most."""
+
+PLAIN_DECADES: Final = (-2, 4)
+"""Frequencies from 0.01 Hz to 10 000 Hz are written out, others as powers of ten."""
 
 HALF_TURN: Final = 180.0
 FULL_TURN: Final = 360.0
@@ -115,9 +118,10 @@ def _decade_ticks(decades: tuple[float, float]) -> list[float]:
     return [float(d) for d in whole if d % step == 0]
 
 
-def _frequency_text(decade: float) -> str:
-    value = 10**decade
-    return tick_text(value) if 1e-3 <= value <= 1e5 else f"1e{decade:.0f}".replace("-", "−")  # noqa: PLR2004
+def _frequency_text(decade: float) -> str | Label:
+    if PLAIN_DECADES[0] <= decade <= PLAIN_DECADES[1]:
+        return tick_text(10**decade)
+    return ("10", Raised(tick_text(decade)))
 
 
 def _bode_panel(
