@@ -38,6 +38,8 @@ def finish(raw: bytes, paper: Paper, media_types: Mapping[str, str]) -> bytes:
         _list_attachments_once(pdf, media_types)
         _prepare_fields(pdf)
         _identify(pdf, paper)
+        if Name.ID in pdf.trailer:
+            del pdf.trailer.ID  # the writer's own hangs on the time of the run; saving makes one from the content
         out = BytesIO()
         pdf.save(out, deterministic_id=True, object_stream_mode=pikepdf.ObjectStreamMode.generate)
         return out.getvalue()

@@ -46,7 +46,7 @@ def _piece(node: Expression, parts: tuple[Piece, ...], notation: Notation) -> Pi
     if op == "neg":
         return f"-{_wrapped(parts[0], PRODUCT)}", SIGNED
     if op == "mul":
-        return _product(parts), PRODUCT
+        return _product(node, parts)
     if op == "div":
         return rf"\frac{{{parts[0][0]}}}{{{parts[1][0]}}}", PRODUCT
     if op == "pow":
@@ -64,12 +64,14 @@ def _sum(node: Expression, parts: tuple[Piece, ...]) -> str:
     return text
 
 
-def _product(parts: tuple[Piece, ...]) -> str:
-    text = _wrapped(parts[0], PRODUCT)
+def _product(node: Expression, parts: tuple[Piece, ...]) -> Piece:
+    """Factors side by side; a negative number in front stands without brackets."""
+    leads = node.args[0].op == "number" and parts[0][1] == SIGNED
+    text = parts[0][0] if leads else _wrapped(parts[0], PRODUCT)
     for before, part in pairwise(parts):
         both_numbers = before[0][-1:].isdigit() and part[0][:1].isdigit()
         text += (r" \cdot " if both_numbers else r"\,") + _wrapped(part, PRODUCT)
-    return text
+    return text, SIGNED if leads else PRODUCT
 
 
 def _power(node: Expression, base: Piece) -> Piece:
@@ -132,8 +134,8 @@ def function_of_offsets(
     exact = all(numbers.exactly(c) is not None for _, c in shown)
     body = ""
     for exponents, coefficient in shown:
-        sign = "-" if coefficient < 0 else "+" if body else ""
-        body += f" {sign} {_term(abs(coefficient), exponents, states, notation)}"
+        sign = " -" if coefficient < 0 else " +" if body else ""
+        body += f"{sign} {_term(abs(coefficient), exponents, states, notation)}"
     if len(ordered) > LONG_SUM:
         body += r" + \cdots"
     name = "V" if not index else f"V_{{{index}}}"

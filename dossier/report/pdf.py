@@ -42,6 +42,19 @@ def pdf_of(paper: Paper, attachments: tuple[Attachment, ...] = ()) -> bytes | Pd
     return finish(raw, paper, {name: kind for name, _, kind in attachments})
 
 
+@dataclass(frozen=True, slots=True)
+class ShippedFonts:
+    """The only source the PDF writer may ask: the shipped fonts.  Anything else stops the writing."""
+
+    response: Any
+    _fail_on_errors: bool = True
+    """Read by the PDF writer: an address that is refused is an error, not a warning."""
+
+    def __call__(self, url: str, headers: Any = None) -> Any:
+        """The font at `url`.  Raises ValueError for any other address."""
+        return self.response(url, body=fonts.opened(url))
+
+
 def _written(weasyprint: Any, paper: Paper, attachments: tuple[Attachment, ...], *, shared_glyphs: bool) -> bytes:
     folder = locate.templates()
     style = fonts.face_rules(embed=False) + "".join(
@@ -62,7 +75,7 @@ def _written(weasyprint: Any, paper: Paper, attachments: tuple[Attachment, ...],
         )
         for name, content, _ in attachments
     ]  # fmt: skip
-    document = weasyprint.HTML(string=text, base_url=str(folder))
+    document = weasyprint.HTML(string=text, url_fetcher=ShippedFonts(weasyprint.urls.URLFetcherResponse))
     return document.write_pdf(
         pdf_variant=VARIANT, pdf_forms=True, pdf_tags=True, cache=dict(cache), attachments=files, custom_metadata=False
     )
