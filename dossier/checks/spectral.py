@@ -40,7 +40,9 @@ def check_matrix(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Fi
     )  # fmt: skip
 
 
-def _shown(label: str, statement: str, shown: bool, claim: MatrixClaim, strength: Strength, detail: str = "") -> Premise:
+def _shown(
+    label: str, statement: str, shown: bool, claim: MatrixClaim, strength: Strength, detail: str = ""
+) -> Premise:
     return Premise(label, statement, "proved" if shown else "undecided", strength, detail, claim.identifier)
 
 
@@ -48,10 +50,18 @@ def _premises(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Itera
     meant = claim.model_hash == model_hash(case) and claim.equilibrium == equilibrium.identifier
     sampled = case.model.time == "sampled"
     fits = claim.region == "disc" if sampled else claim.region in ("half-plane", "sector")
-    allowed = claim.level > 0 if claim.region == "disc" else 0 <= claim.level and (
-        claim.region == "half-plane" or claim.level < 1
+    allowed = (
+        claim.level > 0
+        if claim.region == "disc"
+        else claim.level >= 0 and (claim.region == "half-plane" or claim.level < 1)
     )
-    yield _shown("model", "the certificate is about this loop and a region that fits it", meant and fits and allowed, claim, "exact")
+    yield _shown(
+        "model",
+        "the certificate is about this loop and a region that fits it",
+        meant and fits and allowed,
+        claim,
+        "exact",
+    )
     if not (meant and fits and allowed):
         return
     whole = Box((), ()) if claim.over == NOMINAL else spread_box(case)

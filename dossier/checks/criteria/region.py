@@ -8,6 +8,7 @@ from fractions import Fraction
 from dossier.checks.boxes import range_over
 from dossier.checks.criteria.common import conclude, open_question, refute, stated_bounds, tightest_bounds
 from dossier.checks.knowledge import Knowledge
+from dossier.checks.linear import routh_claim_id
 from dossier.checks.lyapunov import Ellipsoid, ellipsoid, parameter_box
 from dossier.checks.sets import bound_over_set, covered_scale, covers
 from dossier.model.case import NOMINAL, Criterion
@@ -153,7 +154,7 @@ def _not_attractive(
     if knowledge.place.result != "proved":
         return
     if equilibrium.stability == "unstable":
-        unstable = f"{knowledge.case.name}.L1"
+        unstable = routh_claim_id(equilibrium)
         yield refute(
             knowledge, criterion, "T8", "the point is unstable: an eigenvalue lies outside the stability region",
             _strength(equilibrium), (unstable,), {"combination": "nominal", "equilibrium": equilibrium.identifier},
