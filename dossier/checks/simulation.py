@@ -7,28 +7,26 @@ accurate motion shows it too, by a thousand times the estimated error; it is the
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
 from fractions import Fraction
 from typing import Final
 
 import numpy as np
 from numpy.typing import NDArray
 
+from dossier.checks.campaign import Group, confidence_of, rounded, summary_of
 from dossier.checks.field import Columns, Flow, Formulas, compile_field
 from dossier.checks.portrait import figure_data
 from dossier.checks.starts import boundary_points, polynomial_values, region_starts, scale_of, set_starts
 from dossier.checks.suspicion import (
-    DIGITS,
     TRIED,
     confirm_rise,
-    duration_text,
     largest_excess,
     not_attracted,
     rows_of,
     worst_confirmed,
 )
-from dossier.checks.trial import ABSOLUTE, RELATIVE, Pace, Trial, run_trial
-from dossier.checks.watch import NEIGHBOURHOOD, ROUNDING, FallRecorder, Recorder, watch
+from dossier.checks.trial import Pace, Trial, run_trial
+from dossier.checks.watch import ROUNDING, FallRecorder, Recorder, watch
 from dossier.model.case import NOMINAL, Case, Criterion, Scope
 from dossier.model.claim import CoverClaim, LyapunovClaim
 from dossier.model.dossier import Campaign
@@ -41,7 +39,6 @@ __all__ = ["figure_data", "run_campaign"]
 SIMULATED: Final = ("attraction", "limits_kept", "excursion")
 """Claims about motions that a campaign tries to refute."""
 
-CONFIDENCE: Final = 0.95
 BOUNDARY_MOTIONS: Final = 200
 """Motions from the boundary of one proved set; V is watched along all of them."""
 
@@ -49,16 +46,6 @@ RISE: Final = 1e-6
 """Rise of V from sight to sight, as a share of the level, that is looked into; above the error per step."""
 
 SetClaim = LyapunovClaim | CoverClaim
-
-
-@dataclass(frozen=True)
-class _Group:
-    """Criteria that share their region and scope, and the motions that serve them."""
-
-    criteria: tuple[Criterion, ...]
-    region: Box
-    over: Scope
-    trial: Trial
 
 
 def run_campaign(
@@ -70,7 +57,7 @@ def run_campaign(
     speaks of motions, and per proved set.  No campaign where there is nothing to simulate.
     """
     field = compile_field(case)
-    identifier = f"{case.name}.S1"
+    identifier = f"{case.name}.M1"
     groups = [_run_group(case, equilibrium, field, *key, motions, seed + i) for i, key in enumerate(_keys(case))]
     findings, broken = [], []
     for group in groups:
@@ -86,7 +73,7 @@ def run_campaign(
     trials = [g.trial for g in groups] + falls
     if not trials:
         return None, ()
-    return _campaign(case, identifier, groups, falls, tuple(findings), broken, seed), tuple(findings)
+    return summary_of(case, identifier, groups, falls, tuple(findings), broken, seed), tuple(findings)
 
 
 def _keys(case: Case) -> list[tuple[tuple[Criterion, ...], Box, Scope]]:
@@ -102,11 +89,11 @@ def _keys(case: Case) -> list[tuple[tuple[Criterion, ...], Box, Scope]]:
 def _run_group(
     case: Case, equilibrium: Equilibrium, field: Formulas, criteria: tuple[Criterion, ...], region: Box, over: Scope,
     motions: int, seed: int,
-) -> _Group:  # fmt: skip
+) -> Group:  # fmt: skip
     random = np.random.default_rng(seed)
     starts = region_starts(case, equilibrium, field, region, over, motions, random)
     trial = run_trial(case, field, starts, watch(case, criteria), scale_of(case, region))
-    return _Group(criteria, region, over, trial)
+    return Group(criteria, region, over, trial)
 
 
 def _run_set(case: Case, equilibrium: Equilibrium, field: Formulas, claim: SetClaim, count: int, seed: int) -> Trial:
@@ -127,7 +114,7 @@ def _run_set(case: Case, equilibrium: Equilibrium, field: Formulas, claim: SetCl
 
 
 def _judge(
-    case: Case, group: _Group, criterion: Criterion, identifier: str, seed: int
+    case: Case, group: Group, criterion: Criterion, identifier: str, seed: int
 ) -> tuple[Finding, NDArray[np.bool_]]:
     """The finding about one criterion and the motions that seem to violate it."""
     trial = group.trial
@@ -143,7 +130,7 @@ def _judge(
             (identifier,), violation.counter_example,
         ), violating  # fmt: skip
     open_motions = ~violating & ~trial.converged
-    if violating.any() or open_motions.any():
+    if violating.any() or open_motions.any() or trial.starts.lost:
         statement = _open_statement(trial, violating, open_motions)
     else:
         facts["motions without violation"] = _count(violating.size)
@@ -151,10 +138,6 @@ def _judge(
     return Finding(
         subject, "simulation", "undecided", "sampled", criterion.over, "", statement, (), facts, (identifier,)
     ), violating  # fmt: skip
-
-
-def _fraction(value: float) -> Fraction:
-    return Fraction(f"{value:.{DIGITS}g}")
 
 
 def _count(number: int) -> Enclosure:
@@ -167,7 +150,7 @@ def _facts(trial: Trial, criterion: Criterion) -> dict[str, Enclosure]:
         row = trial.watched.place(criterion.name, "quantity")
         least, greatest = float(trial.recorder.least[row].min()), float(trial.recorder.greatest[row].max())
         if np.isfinite(least) and np.isfinite(greatest):
-            facts["range seen"] = Enclosure(_fraction(least), _fraction(greatest), "SI")
+            facts["range seen"] = Enclosure(rounded(least), rounded(greatest), "SI")
     return facts
 
 
@@ -177,6 +160,8 @@ def _open_statement(trial: Trial, violating: NDArray[np.bool_], undecided: NDArr
         parts.append(f"{np.count_nonzero(violating)} seemed to violate it, not by enough to count")
     if undecided.any():
         parts.append(f"{np.count_nonzero(undecided)} neither violated it nor converged within the horizon")
+    if trial.starts.lost:
+        parts.append(f"{trial.starts.lost} more were left out, for no equilibrium was found at their parameters")
     return f"of {violating.size} simulated motions " + " and ".join(parts)
 
 
@@ -187,17 +172,8 @@ def _survived_statement(trial: Trial, over: Scope, seed: int) -> str:
         f"no violation occurred in {trial.starts.drawn.size} motions ({drawn} drawn uniformly from {where}, the others "
         f"from corners; seed {seed}), each followed until it had converged"
     )
-    confidence = _confidence(drawn)
+    confidence = confidence_of(drawn)
     return f"{statement}; {confidence}" if confidence else statement
-
-
-def _confidence(draws: int) -> str:
-    """No violation in N independent draws bounds the violating share by 1 - (1 - confidence)^(1/N), rounded up."""
-    if not draws:
-        return ""
-    share = 1 - (1 - CONFIDENCE) ** (1 / draws)
-    percent = np.ceil(share * 1e4) / 100
-    return f"with confidence {CONFIDENCE * 100:.0f} % fewer than {percent:g} % of motions so drawn violate it"
 
 
 def _judge_set(case: Case, claim: SetClaim, trial: Trial, identifier: str) -> Finding:
@@ -221,71 +197,3 @@ def _judge_set(case: Case, claim: SetClaim, trial: Trial, identifier: str) -> Fi
     return Finding(
         claim.identifier, "simulation", "undecided", "sampled", scope, "", statement, (), facts, (identifier,)
     )
-
-
-def _campaign(
-    case: Case, identifier: str, groups: list[_Group], falls: list[Trial], findings: tuple[Finding, ...],
-    broken: list[tuple[_Group, NDArray[np.bool_]]], seed: int,
-) -> Campaign:  # fmt: skip
-    trials = [g.trial for g in groups] + falls
-    violations, open_count = 0, 0
-    for trial in trials:
-        seen = np.zeros(trial.motions.endings.size, bool)
-        for group, violating in broken:
-            if group.trial is trial:
-                seen |= violating
-        violations += int(np.count_nonzero(seen))
-        open_count += int(np.count_nonzero(~seen & ~trial.converged))
-    refuted = next((f for f in findings if f.result == "refuted"), None)
-    draws = [int(np.count_nonzero(g.trial.starts.drawn)) for g in groups]
-    clean = violations == 0 and open_count == 0 and draws
-    return Campaign(
-        identifier, _method(case), _plan(groups, falls), seed, sum(t.motions.endings.size for t in trials), violations,
-        open_count, _horizon(case, trials), _confidence(min(draws)) if clean else "", _extremes(case, groups, falls),
-        "" if refuted is None else f"{refuted.subject}: {refuted.statement}",
-    )  # fmt: skip
-
-
-def _method(case: Case) -> str:
-    if case.model.time == "sampled":
-        return "iteration of the sampled model in double precision"
-    return (
-        f"Runge-Kutta pair of orders 5 and 4 (Dormand and Prince 1980) in double precision, step and error per motion, "
-        f"relative error {RELATIVE:.0e} and {ABSOLUTE:.0e} of the region per step"
-    )
-
-
-def _plan(groups: list[_Group], falls: list[Trial]) -> str:
-    parts = []
-    for group in groups:
-        drawn = int(np.count_nonzero(group.trial.starts.drawn))
-        corners = group.trial.starts.drawn.size - drawn
-        over = "at the nominal parameters" if group.over == NOMINAL else "over tolerances"
-        names = ", ".join(c.name for c in group.criteria)
-        part = f"{names} {over}: {corners} corners, {drawn} uniform independent draws"
-        if group.trial.starts.lost:
-            part += f" ({group.trial.starts.lost} combinations left out: no equilibrium was found by continuation)"
-        parts.append(part)
-    parts += [f"{t.motions.endings.size} motions from the boundary of a proved set" for t in falls]
-    return "; ".join(parts) + "; parameters constant and disturbances zero along each motion"
-
-
-def _horizon(case: Case, trials: list[Trial]) -> str:
-    longest = max(trials, key=lambda t: t.pace.horizon).pace
-    horizon = duration_text(case, longest.horizon)
-    if not longest.stable:
-        return horizon
-    dwell = duration_text(case, longest.dwell)
-    return f"{horizon}, or until within {NEIGHBOURHOOD * 100:g} % of the region for {dwell}"
-
-
-def _extremes(case: Case, groups: list[_Group], falls: list[Trial]) -> dict[str, tuple[float, float]]:
-    """Least and greatest offset of each state (SI), from the regions if any were simulated."""
-    trials = [g.trial for g in groups] or falls
-    found = {}
-    for i, name in enumerate(case.model.state_names):
-        least = min(float(t.recorder.least[i].min()) for t in trials)
-        greatest = max(float(t.recorder.greatest[i].max()) for t in trials)
-        if np.isfinite(least) and np.isfinite(greatest):
-            found[name] = (float(_fraction(least)), float(_fraction(greatest)))
-    return found

@@ -11,9 +11,10 @@ import pytest
 from loop_cases import equilibrium_at, formula, loop_case, transfer_loop
 
 from dossier.checks.branch import moved_equilibria, newton
+from dossier.checks.campaign import confidence_of
 from dossier.checks.field import compile_field
 from dossier.checks.portrait import figure_data
-from dossier.checks.simulation import _confidence, run_campaign
+from dossier.checks.simulation import run_campaign
 from dossier.checks.starts import boundary_points, polynomial_values
 from dossier.checks.trial import STEPS
 from dossier.model.case import Criterion, Quantity
@@ -162,6 +163,15 @@ def test_regions_follow_the_equilibrium_of_each_combination():
     assert finding.counter_example["combination"] == "p = 2"
 
 
+def test_combinations_without_an_equilibrium_are_left_out_and_forbid_any_support():
+    fold = loop_case({"x": "p - x^2"}, {}, {"p": "1"})
+    case = stated(fold, {"x": 0.1}, spreads={"p": ("-1", 1)}, criteria=[replace(ATTRACTION, over="tolerances")])
+    campaign, finding = only_finding(case, equilibrium_at(1), motions=100)
+    assert "no equilibrium was found" in finding.statement
+    assert "motions without violation" not in finding.facts
+    assert (campaign.violations, campaign.confidence) == (0, "")
+
+
 def test_a_nominal_criterion_never_sees_other_parameters():
     growing = loop_case({"x": "(p - 2)*x"}, {}, {"p": "1"})
     case = stated(growing, {"x": 1}, domain={"x": 4}, spreads={"p": (1, 3)}, criteria=[ATTRACTION])
@@ -239,7 +249,7 @@ def test_criteria_under_disturbances_and_unbounded_regions_are_not_simulated():
 @pytest.mark.parametrize(("draws", "percent"), [(100, "2.96"), (480, "0.63"), (1000, "0.3"), (10_000, "0.03")])
 def test_confidence_follows_the_binomial_bound_rounded_up(draws, percent):
     # 1 - 0.05^(1/N): 2.951 %, 0.6222 %, 0.2991 %, 0.02995 % (closed form), rounded up to two decimals
-    assert f"fewer than {percent} %" in _confidence(draws)
+    assert f"fewer than {percent} %" in confidence_of(draws)
 
 
 def test_newton_follows_an_equilibrium_around_its_branch():

@@ -33,8 +33,9 @@ from dossier.model.region import UNBOUNDED, Box, Interval
 from dossier.report.figures import draw_figures
 from dossier.report.plots.axes import Axes, shown_unit, ticks
 from dossier.report.plots.loops import Loop, decibels, phases
-from dossier.report.plots.plane import ProvedSet, _ellipse, _section, draw_plane, plane_of, proved_sets
+from dossier.report.plots.plane import draw_plane, plane_of
 from dossier.report.plots.reserves import reserves_of
+from dossier.report.plots.sets import ProvedSet, ellipse, proved_sets, section
 from dossier.report.plots.spectrum import demands_of
 from dossier.report.plots.streamlines import directions
 from dossier.report.svg import COLOURS, Canvas, Sign, Stroke, label_width, text_width, thin
@@ -201,7 +202,7 @@ def test_section_and_projection_of_an_ellipsoid_have_the_extents_of_the_closed_f
     claim = point().claims[0]
     matrix = np.array([[2, 0.5, 0], [0.5, 3, 0.25], [0, 0.25, 1]])
     for project in (False, True):
-        outline = np.array(_ellipse(claim, (0, 1), 3, project=project))
+        outline = np.array(ellipse(claim, (0, 1), 3, project=project))
         shape = np.linalg.inv(matrix)[:2, :2] if project else np.linalg.inv(matrix[:2, :2])
         assert outline.max(axis=0) == pytest.approx(np.sqrt(8 * np.diag(shape)), rel=1e-3)
 
@@ -209,9 +210,7 @@ def test_section_and_projection_of_an_ellipsoid_have_the_extents_of_the_closed_f
 def test_the_contour_of_another_function_lies_on_its_level():
     quartic = {(2, 0): F(1), (0, 2): F(2), (4, 0): F(1, 5)}
     planar = point(2, quartic)
-    canvas = Canvas(330)
-    plane = plane_of(canvas, planar, planar.figure, planar.chosen)
-    (outline,) = _section(proved_sets(planar)[0], plane)
+    (outline,) = section(proved_sets(planar)[0], (0, 1), 2, ((-4, 4), (-4, 4)))
     values = [x**2 + 2 * y**2 + x**4 / 5 for x, y in outline]
     assert values == pytest.approx([8] * len(values), rel=2e-3)
 

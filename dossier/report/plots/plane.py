@@ -3,25 +3,21 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import partial
 from typing import Final
 
-import contourpy
-import numpy as np
-
 from dossier.model.case import NOMINAL
-from dossier.model.claim import CoverClaim, LyapunovClaim
 from dossier.model.dossier import FigureData, PointEvidence
 from dossier.model.equilibrium import Equilibrium
-from dossier.model.polynomial import Exponents
 from dossier.model.region import Interval
 from dossier.report import numbers
 from dossier.report.formulas import offset
 from dossier.report.notation import Notation, notation, spoken
 from dossier.report.plots.axes import KEY_LINE, Axes, Key, Shown, shown_unit
+from dossier.report.plots.sets import ProvedSet, ellipse, proved_sets
 from dossier.report.plots.streamlines import directions, draw_streamlines
 from dossier.report.svg import Canvas, Point, Stroke, decimals
 from dossier.report.units import difference_unit
@@ -30,12 +26,6 @@ HEIGHT: Final = 330.0
 FRAME: Final = (58.0, 26.0, 408.0, 262.0)
 KEY_X: Final = 488.0
 """Layout in pixels: left, top, width and height of the plane, then the key beside it."""
-
-OUTLINE_POINTS: Final = 180
-CONTOUR_GRID: Final = 241
-"""Points of an ellipse, and of each side of the grid on which another function is contoured."""
-
-SETS_SHOWN: Final = 2
 
 FLOW = Stroke("faint", 0.9)
 REGION = Stroke("contradicted", 1.7, "0.1 3.6")
@@ -46,37 +36,6 @@ DOMAIN = Stroke("mid", 1.6)
 MOTION = Stroke("ink", 1.0)
 DOT: Final = 2.6
 """Diameter in pixels of the dots that stand for samples."""
-
-SetClaim = LyapunovClaim | CoverClaim
-
-
-@dataclass(frozen=True, slots=True)
-class ProvedSet:
-    """A set {V <= level} that was proved, and the ids of all the evidence for it."""
-
-    claim: SetClaim
-    evidence: tuple[str, ...]
-
-    @property
-    def quadratic(self) -> bool:
-        """V is a quadratic form."""
-        return all(sum(e) == 2 for e in self.claim.function)  # noqa: PLR2004
-
-
-def proved_sets(point: PointEvidence) -> tuple[ProvedSet, ...]:
-    """The sets around the chosen equilibrium with a rigorous proof, equal ones once, in the order of the claims."""
-    chosen = point.chosen
-    shown: dict[tuple[object, ...], ProvedSet] = {}
-    proved = {f.subject for f in point.findings if f.result == "proved" and f.is_rigorous}
-    for claim in point.claims:
-        if not isinstance(claim, LyapunovClaim | CoverClaim) or claim.identifier not in proved:
-            continue
-        if chosen is None or claim.equilibrium != chosen.identifier:
-            continue
-        key = (tuple(sorted(claim.function.items())), claim.level)
-        known = shown.get(key)
-        shown[key] = ProvedSet(known.claim if known else claim, (*(known.evidence if known else ()), claim.identifier))
-    return tuple(shown.values())[:SETS_SHOWN]
 
 
 @dataclass(frozen=True)
@@ -94,6 +53,12 @@ class Plane:
     def factors(self) -> Point:
         """SI per axis unit."""
         return self.shown[0].factor, self.shown[1].factor
+
+    @property
+    def window(self) -> tuple[Point, Point]:
+        """What is seen, as ranges of offsets in SI."""
+        (a, b), (c, d), (f, g) = self.axes.across, self.axes.up, self.factors
+        return (a * f, b * f), (c * g, d * g)
 
     def to_axes(self, offsets: Sequence[float]) -> Point:
         """A point of the state space (offsets, SI) in axis units."""
@@ -224,61 +189,17 @@ def _limit_criteria(point: PointEvidence) -> str:
 
 def _draw_sets(inner: Canvas, plane: Plane, key: Key) -> None:
     states = len(plane.point.case.model.states)
-    for proved, section, projection in zip(proved_sets(plane.point), SECTIONS, PROJECTIONS, strict=False):
+    for proved, solid, dashed in zip(proved_sets(plane.point), SECTIONS, PROJECTIONS, strict=False):
         name = proved.evidence[0].split(".", 1)[-1]
         planar = states == 2  # noqa: PLR2004
         if not planar and proved.quadratic:
-            inner.line(
-                plane.on_canvas(_ellipse(proved.claim, plane.places, states, project=True)), projection, closed=True
-            )
-        for outline in _section(proved, plane):
-            inner.line(plane.on_canvas(outline), section, closed=True)
+            inner.line(plane.on_canvas(ellipse(proved.claim, plane.places, states, project=True)), dashed, closed=True)
+        for outline in section(proved, plane.places, states, plane.window):
+            inner.line(plane.on_canvas(outline), solid, closed=True)
         scope = "nominal" if proved.claim.over == NOMINAL else "all tolerances"
-        key.line(f"proved set {name}", scope if planar else f"section; {scope}", section)
+        key.line(f"proved set {name}", scope if planar else f"section; {scope}", solid)
         if not planar and proved.quadratic:
-            key.line(f"proved set {name}", "projection", projection)
-
-
-def _section(proved: ProvedSet, plane: Plane) -> list[list[Point]]:
-    """Outlines of the section of the set by the plane, in offsets."""
-    states = len(plane.point.case.model.states)
-    if proved.quadratic:
-        return [_ellipse(proved.claim, plane.places, states, project=False)]
-    axes = plane.axes
-    xs = np.linspace(*axes.across, CONTOUR_GRID) * plane.factors[0]
-    ys = np.linspace(*axes.up, CONTOUR_GRID) * plane.factors[1]
-    grid = dict(zip(plane.places, np.meshgrid(xs, ys), strict=True))
-    values = np.zeros((CONTOUR_GRID, CONTOUR_GRID))
-    for exponents, coefficient in proved.claim.function.items():
-        if all(e == 0 or i in plane.places for i, e in enumerate(exponents)):
-            term = float(coefficient)
-            values += (
-                term
-                * grid[plane.places[0]] ** exponents[plane.places[0]]
-                * grid[plane.places[1]] ** exponents[plane.places[1]]
-            )
-    lines = contourpy.contour_generator(xs, ys, values).lines(float(proved.claim.level))
-    return [[(float(x), float(y)) for x, y in line] for line in lines]  # type: ignore[misc]
-
-
-def _matrix(function: Mapping[Exponents, Fraction], size: int) -> np.ndarray:
-    matrix = np.zeros((size, size))
-    for exponents, coefficient in function.items():
-        i, j = (k for k, e in enumerate(exponents) for _ in range(e))
-        matrix[i, j] += float(coefficient) / 2
-        matrix[j, i] += float(coefficient) / 2
-    return matrix
-
-
-def _ellipse(claim: SetClaim, places: tuple[int, int], size: int, *, project: bool) -> list[Point]:
-    """Outline of the section of {y'Py <= c} by the plane, or of its shadow on the plane."""
-    matrix = _matrix(claim.function, size)
-    chosen = np.ix_(places, places)
-    shape = np.linalg.inv(np.linalg.inv(matrix)[chosen]) if project else matrix[chosen]
-    factor = np.linalg.cholesky(shape)
-    angles = np.linspace(0, 2 * math.pi, OUTLINE_POINTS, endpoint=False)
-    circle = np.stack((np.cos(angles), np.sin(angles))) * math.sqrt(float(claim.level))
-    return [(float(x), float(y)) for x, y in np.linalg.solve(factor.T, circle).T]
+            key.line(f"proved set {name}", "projection", dashed)
 
 
 def _draw_motions(inner: Canvas, plane: Plane, key: Key) -> None:
