@@ -17,7 +17,7 @@ from dossier.report import numbers
 from dossier.report.formulas import offset
 from dossier.report.notation import Notation, notation, spoken
 from dossier.report.plots.axes import KEY_LINE, Axes, Key, Shown, shown_unit
-from dossier.report.plots.sets import ProvedSet, ellipse, proved_sets
+from dossier.report.plots.sets import ProvedSet, ellipse, proved_sets, section
 from dossier.report.plots.streamlines import directions, draw_streamlines
 from dossier.report.svg import Canvas, Point, Stroke, decimals
 from dossier.report.units import difference_unit
