@@ -1,62 +1,161 @@
 """READ FIRST: one operating point, then one project, as a page of plain calls.
 
 The stages (project, search, checks, judgement, evidence, report) are blind to each other and meet here.
-Search finds, checks prove; what a search returns reaches a verdict only through `dossier.checks`.
+Search finds, checks prove; what a search returns reaches a verdict only through `dossier.checks.assess`.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable
+import hashlib
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
+from fractions import Fraction
 from pathlib import Path
 from typing import Final
 
 import dossier
-from dossier.checks.assess import Assessment, assess
+from dossier.checks.assess import Assessment, assess, locate
+from dossier.checks.criteria.linear import region_and_level
+from dossier.checks.equilibria import enclose_equilibria
+from dossier.checks.linear import classify, routh_claim
+from dossier.checks.lyapunov import check_lyapunov, ellipsoid
+from dossier.checks.sets import covers
 from dossier.checks.simulation import figure_data, run_campaign
+from dossier.checks.spectral import cell_holds
 from dossier.evidence.provenance import Stopwatch, components, run_log
-from dossier.evidence.record import record_data
+from dossier.evidence.record import certificate_file, record_data
 from dossier.evidence.store import refuse_foreign_folder, write_dossier
-from dossier.goals import search_claims
 from dossier.judgement.points import judge_point
-from dossier.model.case import Case
-from dossier.model.dossier import Evidence, PointEvidence, Provenance
+from dossier.model.attempt import Attempt
+from dossier.model.case import Case, Criterion
+from dossier.model.claim import Claim, LyapunovClaim, SpectralRegion
+from dossier.model.dossier import Campaign, Evidence, PointEvidence, Provenance
+from dossier.model.equilibrium import Equilibrium
+from dossier.model.finding import Finding
 from dossier.model.loop import model_data, model_hash
-from dossier.model.text import canonical, claim_to_data
+from dossier.model.region import Box
+from dossier.model.text import canonical
 from dossier.project.reader import Faults, Project, read_project
 from dossier.report.render import Rendered, render
+from dossier.search.conic import meter
 from dossier.search.effort import EFFORTS, Effort
+from dossier.search.equilibria import seed_equilibria
+from dossier.search.frequency import seek_crossings
+from dossier.search.goals import ABOUT_SPECTRUM, loops, set_tasks, spectral_tasks
+from dossier.search.linearisation import seek_matrix
+from dossier.search.quadratic import seek_quadratic
 
 SEED: Final = 20_140
-"""Seed of every pseudo-random sequence, so that a build can be repeated."""
+"""Seed of the simulated campaigns, so that a build can be repeated."""
 
 Progress = Callable[[str, str], None]
 """Called with the operating point and the stage that begins."""
+
+Found = tuple[tuple[Claim, ...], tuple[Attempt, ...]]
 
 
 def build_point(case: Case, effort: Effort, progress: Progress, stopwatch: Stopwatch) -> PointEvidence:
     """Everything about one operating point; a plain function of its arguments."""
     with stopwatch.stage("search"):
         progress(case.name, "search")
-        claims, attempts = search_claims(case, effort)
+        claims, attempts = find_claims(case, effort, progress)
     with stopwatch.stage("proof"):
         progress(case.name, "proof")
         assessment = assess(case, claims, effort.boxes)
     with stopwatch.stage("simulation"):
         progress(case.name, "simulation")
-        campaign, sampled = _simulate(case, assessment, effort)
+        campaign, sampled = simulate(case, assessment, effort)
+    chosen = assessment.knowledge.chosen
+    figure = None if chosen is None else figure_data(case, chosen, assessment.proved_sets)
     outcomes = judge_point(case, (*assessment.about_criteria, *sampled), attempts, assessment.missing)
-    figure = None
-    if assessment.knowledge.chosen is not None:
-        figure = figure_data(case, assessment.knowledge.chosen, assessment.proved_sets)
     return PointEvidence(
         case, model_hash(case), assessment.knowledge.equilibria, assessment.knowledge.complete, assessment.clusters,
-        assessment.knowledge.claims, (*assessment.about_claims, *assessment.about_criteria, *sampled),
-        attempts, outcomes, assessment.knowledge.margins, campaign, figure, assessment.warnings,
+        claims, (*assessment.about_claims, *assessment.about_criteria, *sampled), attempts, outcomes,
+        assessment.knowledge.margins, campaign, figure,
     )  # fmt: skip
 
 
-def _simulate(case: Case, assessment: Assessment, effort: Effort):  # noqa: ANN202 - the pair run_campaign returns
+def find_claims(case: Case, effort: Effort, progress: Progress) -> Found:
+    """Every claim the searches can offer for `case`, none of them believed, and what was tried."""
+    roots = enclose_equilibria(case, seed_equilibria(case, effort), effort.boxes)
+    listed = None if isinstance(roots, str) else roots
+    equilibria, _, _ = locate(case, listed)
+    claims: list[Claim] = [] if listed is None else [listed]
+    attempts: list[Attempt] = []
+    if isinstance(roots, str):
+        attempts.append(Attempt(case.name, "interval branch and bound for equilibria", "out of reach", roots))
+    counts = [(e, routh_claim(case, e)) for e in equilibria]
+    claims += [c for _, c in counts if not isinstance(c, str)]
+    chosen = next((e for e in equilibria if e.chosen), None)
+    if chosen is None:
+        return tuple(claims), tuple(attempts)
+    searches = [_spectral_claims(case, chosen, effort), _margin_claims(case, chosen)]
+    unstable = any(e is chosen and classify(c) == "unstable" for e, c in counts)
+    if unstable:
+        why = "the linear part is unstable: no certificate exists"
+        attempts.append(Attempt(case.name, "Lyapunov certificates", "infeasible", why))
+    else:
+        progress(case.name, "certificates")
+        searches.append(_set_claims(case, chosen, effort))
+    for found, tried in searches:
+        claims += found
+        attempts += tried
+    return tuple(claims), tuple(attempts)
+
+
+def _wanted(case: Case) -> Iterator[tuple[Criterion, SpectralRegion, Fraction]]:
+    for criterion in case.criteria:
+        if criterion.claim in ABOUT_SPECTRUM:
+            wanted = region_and_level(criterion, sampled=case.model.time == "sampled")
+            if wanted is not None:
+                yield criterion, *wanted
+
+
+def _spectral_claims(case: Case, chosen: Equilibrium, effort: Effort) -> Found:
+    claims: list[Claim] = []
+    attempts: list[Attempt] = []
+    for task in spectral_tasks(case, _wanted(case)):
+        tried, claim = seek_matrix(case, chosen, task.over, task.region, task.level, effort, task.suffix, cell_holds)
+        attempts += tried
+        claims += [] if claim is None else [claim]
+    return tuple(claims), tuple(attempts)
+
+
+def _margin_claims(case: Case, chosen: Equilibrium) -> Found:
+    claims: list[Claim] = []
+    attempts: list[Attempt] = []
+    for loop in loops(case):
+        tried, claim = seek_crossings(case, chosen, loop)
+        attempts += tried
+        claims += [] if claim is None else [claim]
+    return tuple(claims), tuple(attempts)
+
+
+def _set_claims(case: Case, chosen: Equilibrium, effort: Effort) -> Found:
+    """Sets for all criteria about regions; attraction alone is sought only where the whole goal was missed."""
+    claims: list[Claim] = []
+    attempts: list[Attempt] = []
+    missed = False
+    for task in set_tasks(case, chosen):
+        if task.suffix.endswith("-free") and not missed:
+            continue
+        tried, found = seek_quadratic(
+            case, chosen, task.over, task.goal, effort, task.suffix,
+            lambda claim: check_lyapunov(case, chosen, claim).result == "proved",
+        )  # fmt: skip
+        missed = not found or not _covers(case, found[0], task.goal.region)
+        attempts += tried
+        claims += found
+    return tuple(claims), tuple(attempts)
+
+
+def _covers(case: Case, claim: LyapunovClaim, region: Box) -> bool:
+    shape = ellipsoid(claim, len(case.model.states))
+    return shape is not None and region.is_bounded and covers(shape, region)
+
+
+def simulate(case: Case, assessment: Assessment, effort: Effort) -> tuple[Campaign | None, tuple[Finding, ...]]:
+    """The campaign that tries to refute, where there is an operating point to start around."""
     chosen = assessment.knowledge.chosen
     if chosen is None:
         return None, ()
@@ -90,8 +189,6 @@ def build_evidence(
 
 
 def _sha256(content: bytes) -> str:
-    import hashlib
-
     return hashlib.sha256(content).hexdigest()
 
 
@@ -105,7 +202,8 @@ def evidence_files(project: Project, evidence: Evidence) -> dict[str, bytes]:
     }
     for point in evidence.points:
         for claim in point.claims:
-            files[f"certificates/{claim.identifier}.json"] = canonical(claim_to_data(claim)).encode()
+            text = canonical(certificate_file(claim, point.findings))
+            files[f"certificates/{claim.identifier}.json"] = text.encode()
     for name, content in project.files:
         files[f"project/{name}"] = content
     return files
@@ -153,7 +251,9 @@ def build(
     files.update({f"figures/{name}": content for name, content in rendered.figures})
     with stopwatch.stage("writing"):
         progress("", "writing")
-        written = write_dossier(target, files, run_log(stopwatch, {"effort": effort_name}))
+        written = write_dossier(
+            target, files, run_log(stopwatch, {"effort": effort_name, "conic_seconds": round(meter.seconds, 3)})
+        )
     return Build(evidence, rendered, target, written, project.warnings, stopwatch)
 
 

@@ -25,6 +25,7 @@ from dossier.checks.exact import (
     subtract,
     vanishes_only_at_zero,
 )
+from dossier.model.affine import spread_box
 from dossier.model.ball import Ball, to_fmpq
 from dossier.model.case import NOMINAL, Case, Scope
 from dossier.model.claim import DecreaseWitness, LyapunovClaim, Matrix
@@ -72,12 +73,6 @@ def ellipsoid(claim: LyapunovClaim, size: int) -> Ellipsoid | None:
         return None
     widths = tuple(root_above(claim.level * inverted[i][i]) for i in range(size))
     return Ellipsoid(matrix, inverted, claim.level, widths)
-
-
-def spread_box(case: Case) -> Box:
-    """Every parameter with a spread, in the model's order."""
-    free = [p for p in case.model.parameters if not p.spread.is_point]
-    return Box(tuple(p.name for p in free), tuple(p.spread for p in free))
 
 
 def parameter_box(case: Case, over: Scope) -> Box:

@@ -8,13 +8,12 @@ from typing import Final
 
 from dossier.checks.boxes import range_over
 from dossier.checks.exact import quadratic_form, root_above, root_below
-from dossier.checks.lyapunov import Ellipsoid, absolute_box, parameter_box, spread_box
+from dossier.checks.lyapunov import Ellipsoid, absolute_box, parameter_box
+from dossier.model.affine import affine_parts, offset_forms
 from dossier.model.ball import Ball
-from dossier.model.case import NOMINAL, Case, Scope
-from dossier.model.decrease import bernstein_coefficients
+from dossier.model.case import Case, Scope
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.expression import Expression
-from dossier.model.polynomial import NotRational, Quotient, Ring, collapse, quotient_of, split_constants
 from dossier.model.region import Box
 
 RANGE_PIECES: Final = 4_096
@@ -74,43 +73,20 @@ def bound_over_set(
 def _affine_bound(
     case: Case, equilibrium: Equilibrium, shape: Ellipsoid, quantity: Expression, over: Scope
 ) -> Ball | None:
-    names = case.model.state_names
-    free = Box((), ()) if over == NOMINAL else spread_box(case)
-    known = {p.name: p.nominal for p in case.model.parameters if p.name not in free.names}
-    try:
-        (converted,), balls = split_constants((quantity,), frozenset((*names, *free.names)), known)
-    except ArithmeticError:
-        return None
-    balls = {**balls, **{f"shift of {n}": Ball(Fraction(0), b.radius) for n, b in _inexact(equilibrium, names)}}
-    ring = Ring((*names, *free.names, *balls))
-    one = ring.constant(Fraction(1))
-    values = {n: Quotient(ring.gen(n), one) for n in (*free.names, *balls)}
-    for name, ball in zip(names, equilibrium.state, strict=True):
-        shifted = ring.constant(ball.middle) + ring.gen(name)
-        values[name] = Quotient(shifted + ring.gen(f"shift of {name}") if ball.radius else shifted, one)
-    quotient = quotient_of(converted, ring, values)
-    if isinstance(quotient, NotRational) or not quotient.denominator.is_constant():
+    forms = offset_forms(case, equilibrium, quantity, over)
+    if forms is None:
         return None
     bounds = []
-    for _, coefficient in bernstein_coefficients(quotient.numerator, ring, free):
-        support = _support(collapse(coefficient, ring, len(names), balls), shape, len(names))
-        if support is None:
+    for form in forms:
+        parts = affine_parts(form, len(case.model.states))
+        if parts is None:
             return None
-        bounds.append(support)
+        bounds.append(_support(*parts, shape))
     return Ball.from_bounds(min(b.lower for b in bounds), max(b.upper for b in bounds))
 
 
-def _inexact(equilibrium: Equilibrium, names: tuple[str, ...]) -> list[tuple[str, Ball]]:
-    return [(n, b) for n, b in zip(names, equilibrium.state, strict=True) if b.radius]
-
-
-def _support(coefficients: dict[tuple[int, ...], Ball], shape: Ellipsoid, size: int) -> Ball | None:
-    """Bounds of constant + w'y over the ellipsoid, or None for a polynomial of higher degree."""
-    if any(sum(e) > 1 for e in coefficients):
-        return None
-    zero = Ball(Fraction(0))
-    weights = [coefficients.get(tuple(int(i == j) for j in range(size)), zero) for i in range(size)]
-    constant = coefficients.get((0,) * size, zero)
+def _support(constant: Ball, weights: tuple[Ball, ...], shape: Ellipsoid) -> Ball:
+    """Bounds of constant + w'y over the ellipsoid, for every value of the balls."""
     reach = root_above(shape.level * quadratic_form(shape.inverse, [w.middle for w in weights]))
     slack = sum((w.radius * h for w, h in zip(weights, shape.half_widths, strict=True)), Fraction(0))
     return Ball(constant.middle, constant.radius + reach + slack)

@@ -9,7 +9,7 @@ from flint import arb, fmpq_mpoly
 
 from dossier.checks.boxes import constant_sign
 from dossier.checks.exact import is_positive_definite, is_positive_definite_for_all, root_above
-from dossier.checks.lyapunov import spread_box
+from dossier.model.affine import spread_box
 from dossier.model.ball import Ball, to_fmpq
 from dossier.model.case import NOMINAL, Case
 from dossier.model.claim import MatrixCell, MatrixClaim, SpectralRegion

@@ -19,9 +19,10 @@ class Slab:
 
     @property
     def reach(self) -> Fraction | None:
-        """How far a set symmetric about the equilibrium may reach; None where unbounded."""
-        sides = [abs(s) for s in (self.lower, self.upper) if s is not None]
-        return min(sides, default=None)
+        """How far a set symmetric about the equilibrium may reach; 0 where it lies outside; None where unbounded."""
+        below = None if self.lower is None else max(-self.lower, Fraction(0))
+        above = None if self.upper is None else max(self.upper, Fraction(0))
+        return min((s for s in (below, above) if s is not None), default=None)
 
 
 @dataclass(frozen=True, slots=True)

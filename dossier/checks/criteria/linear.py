@@ -9,7 +9,8 @@ from typing import Final
 from dossier.checks.criteria.common import conclude, open_question, refute, set_aside, stated_bounds, within
 from dossier.checks.knowledge import Knowledge
 from dossier.checks.linear import routh_claim_id
-from dossier.checks.lyapunov import certified_field, spread_box
+from dossier.checks.lyapunov import certified_field
+from dossier.model.affine import spread_box
 from dossier.model.case import NOMINAL, Criterion
 from dossier.model.claim import MatrixClaim, RouthClaim, SpectralRegion
 from dossier.model.equilibrium import Equilibrium

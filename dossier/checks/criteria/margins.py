@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dossier.checks.criteria.common import conclude, open_question, refute, set_aside, within
 from dossier.checks.knowledge import Knowledge
-from dossier.checks.lyapunov import spread_box
+from dossier.model.affine import spread_box
 from dossier.model.case import NOMINAL, Criterion
 from dossier.model.finding import Enclosure, Finding, Premise
 from dossier.model.outcome import LoopMargins
