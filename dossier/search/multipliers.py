@@ -1,37 +1,67 @@
 """Gram matrices that show the decrease of a given V on {V <= c}: one small conic program per Bernstein coefficient.
 
--g = z'Qz + (y'Sy-type multiplier) (c - V) with Q, S >= t I and t as large as possible (Positivstellensatz of
-first degree, the S-procedure: P. A. Parrilo, thesis, Caltech 2000; W. Tan and A. Packard, IEEE Trans.
-Autom. Control 53, 2008).  Interior solutions round well, so t is what is maximised.
+-g = z'Qz + (w'Sw)(c - V) with Q, S >= t I and t as large as possible (the S-procedure with a polynomial
+multiplier: P. A. Parrilo, thesis, Caltech 2000; W. Tan and A. Packard, IEEE Trans. Autom. Control 53,
+2008).  Interior solutions round well, so t is what is maximised.
 """
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Collection, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
 from itertools import combinations_with_replacement
+from math import ceil, log2, prod
 from typing import Final
 
 import cvxpy
 import numpy as np
+from flint import fmpq_mpoly
 from numpy.typing import NDArray
 
+from dossier.model.ball import Ball
 from dossier.model.claim import DecreaseWitness, Gram
-from dossier.model.decrease import DecreaseForm, bernstein_coefficients
-from dossier.model.polynomial import Exponents, OffsetField, collapse, terms
+from dossier.model.decrease import bernstein_coefficients, bernstein_count
+from dossier.model.polynomial import Exponents, Ring, collapse
 from dossier.model.region import Box
 from dossier.search.conic import solve
 from dossier.search.rounding import power_of_two_near, rescale, to_matrix
 
 Array = NDArray[np.float64]
 
-GRAM_BITS: Final = 40
-"""Rounding of Gram entries of order one; far finer than the margin asked for, still short."""
-LEAST_MARGIN: Final = 1e-8
-"""Margin t below which the rounding residual could eat it: no witness."""
+LEAST_BITS: Final = 20
+MOST_BITS: Final = 60
+"""Gram entries of order one are rounded between these; finer where the margin is thin."""
+GUARD_BITS: Final = 8
+"""Bits beyond the margin, so that rounding takes a small part of it."""
+LEAST_MARGIN: Final = 1e-9
+"""Margin t below which the residual of the solver would eat it: no witness."""
 LARGEST_BASIS: Final = 130
 """Largest Gram basis tried; beyond it one program takes minutes."""
+MOST_WITNESSES: Final = 4_096
+"""Bernstein coefficients looked at; more belong to a smaller parameter box."""
+TRACE_WEIGHT: Final = 1e-5
+"""Penalty on the traces when a program is repeated: it keeps the iterates bounded."""
+
+
+@dataclass(frozen=True, slots=True)
+class NoWitness:
+    """Why there is none; `index` names the Bernstein coefficient that failed, empty where none did."""
+
+    reason: str
+    index: Exponents = ()
+
+
+@dataclass(frozen=True)
+class Target:
+    """Everything the programs of one V share: sign * g over `parameters`, V and the scales of the offsets."""
+
+    numerator: fmpq_mpoly
+    ring: Ring
+    balls: Mapping[str, Ball]
+    parameters: Box
+    function: Mapping[Exponents, Fraction]
+    scales: tuple[Fraction, ...]
 
 
 def monomials(variables: int, least: int, most: int) -> tuple[Exponents, ...]:
@@ -39,147 +69,193 @@ def monomials(variables: int, least: int, most: int) -> tuple[Exponents, ...]:
     result = []
     for degree in range(least, most + 1):
         for places in combinations_with_replacement(range(variables), degree):
-            exponents = [0] * variables
-            for place in places:
-                exponents[place] += 1
-            result.append(tuple(exponents))
+            result.append(tuple(places.count(i) for i in range(variables)))
     return tuple(result)
 
 
-def _product(a: Exponents, b: Exponents) -> Exponents:
-    return tuple(x + y for x, y in zip(a, b, strict=True))
+def _product(*factors: Exponents) -> Exponents:
+    return tuple(map(sum, zip(*factors, strict=True)))
 
 
-@dataclass
+def bases(
+    support: Collection[Exponents], function: Collection[Exponents], variables: int
+) -> tuple[tuple[Exponents, ...], tuple[Exponents, ...]]:
+    """Monomials of the main and of the multiplier Gram for targets with monomials in `support`.
+
+    A monomial whose square neither the target nor a cross product can balance has a zero on the
+    diagonal, hence a zero row: it is dropped, repeatedly (facial reduction along coordinates, as in
+    J. Löfberg, IEEE Trans. Autom. Control 54, 2009, section III).
+    """
+    half = (max(sum(e) for e in support) + 1) // 2
+    main, multiplier = list(monomials(variables, 1, half)), list(monomials(variables, 1, half - 1))
+    while True:
+        reached = set(support)
+        reached.update(_product(a, b) for a in main for b in main if a != b)
+        reached.update(_product(a, b, v) for a in multiplier for b in multiplier for v in function)
+        kept = [m for m in main if _product(m, m) in reached]
+        if len(kept) == len(main):
+            return tuple(main), tuple(multiplier)
+        main, multiplier = kept, [m for m in multiplier if m in kept]
+
+
+def blocks(
+    basis: tuple[Exponents, ...], support: Collection[Exponents], function: Collection[Exponents]
+) -> list[list[int]]:
+    """Positions of `basis` that must be coupled, one list per block.
+
+    If target and V keep their values under some sign changes of the offsets, so does an averaged
+    solution; then monomials couple only where their product has a parity that occurs (K. Gatermann and
+    P. A. Parrilo, J. Pure Appl. Algebra 192, 2004, for sign symmetries).
+    """
+    span: set[Exponents] = {tuple(0 for _ in basis[0])} if basis else set()
+    for exponents in (*support, *function):
+        parity = tuple(k % 2 for k in exponents)
+        if parity not in span:
+            span |= {tuple((a + b) % 2 for a, b in zip(parity, s, strict=True)) for s in span}
+    groups: list[list[int]] = []
+    for place, exponents in enumerate(basis):
+        for group in groups:
+            if tuple(k % 2 for k in _product(exponents, basis[group[0]])) in span:
+                group.append(place)
+                break
+        else:
+            groups.append([place])
+    return groups
+
+
+class _GramVariable:
+    """z'Qz over `basis`: one matrix variable per block."""
+
+    def __init__(self, basis: tuple[Exponents, ...], groups: list[list[int]]) -> None:
+        self.basis, self.groups = basis, groups
+        self.parts = [cvxpy.Variable((len(g), len(g)), symmetric=True) for g in groups]
+
+    def above(self, margin: cvxpy.Variable) -> list[cvxpy.Constraint]:
+        return [part >> margin * np.eye(part.shape[0]) for part in self.parts]
+
+    def coefficients(self, rows: Mapping[Exponents, int], factor: Mapping[Exponents, float]) -> cvxpy.Expression:
+        """Coefficients of z'Qz times the fixed polynomial `factor`, in the order of `rows`."""
+        total: cvxpy.Expression = cvxpy.Constant(np.zeros(len(rows)))
+        for group, part in zip(self.groups, self.parts, strict=True):
+            table = np.zeros((len(rows), len(group) ** 2))
+            for i, a in enumerate(group):
+                for j, b in enumerate(group):
+                    for exponents, coefficient in factor.items():
+                        row = rows[_product(self.basis[a], self.basis[b], exponents)]
+                        table[row, i * len(group) + j] += coefficient
+            total = total + table @ cvxpy.vec(part, order="C")
+        return total
+
+    @property
+    def trace(self) -> cvxpy.Expression:
+        total: cvxpy.Expression = cvxpy.Constant(0.0)
+        for part in self.parts:
+            total = total + cvxpy.trace(part)
+        return total
+
+    @property
+    def value(self) -> Array:
+        whole = np.zeros((len(self.basis), len(self.basis)))
+        for group, part in zip(self.groups, self.parts, strict=True):
+            whole[np.ix_(group, group)] = part.value
+        return whole
+
+
 class MultiplierProgram:
-    """The program for one V and level, compiled once and solved for every right-hand side.
+    """The program of one V and level, compiled once and solved for every right-hand side, in scaled offsets."""
 
-    All polynomials are in scaled offsets z = y / S and divided by a power of two.
-    """
+    def __init__(
+        self,
+        main: _GramVariable,
+        multiplier: _GramVariable,
+        function: Mapping[Exponents, float],
+        level: float,
+    ) -> None:
+        size = len(main.basis[0])
+        gap = {e: -c for e, c in function.items()}
+        gap[(0,) * size] = level
+        reached = [_product(a, b) for a in main.basis for b in main.basis]
+        reached += [_product(a, b, e) for a in multiplier.basis for b in multiplier.basis for e in gap]
+        self.rows = {e: i for i, e in enumerate(dict.fromkeys(reached))}
+        self.main, self.multiplier = main, multiplier
+        self.target = cvxpy.Parameter(len(self.rows))
+        self.margin = cvxpy.Variable()
+        total = main.coefficients(self.rows, {(0,) * size: 1.0}) + multiplier.coefficients(self.rows, gap)
+        constraints = [*main.above(self.margin), *multiplier.above(self.margin), self.margin <= 1.0]
+        constraints.append(total == self.target)
+        self.problem = cvxpy.Problem(cvxpy.Maximize(self.margin), constraints)
+        penalty = TRACE_WEIGHT * (main.trace + multiplier.trace)
+        self.bounded = cvxpy.Problem(cvxpy.Maximize(self.margin - penalty), constraints)
 
-    basis: tuple[Exponents, ...]
-    multiplier_basis: tuple[Exponents, ...]
-    rows: dict[Exponents, int]
-    target: cvxpy.Parameter
-    gram: cvxpy.Variable
-    multiplier: cvxpy.Variable | None
-    margin: cvxpy.Variable
-    problem: cvxpy.Problem
-
-
-def program(variables: int, degree: int, function: Mapping[Exponents, float], level: float) -> MultiplierProgram | None:
-    """The program for right-hand sides of total degree `degree` and quadratic V = `function` (scaled).
-
-    None where the basis would be too large.
-    """
-    half = (degree + 1) // 2
-    basis = monomials(variables, 1, half)
-    multiplier_basis = monomials(variables, 1, half - 1)
-    if len(basis) > LARGEST_BASIS:
-        return None
-    reached = dict.fromkeys(_product(a, b) for a in basis for b in basis)
-    rows = {e: i for i, e in enumerate(reached)}
-    target = cvxpy.Parameter(len(rows))
-    margin = cvxpy.Variable()
-    gram = cvxpy.Variable((len(basis), len(basis)), symmetric=True)
-    total = _gram_map(basis, rows) @ cvxpy.vec(gram, order="C")
-    constraints = [gram >> margin * np.eye(len(basis)), margin <= 1.0]
-    multiplier = None
-    if multiplier_basis:
-        size = len(multiplier_basis)
-        multiplier = cvxpy.Variable((size, size), symmetric=True)
-        total = total + _gap_map(multiplier_basis, rows, function, level) @ cvxpy.vec(multiplier, order="C")
-        constraints.append(multiplier >> margin * np.eye(size))
-    constraints.append(total == target)
-    problem = cvxpy.Problem(cvxpy.Maximize(margin), constraints)
-    return MultiplierProgram(basis, multiplier_basis, rows, target, gram, multiplier, margin, problem)
-
-
-def _gram_map(basis: tuple[Exponents, ...], rows: Mapping[Exponents, int]) -> Array:
-    size = len(basis)
-    result = np.zeros((len(rows), size * size))
-    for i, a in enumerate(basis):
-        for j, b in enumerate(basis):
-            result[rows[_product(a, b)], i * size + j] += 1.0
-    return result
+    def solve_for(self, values: Mapping[Exponents, float]) -> float | str:
+        """The margin reached, or why there is none; the Grams are left in the variables."""
+        if not values.keys() <= self.rows.keys():
+            return "a monomial of the derivative is out of the basis's reach"
+        self.target.value = np.array([values.get(e, 0.0) for e in self.rows])
+        remark = ""
+        for problem in (self.problem, self.bounded):
+            solved = solve(problem)
+            remark = solved.remark
+            margin = self.margin.value
+            if solved.has_values and margin is not None and float(margin) > LEAST_MARGIN:
+                return float(margin)
+            if solved.status == "optimal":
+                break
+        return f"no positive definite Gram matrices ({remark})"
 
 
-def _gap_map(
-    basis: tuple[Exponents, ...], rows: Mapping[Exponents, int], function: Mapping[Exponents, float], level: float
-) -> Array:
-    """Coefficients of (basis' S basis) (level - V) as a linear map of vec(S)."""
-    size = len(basis)
-    result = np.zeros((len(rows), size * size))
-    for i, a in enumerate(basis):
-        for j, b in enumerate(basis):
-            ab = _product(a, b)
-            result[rows[ab], i * size + j] += level
-            for exponents, coefficient in function.items():
-                result[rows[_product(ab, exponents)], i * size + j] -= coefficient
-    return result
-
-
-def seek_witnesses(
-    field: OffsetField,
-    form: DecreaseForm,
-    sign: int,
-    function: Mapping[Exponents, Fraction],
-    level: Fraction,
-    parameters: Box,
-    scales: tuple[Fraction, ...],
-) -> tuple[DecreaseWitness, ...] | str:
-    """One witness per Bernstein coefficient of sign * g, in order, or why there is none."""
-    size = len(scales)
-    numerator = form.numerator * field.ring.constant(Fraction(sign))
-    degree = max((sum(e[:size]) for e in terms(numerator)), default=0)
-    if degree == 0:
-        return "the derivative of V vanishes identically"
-    scaled = {e: float(c * _scale_of(e, scales)) for e, c in function.items()}
-    prepared = program(size, degree, scaled, float(level))
-    if prepared is None:
-        return "the Gram basis would be too large"
+def seek_witnesses(target: Target, level: Fraction) -> tuple[DecreaseWitness, ...] | NoWitness:
+    """One witness per Bernstein coefficient of the target at this level, in order, or why there is none."""
+    if bernstein_count(target.numerator, target.ring, target.parameters) > MOST_WITNESSES:
+        return NoWitness("the parameter box has too many vertices")
+    size = len(target.scales)
+    pairs = [
+        (index, {e: b.middle * _scale_of(e, target.scales) for e, b in balls.items()})
+        for index, coefficient in bernstein_coefficients(target.numerator, target.ring, target.parameters)
+        for balls in [collapse(-coefficient, target.ring, size, target.balls)]
+    ]
+    support = {e for _, polynomial in pairs for e, c in polynomial.items() if c}
+    if not support:
+        return NoWitness("the derivative of V vanishes identically")
+    main, multiplier = bases(support, target.function.keys(), size)
+    pure = {i for e in main for i, k in enumerate(e) if k and sum(e) == k}
+    if len(pure) < size or len(main) > LARGEST_BASIS:
+        return NoWitness("the decrease is zero along a line" if len(pure) < size else "the Gram basis is too large")
+    function = {e: float(c * _scale_of(e, target.scales)) for e, c in target.function.items()}
+    program = MultiplierProgram(
+        _GramVariable(main, blocks(main, support, function)),
+        _GramVariable(multiplier, blocks(multiplier, support, function)),
+        function, float(level),
+    )  # fmt: skip
     witnesses = []
-    for index, coefficient in bernstein_coefficients(numerator, field.ring, parameters):
-        target = {
-            e: b.middle * _scale_of(e, scales) for e, b in collapse(-coefficient, field.ring, size, field.balls).items()
-        }
-        witness = _witness(prepared, index, target, scales)
-        if isinstance(witness, str):
-            return f"Bernstein coefficient {index}: {witness}" if index else witness
+    for index, polynomial in pairs:
+        witness = _witness(program, index, polynomial, target.scales)
+        if isinstance(witness, NoWitness):
+            return witness
         witnesses.append(witness)
     return tuple(witnesses)
 
 
 def _scale_of(exponents: Exponents, scales: tuple[Fraction, ...]) -> Fraction:
-    result = Fraction(1)
-    for exponent, scale in zip(exponents, scales, strict=True):
-        result *= scale**exponent
-    return result
+    return prod((s**k for s, k in zip(scales, exponents, strict=True)), start=Fraction(1))
 
 
 def _witness(
-    prepared: MultiplierProgram, index: Exponents, target: Mapping[Exponents, Fraction], scales: tuple[Fraction, ...]
-) -> DecreaseWitness | str:
-    unit = power_of_two_near(max((abs(float(c)) for c in target.values()), default=1.0))
-    values = np.zeros(len(prepared.rows))
-    for exponents, coefficient in target.items():
-        if exponents not in prepared.rows:
-            return "a monomial of the derivative is out of the basis's reach"
-        values[prepared.rows[exponents]] = float(coefficient / unit)
-    prepared.target.value = values
-    solved = solve(prepared.problem)
-    margin = prepared.margin.value
-    if not solved.has_values or margin is None or not float(margin) > LEAST_MARGIN:
-        return f"no positive definite Gram matrices ({solved.remark})"
-    main = _gram(prepared.basis, prepared.gram.value, unit, scales)
-    if prepared.multiplier is None:
-        return DecreaseWitness(index, main, Gram((), ()))
-    return DecreaseWitness(index, main, _gram(prepared.multiplier_basis, prepared.multiplier.value, unit, scales))
+    program: MultiplierProgram, index: Exponents, polynomial: Mapping[Exponents, Fraction], scales: tuple[Fraction, ...]
+) -> DecreaseWitness | NoWitness:
+    unit = power_of_two_near(max((abs(float(c)) for c in polynomial.values()), default=1.0))
+    margin = program.solve_for({e: float(c / unit) for e, c in polynomial.items() if c})
+    if isinstance(margin, str):
+        return NoWitness(margin, index)
+    size = len(program.main.basis) + len(program.multiplier.basis)
+    bits = min(MOST_BITS, max(LEAST_BITS, ceil(log2(size / margin)) + GUARD_BITS))
+    return DecreaseWitness(
+        index, _gram(program.main, bits, unit, scales), _gram(program.multiplier, bits, unit, scales)
+    )
 
 
-def _gram(basis: tuple[Exponents, ...], values: Array | None, unit: Fraction, scales: tuple[Fraction, ...]) -> Gram:
-    """Back to unscaled offsets, exactly: z^a = y^a / S^a."""
-    rounded = to_matrix(np.asarray(values), GRAM_BITS)
-    factors = tuple(1 / _scale_of(e, scales) for e in basis)
-    back = rescale(rounded, factors)
-    return Gram(basis, tuple(tuple(unit * v for v in row) for row in back))
+def _gram(variable: _GramVariable, bits: int, unit: Fraction, scales: tuple[Fraction, ...]) -> Gram:
+    """Rounded, and back to unscaled offsets exactly: z^a = y^a / S^a."""
+    rounded = to_matrix(variable.value, bits)
+    back = rescale(rounded, tuple(1 / _scale_of(e, scales) for e in variable.basis))
+    return Gram(variable.basis, tuple(tuple(unit * v for v in row) for row in back))

@@ -6,10 +6,12 @@ rate, so that every number the conic solver sees is of order one.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import reduce
 from itertools import islice, product
-from typing import Final
+from typing import Any, Final
 
 import numpy as np
 from flint import fmpq_mpoly
@@ -17,82 +19,85 @@ from numpy.typing import NDArray
 
 from dossier.model.case import NOMINAL, Case, Scope
 from dossier.model.equilibrium import Equilibrium
-from dossier.model.loop import vector_field
+from dossier.model.expression import Expression, fold
+from dossier.model.loop import VectorField, vector_field
 from dossier.model.polynomial import NotRational, OffsetField, Ring, offset_field, terms
 from dossier.model.region import Box
 from dossier.search.rounding import power_of_two_near
 
 Array = NDArray[np.float64]
+Evaluate = Callable[[Array, Array], Array]
+"""(offsets B x n, parameters B x k) to derivatives of the offsets, or to the next offsets."""
 
 VERTICES: Final = 512
 """Most vertices of the parameter box looked at in floating point; the proof needs them all anyway."""
-
 DEFAULT_HALF_WIDTH: Final = 1.0
 """Scale of a state that neither region nor limits nor domain bound."""
-
-
-class Evaluator:
-    """A polynomial as exponent and coefficient arrays; call with points, one row each, over all ring names."""
-
-    def __init__(self, polynomial: fmpq_mpoly, ring: Ring) -> None:
-        items = terms(polynomial)
-        self.exponents = np.array(list(items) or [(0,) * len(ring.names)], dtype=np.int64)
-        self.coefficients = np.array([float(c) for c in items.values()] or [0.0])
-
-    def __call__(self, points: Array) -> Array:  # noqa: D102 - described by the class
-        result = np.zeros(len(points))
-        for exponents, coefficient in zip(self.exponents, self.coefficients, strict=True):
-            term = np.full(len(points), coefficient)
-            for column in np.flatnonzero(exponents):
-                term = term * points[:, column] ** int(exponents[column])
-            result = result + term
-        return result
+VERTEX_SHARE: Final = 0.6
+"""Share of attack points put on vertices of the parameter box: most worst cases are there, not all."""
+DIFFERENCE: Final = 1e-5
+"""Step of central differences in scaled offsets: error near 1e-10, ample for a candidate."""
+SLOWEST: Final = 1e-9
+"""Decay (scaled) below this is taken as zero: such a linear part decides nothing."""
 
 
 @dataclass(frozen=True)
 class ScaledLoop:
-    """`scales` S and `rate`: y = S z, and the scaled field is f(S z)/(S rate), or the scaled next sample.
+    """y = S z with S = diag(`scales`), and time in units of 1/`rate` where it is continuous.
 
-    `vertices` are parameter rows (V x k) over `spread`; `linear` the linear parts there (V x n x n).
+    `vertices` are parameter rows (V x k) over `spread`; `linear` the scaled linear parts there
+    (V x n x n).  `field` is the exact form where the equations are quotients of polynomials, else why not.
     """
 
     case: Case
-    field: OffsetField
+    field: OffsetField | NotRational
+    sampled: bool
     spread: Box
     scales: tuple[Fraction, ...]
     rate: float
     vertices: Array
     linear: Array
-    _numerators: tuple[Evaluator, ...]
-    denominator: Evaluator
+    evaluate: Evaluate
 
     @property
     def size(self) -> int:
         """Number of states n."""
         return len(self.scales)
 
+    @property
+    def decay(self) -> float:
+        """Slowest decay of the linear parts, per unit of scaled time; 1 - rho^2 for sampled loops; <= 0: none."""
+        eigenvalues = np.linalg.eigvals(self.linear)
+        if self.sampled:
+            return float(1.0 - np.max(np.abs(eigenvalues)) ** 2)
+        return float(-np.max(eigenvalues.real))
+
+    @property
+    def is_settling(self) -> bool:
+        """Every linear part looked at is asymptotically stable."""
+        return self.decay > SLOWEST
+
     def image(self, points: Array, parameters: Array) -> Array:
         """The scaled field (continuous) or the next scaled offsets (sampled) at `points` (B x n)."""
         scales = np.array([float(s) for s in self.scales])
-        rest = [0.0 if n.startswith("shift") else float(self.field.balls[n].middle) for n in self._constants()]
-        full = np.hstack([points * scales, parameters, np.tile(rest, (len(points), 1))])
-        with np.errstate(all="ignore"):
-            numerators = np.stack([e(full) for e in self._numerators], axis=1)
-            values = numerators / self.denominator(full)[:, None] / scales
-        return values if self.field.sampled else values / self.rate
+        values = self.evaluate(points * scales, parameters) / scales
+        return values if self.sampled else values / self.rate
 
-    def _constants(self) -> tuple[str, ...]:
-        return self.field.ring.names[self.size + len(self.spread.names) :]
+    def slope(self, matrix: Array, points: Array, parameters: Array, share: float = 0.0) -> Array:
+        """(V' + `share` x decay x V)/V for V = z' `matrix` z, with V(next) - V for sampled loops; inf if undefined.
 
-    def slope(self, matrix: Array, points: Array, parameters: Array) -> Array:
-        """V' (or V(next) - V) for V = z' `matrix` z, divided by |z|^2."""
+        Negative: V falls at least at that share of the slowest decay.
+        """
         image = self.image(points, parameters)
-        weighted = image @ matrix
-        if self.field.sampled:
-            change = (weighted * image).sum(1) - (points @ matrix * points).sum(1)
-        else:
-            change = 2.0 * (weighted * points).sum(1)
-        return change / (points * points).sum(1)
+        value = ((points @ matrix) * points).sum(1)
+        with np.errstate(all="ignore"):
+            if self.sampled:
+                change = ((image @ matrix) * image).sum(1) - value
+                decay = self.decay
+            else:
+                change = 2.0 * ((image @ matrix) * points).sum(1)
+                decay = 2.0 * self.decay
+            return np.nan_to_num(change / value + share * decay, nan=np.inf)
 
     def draw(self, count: int, generator: np.random.Generator) -> Array:
         """Parameter rows: mostly vertices, some interior."""
@@ -104,62 +109,149 @@ class ScaledLoop:
         return lower + inside * (upper - lower)
 
 
-VERTEX_SHARE: Final = 0.6
-"""Share of attack points put on vertices of the parameter box: most worst cases are there, not all."""
+def scaled_loop(case: Case, equilibrium: Equilibrium, over: Scope, region: Box) -> ScaledLoop:
+    """The scaled loop around `equilibrium`, with the spread parameters symbolic over tolerances.
 
-
-def scaled_loop(case: Case, equilibrium: Equilibrium, over: Scope) -> ScaledLoop | NotRational:
-    """The scaled loop around `equilibrium`, with the spread parameters symbolic over tolerances."""
+    Raises ArithmeticError where a constant of the equations has no finite enclosure.
+    """
     free = () if over == NOMINAL else tuple(p for p in case.model.parameters if not p.spread.is_point)
     spread = Box(tuple(p.name for p in free), tuple(p.spread for p in free))
     loop = vector_field(case)
     known = {p.name: p.nominal for p in case.model.parameters}
     field = offset_field(loop.equations, loop.states, equilibrium.state, known, spread.names, sampled=loop.sampled)
-    if isinstance(field, NotRational):
-        return field
-    scales = tuple(power_of_two_near(half_width(case, n)) for n in loop.states)
+    scales = tuple(power_of_two_near(half_width(case, region, n)) for n in loop.states)
     vertices = _vertices(spread)
-    evaluators = tuple(Evaluator(p, field.ring) for p in field.numerators)
-    bare = ScaledLoop(
-        case, field, spread, scales, 1.0, vertices, np.zeros((0, 0, 0)), evaluators,
-        Evaluator(field.denominator, field.ring),
-    )  # fmt: skip
-    linear = _linear_parts(bare)
-    rate = 1.0 if field.sampled else float(np.max(np.abs(np.linalg.eigvals(linear)), initial=0.0)) or 1.0
-    return ScaledLoop(
-        case, field, spread, scales, rate, vertices, linear if field.sampled else linear / rate, evaluators,
-        bare.denominator,
-    )  # fmt: skip
+    if isinstance(field, NotRational):
+        evaluate = _from_expressions(case, loop, equilibrium, spread)
+        linear = _differences(evaluate, vertices, scales)
+    else:
+        evaluate = _from_polynomials(field)
+        linear = _linear_parts(field, vertices, scales)
+    rate = 1.0 if loop.sampled else float(np.max(np.abs(np.linalg.eigvals(linear)), initial=0.0)) or 1.0
+    return ScaledLoop(case, field, loop.sampled, spread, scales, rate, vertices, linear / rate, evaluate)
 
 
-def half_width(case: Case, name: str) -> float:
+def half_width(case: Case, region: Box, name: str) -> float:
     """A typical size of one offset: of the region, else limits, else domain."""
-    for box in (case.region, case.limits, case.model.domain):
+    for box in (region, case.limits, case.model.domain):
         side = box[name]
         if side.is_bounded and side.width > 0:
-            return float(max(abs(b) for b in side.bounds)) if box is not case.model.domain else float(side.width) / 2
+            return float(side.width) / 2
     return DEFAULT_HALF_WIDTH
 
 
 def _vertices(spread: Box) -> Array:
-    rows = list(islice(product(*(i.bounds for i in spread.intervals)), VERTICES))
-    if len(rows) == VERTICES and 2 ** len(spread.names) > VERTICES:
-        generator = np.random.default_rng(len(spread.names))
-        picks = generator.integers(0, 2, (VERTICES, len(spread.names)))
-        rows = [tuple(i.bounds[b] for i, b in zip(spread.intervals, pick, strict=True)) for pick in picks]
-    return np.array([[float(v) for v in row] for row in rows]).reshape(len(rows), len(spread.names))
+    sides = [i.bounds for i in spread.intervals]
+    rows = list(islice(product(*sides), VERTICES))
+    if 2 ** len(sides) > VERTICES:
+        picks = np.random.default_rng(len(sides)).integers(0, 2, (VERTICES, len(sides)))
+        rows = [tuple(side[b] for side, b in zip(sides, pick, strict=True)) for pick in picks]
+    return np.array([[float(v) for v in row] for row in rows]).reshape(len(rows), len(sides))
 
 
-def _linear_parts(loop: ScaledLoop) -> Array:
-    """Exact in structure: first-order terms of the numerators over the denominator at the equilibrium."""
-    size = loop.size
-    scales = np.array([float(s) for s in loop.scales])
-    rest = [float(loop.field.balls[n].middle) for n in loop._constants()]
-    rows = np.hstack([np.zeros((len(loop.vertices), size)), loop.vertices, np.tile(rest, (len(loop.vertices), 1))])
-    denominator = Evaluator(loop.field.denominator, loop.field.ring)(rows)
-    result = np.zeros((len(loop.vertices), size, size))
-    for i, numerator in enumerate(loop.field.numerators):
+class Evaluator:
+    """A polynomial as exponent and coefficient arrays; call with points, one row each, over all ring names."""
+
+    def __init__(self, polynomial: fmpq_mpoly, ring: Ring) -> None:
+        items = terms(polynomial)
+        self.exponents = np.array(list(items) or [(0,) * len(ring.names)], dtype=np.int64)
+        self.coefficients = np.array([float(c) for c in items.values()] or [0.0])
+
+    def __call__(self, points: Array) -> Array:
+        """Values at `points`, one per row."""
+        result = np.zeros(len(points))
+        for exponents, coefficient in zip(self.exponents, self.coefficients, strict=True):
+            factors = [points[:, k] for k in np.flatnonzero(exponents) for _ in range(exponents[k])]
+            result = result + reduce(np.multiply, factors, coefficient)
+        return result
+
+
+def constants_of(field: OffsetField) -> list[float]:
+    """Middle values of the uncertain constants, in the order of the ring."""
+    return [float(field.balls[n].middle) for n in field.ring.names[len(field.states) + len(field.parameters) :]]
+
+
+def _from_polynomials(field: OffsetField) -> Evaluate:
+    numerators = [Evaluator(p, field.ring) for p in field.numerators]
+    denominator = Evaluator(field.denominator, field.ring)
+    rest = constants_of(field)
+
+    def evaluate(points: Array, parameters: Array) -> Array:
+        full = np.hstack([points, parameters, np.tile(rest, (len(points), 1))])
+        with np.errstate(all="ignore"):
+            return np.stack([n(full) for n in numerators], axis=1) / denominator(full)[:, None]
+
+    return evaluate
+
+
+def _linear_parts(field: OffsetField, vertices: Array, scales: tuple[Fraction, ...]) -> Array:
+    """First-order terms of the numerators over the denominator at the equilibrium."""
+    size = len(field.states)
+    widths = np.array([float(s) for s in scales])
+    rows = np.hstack([np.zeros((len(vertices), size)), vertices, np.tile(constants_of(field), (len(vertices), 1))])
+    denominator = Evaluator(field.denominator, field.ring)(rows)
+    result = np.zeros((len(vertices), size, size))
+    for i, numerator in enumerate(field.numerators):
         for j in range(size):
-            slope = Evaluator(numerator.derivative(j), loop.field.ring)(rows)
-            result[:, i, j] = slope / denominator * scales[j] / scales[i]
+            result[:, i, j] = Evaluator(numerator.derivative(j), field.ring)(rows) / denominator
+    return result * widths[None, None, :] / widths[None, :, None]
+
+
+def _from_expressions(case: Case, loop: VectorField, equilibrium: Equilibrium, spread: Box) -> Evaluate:
+    """The equations as written, less their value at the equilibrium, which is zero but for rounding."""
+    place = np.array([float(b.middle) for b in equilibrium.state])
+    nominal = {p.name: float(p.nominal.middle) for p in case.model.parameters}
+
+    def values(states: Array, parameters: Array) -> Array:
+        columns: dict[str, Any] = dict(nominal)
+        columns.update(zip(loop.states, states.T, strict=True))
+        columns.update(zip(spread.names, parameters.T, strict=True))
+        with np.errstate(all="ignore"):
+            results = [fold(e, lambda node, args: _node(node, args, columns)) for e in loop.equations]
+        return np.stack([np.broadcast_to(r, len(states)) for r in results], axis=1)
+
+    def evaluate(points: Array, parameters: Array) -> Array:
+        return values(points + place, parameters) - values(np.broadcast_to(place, points.shape), parameters)
+
+    return evaluate
+
+
+def _node(node: Expression, args: tuple[Any, ...], columns: dict[str, Any]) -> Any:
+    if node.op == "number":
+        return float(node.fraction)
+    if node.op == "pi":
+        return np.pi
+    if node.op == "symbol":
+        return columns[str(node.value)]
+    if node.op == "pow":
+        exponent = node.fraction
+        return np.power(args[0], int(exponent) if exponent.denominator == 1 and exponent > 0 else float(exponent))
+    if node.op == "sat":
+        return np.clip(args[0], args[1], args[2])
+    function = _NUMPY[node.op]
+    return function(*args) if len(args) == 1 else reduce(function, args)
+
+
+_NUMPY: Final[dict[str, Callable[..., Any]]] = {
+    "add": np.add, "mul": np.multiply, "div": np.divide, "neg": np.negative, "sin": np.sin, "cos": np.cos,
+    "tan": np.tan, "asin": np.arcsin, "acos": np.arccos, "atan": np.arctan, "exp": np.exp, "log": np.log,
+    "sqrt": np.sqrt, "abs": np.abs, "tanh": np.tanh,
+}  # fmt: skip
+
+
+def _differences(evaluate: Evaluate, vertices: Array, scales: tuple[Fraction, ...]) -> Array:
+    """Scaled linear parts by central differences, vertex by vertex."""
+    size = len(scales)
+    widths = np.array([float(s) for s in scales])
+    result = np.zeros((len(vertices), size, size))
+    for j in range(size):
+        step = np.zeros((len(vertices), size))
+        step[:, j] = DIFFERENCE * widths[j]
+        result[:, :, j] = (evaluate(step, vertices) - evaluate(-step, vertices)) / (2 * DIFFERENCE * widths)
     return result
+
+
+def denominator_sign(field: OffsetField, vertices: Array) -> int:
+    """Sign of the denominator at the equilibrium and the first vertex; the check proves it everywhere."""
+    row = np.concatenate([np.zeros(len(field.states)), vertices[:1].ravel(), constants_of(field)])
+    return 1 if Evaluator(field.denominator, field.ring)(row[None, :]).item() >= 0 else -1
