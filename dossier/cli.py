@@ -15,7 +15,8 @@ from collections.abc import Sequence
 from pathlib import Path
 from typing import Final
 
-PROVED, NOT_PROVED, FAULTY_INPUT, PROGRAM_FAULT, REFUSED = range(5)
+from dossier import __version__
+from dossier.exits import FAULTY_INPUT, PROGRAM_FAULT, PROVED, REFUSED
 
 EFFORT_NAMES: Final = ("quick", "standard", "thorough")
 
@@ -50,7 +51,7 @@ def _parser() -> argparse.ArgumentParser:
         description="Build, inspect and recheck stability dossiers of machine control loops.",
         epilog="A dossier concerns mathematical models; it does not certify a machine.",
     )
-    parser.add_argument("--version", action="version", version=_version())
+    parser.add_argument("--version", action="version", version=f"dossier {__version__}")
     commands = parser.add_subparsers(required=True, metavar="COMMAND")
     build = commands.add_parser("build", help="prove or refute every criterion and write the dossier")
     build.add_argument(
@@ -67,12 +68,6 @@ def _parser() -> argparse.ArgumentParser:
     recheck.add_argument("folder", type=Path, metavar="OUT", help="folder written by build")
     recheck.set_defaults(run=_recheck)
     return parser
-
-
-def _version() -> str:
-    from dossier import __version__
-
-    return f"dossier {__version__}"
 
 
 def project_file(path: Path) -> Path:

@@ -15,8 +15,12 @@ from rich.console import Console
 from rich.table import Table
 from rich.text import Text
 
+from dossier.exits import NOT_PROVED, PROGRAM_FAULT, PROVED
+from dossier.inspection import inspection_lines
+from dossier.model.dossier import PointEvidence
 from dossier.model.outcome import VERDICTS, Outcome, Verdict
-from dossier.report.terminal_text import inspect_lines, printed_enclosure, printed_reserve
+from dossier.report import numbers
+from dossier.report.content import quantities
 
 if TYPE_CHECKING:  # recheck must not load the searches that the pipeline imports
     from dossier.pipeline import Build
@@ -71,7 +75,7 @@ class Terminal:
     def report(self, build: Build) -> int:
         """The closing table, the paths written and the exit code of the build."""
         outcomes = [o for p in build.evidence.points for o in p.outcomes]
-        self.out.print(self._table(outcomes))
+        self.out.print(self._table(build.evidence.points))
         counts = Counter(o.verdict for o in outcomes)
         self.out.print(Text("   ".join(f"{counts[v]} {v}" for v in VERDICTS if counts[v])))
         for warning in build.warnings:
@@ -82,16 +86,25 @@ class Terminal:
         self._written(build)
         return self._exit_code(build, outcomes)
 
-    def _table(self, outcomes: Sequence[Outcome]) -> Table:
+    def _table(self, points: Sequence[PointEvidence]) -> Table:
         table = Table(box=None, pad_edge=False, header_style="bold", padding=(0, 2, 0, 0))
         for heading in ("criterion", "claim", "over", "verdict", "checked by", "obtained", "required", "reserve"):
-            table.add_column(heading, overflow="fold")
-        for o in outcomes:
-            table.add_row(
-                o.identifier, o.claim, o.over, Text(o.verdict, style=STYLES[o.verdict]), o.strength or "–",
-                printed_enclosure(o.value), printed_enclosure(o.bound), printed_reserve(o.reserve),
-            )  # fmt: skip
+            table.add_column(heading, overflow="fold", no_wrap=heading in ("criterion", "verdict"))
+        for point in points:
+            for outcome, criterion in zip(point.outcomes, point.case.criteria, strict=True):
+                table.add_row(
+                    outcome.identifier, outcome.claim, outcome.over,
+                    Text(outcome.verdict, style=STYLES[outcome.verdict]), outcome.strength or quantities.NOTHING,
+                    quantities.obtained(outcome, criterion, point.case) or quantities.NOTHING,
+                    quantities.required(criterion) or quantities.NOTHING, self._reserve(outcome),
+                )  # fmt: skip
         return table
+
+    @staticmethod
+    def _reserve(outcome: Outcome) -> str:
+        if outcome.reserve is None or outcome.reserve.lower is None:
+            return quantities.NOTHING
+        return numbers.percent_below(outcome.reserve.lower)
 
     def _written(self, build: Build) -> None:
         seconds = build.stopwatch.seconds
@@ -105,15 +118,13 @@ class Terminal:
 
     @staticmethod
     def _exit_code(build: Build, outcomes: Sequence[Outcome]) -> int:
-        from dossier.cli import NOT_PROVED, PROGRAM_FAULT, PROVED
-
         if any(o.contradiction for o in outcomes) or not isinstance(build.rendered.pdf, bytes):
             return PROGRAM_FAULT
         return PROVED if all(o.verdict in ("proved", "not applicable") for o in outcomes) else NOT_PROVED
 
     def model(self, project: Project) -> None:
         """The project as understood, in SI."""
-        for line in inspect_lines(project.document, project.assumptions, project.cases):
+        for line in inspection_lines(project.document, project.assumptions, project.cases):
             self.out.print(Text(line))
         for warning in project.warnings:
             self.out.print(Text(f"warning: {warning}"))
