@@ -48,15 +48,10 @@ def _case_lines(case: Case) -> Iterator[str]:
 
 def _criterion(criterion: Criterion) -> str:
     bounds = [q for q in (criterion.at_least, criterion.at_most, *(criterion.between or ())) if q is not None]
-        about = (
-            f" of {criterion.of_written}"
-            if criterion.of_written
-            else f" of loop {criterion.loop}"
-            if criterion.loop
-            else ""
-        )
-        limits = "".join(f" {_quantity(q)}" for q in bounds)
-        yield f"  criterion {criterion.name}: {criterion.claim}{about} over {criterion.over}{limits}"
+    about = f" of {criterion.of_written}" if criterion.of_written else ""
+    loop = f" of loop {criterion.loop}" if criterion.loop else ""
+    limits = "".join(f" {_quantity(q)}" for q in bounds)
+    return f"criterion {criterion.name}: {criterion.claim}{about}{loop} over {criterion.over}{limits}"
 
 
 def _parameter(parameter: Parameter) -> str:
