@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 
-from dossier.model.case import Assumption, Case, Parameter, Quantity
+from dossier.model.case import Assumption, Case, Criterion, Parameter, Quantity
 from dossier.model.dossier import Document
 from dossier.model.expression import conditions, to_text
 from dossier.model.loop import vector_field
