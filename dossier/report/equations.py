@@ -6,17 +6,23 @@ The typesetter is mathra in strict mode, so an unknown command is an error and n
 from __future__ import annotations
 
 import hashlib
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 from functools import lru_cache
 
 import mathra
 from markupsafe import Markup, escape
 
+from dossier.report.formulas import aligned
 from dossier.report.outlines import Drawing, decimal, flat_path, path_data, read_drawing
 from dossier.report.rich import Formula
 
 LINE_WIDTH_EM = 46.0
 """Width of the text column in em of the equation's size: a wider equation is broken or reduced."""
+
+
+WIDEST_EM = 1.8 * LINE_WIDTH_EM
+"""A line wider than this would be reduced to less than 5.6 points, below what a print can show."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -45,6 +51,14 @@ def typeset(latex: str, speech: str = "", display: bool = False) -> Equation:
 def width_of(latex: str) -> float:
     """Width in em of `latex` as a displayed equation."""
     return typeset(latex, display=True).drawing.width
+
+
+def fitted(left: str, terms: Sequence[str], speech: str) -> Formula:
+    """``left terms`` as one displayed formula, on several lines where it is wider than the column."""
+    line = f"{left} {' '.join(terms)}"
+    if width_of(line) > LINE_WIDTH_EM:
+        line = aligned(left, terms, "", LINE_WIDTH_EM, width_of)
+    return Formula(line, speech, display=True)
 
 
 @dataclass

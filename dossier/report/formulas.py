@@ -22,6 +22,8 @@ _NAMED: Final = {
 _POWERED: Final = frozenset({"sin", "cos", "tan", "tanh"})
 """Functions whose integer powers are written on the name: sin squared of x."""
 
+APPROXIMATELY: Final = r"\approx"
+
 LONG_SUM: Final = 14
 """Terms of a function of offsets that are printed; the certificate file holds all."""
 
@@ -126,21 +128,22 @@ def offset(name: str, notation: Notation) -> str:
 
 
 def function_of_offsets(
-    function: Mapping[Exponents, Fraction], states: Sequence[str], notation: Notation, *, index: str = ""
-) -> str:
-    """A function V of the offsets with the first digits of its coefficients, equality only where they are exact."""
+    function: Mapping[Exponents, Fraction], states: Sequence[str], notation: Notation
+) -> tuple[str, tuple[str, ...]]:
+    """V of the offsets: its left side with the relation, and its terms with their signs and first digits.
+
+    The relation is an equality only where every printed coefficient is exact.
+    """
     ordered = sorted(function.items(), key=lambda t: (sum(t[0]), tuple(-e for e in t[0])))
     shown = ordered[:LONG_SUM]
     exact = all(numbers.exactly(c) is not None for _, c in shown)
-    body = ""
+    terms = []
     for exponents, coefficient in shown:
-        sign = " -" if coefficient < 0 else " +" if body else ""
-        body += f"{sign} {_term(abs(coefficient), exponents, states, notation)}"
+        sign = "- " if coefficient < 0 else "+ " if terms else ""
+        terms.append(f"{sign}{_term(abs(coefficient), exponents, states, notation)}")
     if len(ordered) > LONG_SUM:
-        body += r" + \cdots"
-    name = "V" if not index else f"V_{{{index}}}"
-    relation = "=" if exact else r"\approx"
-    return f"{name} {relation}{body}"
+        terms.append(r"+ \cdots")
+    return f"V {'=' if exact else APPROXIMATELY}", tuple(terms)
 
 
 def _term(coefficient: Fraction, exponents: Exponents, states: Sequence[str], notation: Notation) -> str:
@@ -158,28 +161,44 @@ def _term(coefficient: Fraction, exponents: Exponents, states: Sequence[str], no
 def broken(
     left: str, expression: Expression, notation: Notation, width: float, width_of: Callable[[str], float]
 ) -> str:
-    """``left = expression`` over several lines, broken before the signs of its outermost sum.
+    """``left = expression`` over several lines, broken before the signs of its outermost sum or between factors.
 
     A quotient with a long numerator becomes one over its denominator times a bracket, which may be broken.
     `width` is the greatest width of a line and `width_of` measures one, in em.
     """
     opening, closing = "", ""
-    if expression.op == "div" and expression.args[0].op == "add":
+    if expression.op == "div" and expression.args[0].op in ("add", "mul"):
         opening = rf"\frac{{1}}{{{latex(expression.args[1], notation)}}}\Bigl("
         closing = r"\Bigr)"
         expression = expression.args[0]
-    terms = expression.args if expression.op == "add" else (expression,)
-    lines, line = [], f"{left} &= {opening}"
-    for index, term in enumerate(terms):
-        text = latex(term, notation)
-        piece = text if index == 0 else f" - {text[1:]}" if text.startswith("-") else f" + {text}"
-        if index and width_of((line + piece).replace("&", "").replace(r"\Bigl(", "(")) > width:
+    return aligned(f"{left} = {opening}", _pieces(expression, notation), closing, width, width_of)
+
+
+def _pieces(expression: Expression, notation: Notation) -> list[str]:
+    """The parts between which `expression` may be broken, each but the first with its sign."""
+    if expression.op == "mul":
+        factors = [fold(a, lambda node, parts: _piece(node, parts, notation)) for a in expression.args]
+        first, *rest = (_wrapped(f, PRODUCT) for f in factors)
+        return [first, *(rf"\cdot {f}" for f in rest)]
+    terms = [latex(t, notation) for t in (expression.args if expression.op == "add" else (expression,))]
+    signed = [f"- {t[1:]}" if t.startswith("-") else f"+ {t}" for t in terms[1:]]
+    return [terms[0], *signed]
+
+
+def aligned(left: str, pieces: Sequence[str], closing: str, width: float, width_of: Callable[[str], float]) -> str:
+    """`left` and `pieces` in a row, continued on further lines where a line would be wider than `width`."""
+    relation = next(r for r in (r"\approx", "=") if r in left)
+    lines, line = [], left
+    for index, piece in enumerate(pieces):
+        if index and width_of(f"{line} {piece}".replace(r"\Bigl(", "(")) > width:
             lines.append(line)
-            line = rf"&\qquad{piece}"
+            line = rf"\qquad {piece}"
         else:
-            line += piece
+            line = f"{line} {piece}"
     lines.append(line + closing)
-    return r"\begin{aligned}" + r" \\ ".join(lines) + r"\end{aligned}"
+    first = lines[0].replace(relation, f"&{relation}", 1)
+    rest = "".join(rf" \\ & {line}" for line in lines[1:])
+    return rf"\begin{{aligned}}{first}{rest}\end{{aligned}}"
 
 
 def matrix(rows: Sequence[Sequence[str]]) -> str:

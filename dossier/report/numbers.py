@@ -17,6 +17,8 @@ ELLIPSIS: Final = "…"
 GROUP: Final = "\u202f"
 """Narrow no-break space between groups of three digits (ISO 80000-1, 7.3.1)."""
 
+PLUS_MINUS: Final = "±"
+
 NO_FINITE_VALUE: Final = "no finite value in this model"
 
 DIGITS: Final = 4
@@ -25,6 +27,9 @@ DIGITS: Final = 4
 FIRST_DIGITS: Final = 6
 FEWEST_SHARED: Final = 4
 """Most and fewest digits printed of a number known more closely than anyone reads; with fewer, both ends are."""
+
+NARROW: Final = Fraction(1, 10**6)
+"""Relative width below which a centre with a radius reads better than two ends."""
 
 STATED_CLOSENESS: Final = Fraction(1, 10**12)
 """An input converted through pi is printed as the short decimal it came from, if that is relatively this close."""
@@ -102,7 +107,16 @@ def enclosure(lower: Fraction | None, upper: Fraction | None, digits: int = DIGI
     for shared in (first_digits(lower, upper, d) for d in range(FIRST_DIGITS, FEWEST_SHARED - 1, -1)):
         if shared is not None:
             return shared
-    return f"{below(lower, digits)} {ELLIPSIS} {above(upper, digits)}"
+    return _around(lower, upper) or f"{below(lower, digits)} {ELLIPSIS} {above(upper, digits)}"
+
+
+def _around(lower: Fraction, upper: Fraction) -> str | None:
+    """A narrow enclosure that straddles a short decimal, as that decimal and a radius; None for a wide one."""
+    centre = Fraction(_round((lower + upper) / 2, FIRST_DIGITS, ROUND_HALF_EVEN))
+    reach = max(abs(upper - centre), abs(centre - lower))
+    if reach > abs(centre) * NARROW:
+        return None
+    return f"{nearest(centre, FIRST_DIGITS)} {PLUS_MINUS}{GROUP}{radius(reach)}"
 
 
 def radius(value: Fraction) -> str:

@@ -144,21 +144,38 @@ def test_a_long_sum_is_broken_into_lines_that_fit() -> None:
 def test_a_long_quotient_keeps_its_denominator() -> None:
     terms = [mul(number(k), power(X, k)) for k in range(2, 40)]
     text = formulas.broken("y", div(Expression("add", tuple(terms)), Y), NAMES, 40, equations.width_of)
-    assert text.startswith(r"\begin{aligned}y &= \frac{1}{y}\Bigl(")
+    assert text.startswith(r"\begin{aligned}y &= \frac{1}{y}\Bigl( 2")
     assert text.endswith(r"\Bigr)\end{aligned}")
     assert equations.typeset(text, display=True).drawing.placed
+
+
+def test_a_long_product_is_broken_between_its_factors() -> None:
+    factors = tuple(Expression("add", (power(X, k), power(Y, k), number(k))) for k in range(2, 20))
+    text = formulas.broken("y", Expression("mul", factors), NAMES, 40, equations.width_of)
+    assert text.count(r"\cdot") == len(factors) - 1
+    assert text.count(r"\\") >= 2
+    assert equations.width_of(text) <= 43
+
+
+def test_a_long_function_is_fitted_to_the_column() -> None:
+    function = {(k, 1): Fraction(10**k + 1, 3) for k in range(formulas.LONG_SUM)}
+    formula = equations.fitted(*formulas.function_of_offsets(function, ("x", "y"), NAMES), "V")
+    assert equations.width_of(formula.latex) <= equations.LINE_WIDTH_EM + 3
+    assert r"&\approx" in formula.latex
 
 
 def test_equality_is_claimed_only_for_exact_coefficients() -> None:
     exact = formulas.function_of_offsets({(2, 0): Fraction(7, 4), (1, 1): Fraction(-1)}, ("x", "y"), NAMES)
     rounded = formulas.function_of_offsets({(2, 0): Fraction(1, 3)}, ("x", "y"), NAMES)
-    assert exact == r"V = 1.75\,(\Delta x)^{2} - \Delta x\,\Delta y"
-    assert rounded == r"V \approx 0.3333\,(\Delta x)^{2}"
+    assert exact == ("V =", (r"1.75\,(\Delta x)^{2}", r"- \Delta x\,\Delta y"))
+    assert rounded == (r"V \approx", (r"0.3333\,(\Delta x)^{2}",))
 
 
 def test_a_very_long_function_says_that_it_goes_on() -> None:
     function = {(k, 1): Fraction(k + 1) for k in range(formulas.LONG_SUM + 3)}
-    assert formulas.function_of_offsets(function, ("x", "y"), NAMES).endswith(r"+ \cdots")
+    _, terms = formulas.function_of_offsets(function, ("x", "y"), NAMES)
+    assert len(terms) == formulas.LONG_SUM + 1
+    assert terms[-1] == r"+ \cdots"
 
 
 def test_a_matrix_is_marked_exact_only_where_it_is() -> None:

@@ -112,6 +112,20 @@ def test_a_narrow_enclosure_shows_its_common_digits() -> None:
     assert numbers.enclosure(Fraction("1.7"), Fraction("1.9")) == "1.7 … 1.9"
 
 
+def test_a_narrow_enclosure_that_straddles_a_decimal_is_printed_with_its_radius() -> None:
+    reach = Fraction(1, 10**12)
+    assert numbers.enclosure(1 - reach, 1 + reach) == "1 ±\u202f1\u202f×\u202f10⁻¹²"
+
+
+@given(ANY, st.integers(7, 30))
+def test_centre_and_radius_hold_the_enclosure(value: Fraction, places: int) -> None:
+    low, high = value - abs(value) / 10**places, value + abs(value) / (3 * 10**places)
+    centre, sign, reach = numbers.enclosure(low, high).partition(f" {numbers.PLUS_MINUS}")
+    if sign:
+        assert read(centre) - read(reach) <= low
+        assert read(centre) + read(reach) >= high
+
+
 def test_no_digit_is_claimed_for_an_enclosure_around_zero() -> None:
     assert numbers.first_digits(Fraction(-1, 10**20), Fraction(1, 10**20)) is None
 

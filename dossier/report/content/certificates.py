@@ -8,7 +8,7 @@ from dossier.model.claim import Claim, CoverClaim, LyapunovClaim, RootsClaim, St
 from dossier.model.dossier import PointEvidence
 from dossier.model.finding import Finding
 from dossier.model.theorem import THEOREMS
-from dossier.report import formulas, numbers, wording
+from dossier.report import equations, formulas, numbers, wording
 from dossier.report.blocks import Block, Column, Equations, Facts, Paragraph, Row, Subheading, Table
 from dossier.report.content.context import Context
 from dossier.report.rich import Formula, Mono, Rich, rich
@@ -41,7 +41,8 @@ def _set_blocks(context: Context, point: PointEvidence, claim: SetClaim) -> Iter
     twin = _earlier_twin(point, claim)
     if twin is None:
         said = f"function V of degree {degree} in the offsets of the states, with {len(claim.function)} terms"
-        yield Equations((Formula(formulas.function_of_offsets(claim.function, states, notation), said, display=True),))
+        left, terms = formulas.function_of_offsets(claim.function, states, notation)
+        yield Equations((equations.fitted(left, terms, said),))
     else:
         yield Paragraph(rich("The same function V as in ", context.link(twin.identifier), "."))
     yield Facts(tuple(_set_facts(context, point, claim, degree)))

@@ -41,19 +41,24 @@ def linear_blocks(context: Context, point: PointEvidence) -> Iterator[Block]:
 
 def _eigenvalue_table(point: PointEvidence, shown: list[Equilibrium]) -> Table:
     unit = "1" if point.case.model.time == "sampled" else "1/s"
-    rows = [Row(((Mono(e.identifier),), *_disc(value))) for e in shown for value in e.eigenvalues]
+    rows = [row for equilibrium in shown for row in _disc_rows(equilibrium)]
     columns = (
-        Column("Equilibrium", "id", 28),
-        Column(f"Real part in {unit}", "number", 19),
-        Column(f"Imaginary part in {unit}", "number", 19),
-        Column(f"Radius of the disc in {unit}", "number", 20),
-        Column("Holds", "number", 14),
+        Column(f"Real part in {unit}", "number", 26),
+        Column(f"Imaginary part in {unit}", "number", 26),
+        Column(f"Radius of the disc in {unit}", "number", 28),
+        Column("Holds", "number", 20),
     )
     note: Rich = (
         "Each disc is proved to hold the stated number of eigenvalues of the nominal linear part; of its centre the "
         "first digits are printed.",
     )
     return Table("Eigenvalues", columns, tuple(rows), note)
+
+
+def _disc_rows(equilibrium: Equilibrium) -> Iterator[Row]:
+    yield Row(((Mono(equilibrium.identifier), f"  {equilibrium.stability}"),), spanning=True)
+    for value in equilibrium.eigenvalues:
+        yield Row(_disc(value))
 
 
 def _disc(value: Eigenvalue) -> tuple[Rich, ...]:

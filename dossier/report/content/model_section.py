@@ -27,6 +27,9 @@ TIME_WORDS = {
 }
 
 
+TOO_WIDE = "an expression too wide for the page; model.json has it"
+
+
 def model_section(context: Context, number: str) -> Section:
     """All models, each under its own heading."""
     blocks: list[Block] = []
@@ -96,4 +99,7 @@ def equation(left: str, words: str, expression: Expression, notation: Notation) 
     line = f"{left} = {right}"
     if equations.width_of(line) <= equations.LINE_WIDTH_EM:
         return Formula(line, said, display=True)
-    return Formula(formulas.broken(left, expression, notation, equations.LINE_WIDTH_EM, equations.width_of), said, True)
+    text = formulas.broken(left, expression, notation, equations.LINE_WIDTH_EM, equations.width_of)
+    if equations.width_of(text) <= equations.WIDEST_EM:
+        return Formula(text, said, display=True)
+    return Formula(rf"{left} = \text{{{TOO_WIDE}}}", said, display=True)

@@ -48,14 +48,14 @@ def parameter_tables(
     changed = {name: p for p in points for name, _ in p.case.set_values}
     rows = tuple(Row(_parameter_cells(context, model, p, notation, p.name in changed)) for p in model.parameters)
     columns = (
-        Column("Sign", "formula", 8),
-        Column("Name", "mono", 14),
-        Column("Meaning", share=24),
-        Column("Nominal", "number", 12),
-        Column("Unit", "short", 10),
-        Column("Spread", "number", 13),
-        Column("Kind", "short", 9),
-        Column("Source", share=10),
+        Column("Sign", "formula", 7),
+        Column("Name", "mono", 12),
+        Column("Meaning", share=21),
+        Column("Nominal", "number", 11),
+        Column("Unit", "short", 8),
+        Column("Spread", "number", 15),
+        Column("Kind", "short", 11),
+        Column("Source", share=15),
     )
     note: Rich = (
         "A tolerance is a spread in production, a range a spread in use; either value is unknown but constant"

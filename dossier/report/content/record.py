@@ -17,7 +17,6 @@ from dossier.report.blocks import (
     Section,
     SignField,
     SignOff,
-    Subheading,
     Table,
 )
 from dossier.report.content.context import Context
@@ -155,7 +154,6 @@ def guide_annex(letter: str) -> Section:
     blocks: tuple[Block, ...] = (
         Bullets(tuple((line,) for line in guide.READING_GUIDE)),
         Paragraph((guide.READING_NUMBERS,)),
-        Subheading(("Words used",)),
         Table("Glossary", (Column("Word", share=20), Column("Meaning", share=80)), rows),
     )
     return Section("guide", letter, "Reading guide", blocks, new_page=True)
