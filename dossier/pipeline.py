@@ -28,7 +28,7 @@ from dossier.evidence.store import refuse_foreign_folder, write_dossier
 from dossier.judgement.points import judge_point
 from dossier.model.attempt import Attempt
 from dossier.model.case import Case, Criterion
-from dossier.model.claim import Claim, LyapunovClaim, SpectralRegion
+from dossier.model.claim import Claim, LyapunovClaim, RootsClaim, SpectralRegion
 from dossier.model.dossier import Campaign, Evidence, PointEvidence, Provenance
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.finding import Finding
@@ -78,12 +78,12 @@ def build_point(case: Case, effort: Effort, progress: Progress, stopwatch: Stopw
 def find_claims(case: Case, effort: Effort, progress: Progress) -> Found:
     """Every claim the searches can offer for `case`, none of them believed, and what was tried."""
     roots = enclose_equilibria(case, seed_equilibria(case, effort), effort.boxes)
-    listed = None if isinstance(roots, str) else roots
+    listed = roots if isinstance(roots, RootsClaim) else None
     equilibria, _, _ = locate(case, listed)
     claims: list[Claim] = [] if listed is None else [listed]
     attempts: list[Attempt] = []
-    if isinstance(roots, str):
-        attempts.append(Attempt(case.name, "interval branch and bound for equilibria", "out of reach", roots))
+    if not isinstance(roots, RootsClaim):
+        attempts.append(Attempt(case.name, "interval branch and bound for equilibria", "out of reach", roots.reason))
     counts = [(e, routh_claim(case, e)) for e in equilibria]
     claims += [c for _, c in counts if not isinstance(c, str)]
     chosen = next((e for e in equilibria if e.chosen), None)
