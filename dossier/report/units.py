@@ -68,19 +68,19 @@ HERTZ: Final = PrintedUnit("Hz", Fraction(2), 1)
 _WRITTEN: Final = re.compile(r"^\s*([-+]?[0-9.]+(?:[eE][-+]?[0-9]+)?)\s*(.*?)\s*$")
 
 
-def stated_unit(quantity: Quantity) -> PrintedUnit:
+def stated_unit(quantity: Quantity) -> PrintedUnit | None:
     """The unit in which a stated bound was written, recovered from its text and its exact SI value.
 
-    A bound of zero does not tell its unit: values beside it are printed in coherent SI units.
+    None where that cannot be told: a bound of zero has no unit of its own.
     """
     match = _WRITTEN.match(quantity.written)
     if match is None:
-        return COHERENT
+        return None
     figure, name = Fraction(match[1]), match[2] or quantity.unit
     if name in ZERO_POINTS:
         return PrintedUnit(name, zero=ZERO_POINTS[name])
     if figure == 0 or quantity.factor == 0:
-        return COHERENT
+        return None
     return PrintedUnit(name, quantity.factor / figure, quantity.pi_power)
 
 

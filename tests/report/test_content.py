@@ -7,15 +7,17 @@ from dataclasses import fields, is_dataclass, replace
 from fractions import Fraction
 from typing import Any
 
+from dossier.model.case import Quantity
 from dossier.model.dossier import Evidence
 from dossier.report.blocks import Card, Gauge, Paper, Paragraph, SignField, Table
 from dossier.report.content import paper_of
 from dossier.report.content.argument import deciding_finding
 from dossier.report.content.context import read_context
-from dossier.report.content.quantities import obtained, required, reserve
+from dossier.report.content.quantities import obtained, required, reserve, unit_of
 from dossier.report.content.verdicts import criterion_of, issue_sentence
 from dossier.report.layout import places
 from dossier.report.rich import Link, plain
+from dossier.report.units import PrintedUnit
 
 
 def parts(value: Any) -> Iterator[Any]:
@@ -75,6 +77,15 @@ def test_values_are_printed_in_the_unit_of_the_bound_and_rounded_to_the_worse_si
     assert printed(evidence, "bottom_hold.C3")[:2] == ("−1.6 … 1.6\u00a0mm", "−1.382 … 1.382\u00a0mm")
     assert printed(evidence, "bottom_hold.C4")[:2] == ("≥\u00a05\u00a01/s", "≥\u00a013.68\u00a01/s")
     assert printed(evidence, "bottom_hold.C7")[:2] == ("≥\u00a01.5\u00a0ms", "≥\u00a01.712\u00a0ms")
+
+
+def test_a_quantity_bounded_by_zero_is_printed_in_the_unit_of_its_state(evidence: Evidence) -> None:
+    point = evidence.points[0]
+    zero = Quantity(Fraction(0), 0, "rad", "0 deg")
+    criterion = replace(point.case.criteria[2], between=None, at_least=zero, of_written="theta")
+    assert unit_of(criterion, evidence.points[2].case).name == "deg"
+    formula = replace(criterion, of_written="theta + 1", claim="excursion")
+    assert unit_of(formula, evidence.points[2].case) == PrintedUnit("rad")
 
 
 def test_a_refuted_angle_is_printed_in_degrees(evidence: Evidence) -> None:

@@ -57,16 +57,24 @@ def test_degrees_celsius_have_their_own_zero_but_differences_do_not() -> None:
 
 def test_the_unit_of_a_bound_is_recovered_from_its_text() -> None:
     unit = units.stated_unit(Quantity(Fraction("0.0016"), 0, "m", "1.6 mm"))
+    assert unit is not None
     assert unit.name == "mm"
     assert unit.from_si(Fraction("0.00138"), None) == (Fraction("1.38"), None)
     degrees = units.stated_unit(Quantity(Fraction(40, 180), 1, "rad", "40 deg"))
+    assert degrees is not None
     assert (degrees.name, degrees.factor, degrees.pi_power) == ("deg", Fraction(1, 180), 1)
 
 
-def test_a_bound_of_zero_tells_no_unit_and_the_page_says_so() -> None:
-    unit = units.stated_unit(Quantity(Fraction(0), 0, "m", "0 mm"))
-    assert unit == units.COHERENT
-    assert units.unit_text(unit.name) == "(SI units)"
+def test_a_bound_of_zero_tells_no_unit() -> None:
+    """0 mm is 0 in SI: the length of a millimetre cannot be recovered from it."""
+    assert units.stated_unit(Quantity(Fraction(0), 0, "m", "0 mm")) is None
+    assert units.unit_text(units.COHERENT.name) == "(SI units)"
+
+
+def test_degrees_celsius_are_printed_from_their_own_zero() -> None:
+    unit = units.stated_unit(Quantity(Fraction("353.15"), 0, "K", "80 degC"))
+    assert unit is not None
+    assert unit.from_si(Fraction("353.15"), None) == (80, None)
 
 
 def test_a_stated_quantity_keeps_its_digits() -> None:

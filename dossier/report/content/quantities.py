@@ -18,15 +18,16 @@ WANTED_DOWN: Final = "≤"
 
 
 def unit_of(criterion: Criterion, case: Case) -> PrintedUnit:
-    """The unit to print the criterion's quantity in: that of its bounds, else that of its state or signal."""
-    for quantity in _bounds(criterion):
-        unit = units.stated_unit(quantity)
-        if unit != units.COHERENT:
-            return unit
+    """The unit to print the criterion's quantity in: that of its bounds, else of its state or signal, else SI."""
+    bounds = _bounds(criterion)
+    told = next((u for u in map(units.stated_unit, bounds) if u is not None), None)
+    if told is not None:
+        return told
     for declared in (*case.model.states, *case.model.signals, *case.model.parameters):
         if declared.name == criterion.of_written:
             return units.absolute_unit(declared.unit, declared.scale)
-    return _HABITS.get(criterion.claim, units.COHERENT)
+    coherent = PrintedUnit(bounds[0].unit) if bounds else units.COHERENT
+    return _HABITS.get(criterion.claim, coherent)
 
 
 _HABITS: Final = {
