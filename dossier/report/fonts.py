@@ -26,7 +26,6 @@ class Face:
 FACES: Final = (
     Face("IBM Plex Sans", 300, "normal", "IBMPlexSans-Light.woff"),
     Face("IBM Plex Sans", 400, "normal", "IBMPlexSans-Regular.woff"),
-    Face("IBM Plex Sans", 400, "italic", "IBMPlexSans-Italic.woff"),
     Face("IBM Plex Sans", 600, "normal", "IBMPlexSans-SemiBold.woff"),
     Face("IBM Plex Sans Condensed", 400, "normal", "IBMPlexSansCondensed-Regular.woff"),
     Face("IBM Plex Sans Condensed", 600, "normal", "IBMPlexSansCondensed-SemiBold.woff"),
