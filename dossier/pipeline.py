@@ -15,6 +15,7 @@ from typing import Final
 
 import dossier
 from dossier.checks.assess import Assessment, assess, locate
+from dossier.checks.cover import check_cover
 from dossier.checks.criteria.linear import region_and_level
 from dossier.checks.equilibria import enclose_equilibria
 from dossier.checks.linear import classify, routh_claim
@@ -27,8 +28,8 @@ from dossier.evidence.record import certificate_file, record_data
 from dossier.evidence.store import refuse_foreign_folder, write_dossier
 from dossier.judgement.points import judge_point
 from dossier.model.attempt import Attempt
-from dossier.model.case import Case, Criterion
-from dossier.model.claim import Claim, LyapunovClaim, RootsClaim, SpectralRegion
+from dossier.model.case import NOMINAL, Case, Criterion
+from dossier.model.claim import Claim, CoverClaim, LyapunovClaim, RootsClaim, SpectralRegion
 from dossier.model.dossier import Campaign, Evidence, PointEvidence, Provenance
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.finding import Finding
@@ -38,10 +39,11 @@ from dossier.model.text import canonical
 from dossier.project.reader import Faults, Project, read_project
 from dossier.report.render import Rendered, render
 from dossier.search.conic import meter
+from dossier.search.cover import seek_cover_candidate
 from dossier.search.effort import EFFORTS, Effort
 from dossier.search.equilibria import seed_equilibria
 from dossier.search.frequency import seek_crossings
-from dossier.search.goals import ABOUT_SPECTRUM, loops, set_tasks, spectral_tasks
+from dossier.search.goals import ABOUT_SPECTRUM, SetTask, loops, set_tasks, spectral_tasks
 from dossier.search.linearisation import seek_matrix
 from dossier.search.quadratic import seek_quadratic
 
@@ -51,6 +53,7 @@ SEED: Final = 20_140
 Progress = Callable[[str, str], None]
 """Called with the operating point and the stage that begins."""
 
+Sets = tuple[LyapunovClaim | CoverClaim, ...]
 Found = tuple[tuple[Claim, ...], tuple[Attempt, ...]]
 
 
@@ -139,17 +142,29 @@ def _set_claims(case: Case, chosen: Equilibrium, effort: Effort) -> Found:
     for task in set_tasks(case, chosen):
         if task.suffix.endswith("-free") and not missed:
             continue
-        tried, found = seek_quadratic(
-            case, chosen, task.over, task.goal, effort, task.suffix,
-            lambda claim: check_lyapunov(case, chosen, claim).result == "proved",
-        )  # fmt: skip
+        tried, found = _seek_set(case, chosen, task, effort)
         missed = not found or not _covers(case, found[0], task.goal.region)
         attempts += tried
         claims += found
     return tuple(claims), tuple(attempts)
 
 
-def _covers(case: Case, claim: LyapunovClaim, region: Box) -> bool:
+def _seek_set(case: Case, chosen: Equilibrium, task: SetTask, effort: Effort) -> tuple[tuple[Attempt, ...], Sets]:
+    """A set by exact Gram matrices; where the equations are no quotients of polynomials, by intervals."""
+    tried, found = seek_quadratic(
+        case, chosen, task.over, task.goal, effort, task.suffix,
+        lambda claim: check_lyapunov(case, chosen, claim).result == "proved",
+    )  # fmt: skip
+    if found or task.over != NOMINAL:
+        return tried, found
+    more, cover = seek_cover_candidate(
+        case, chosen, task.goal, effort, task.suffix,
+        lambda claim: check_cover(case, chosen, claim, effort.boxes).result == "proved",
+    )  # fmt: skip
+    return (*tried, *more), () if cover is None else (cover,)
+
+
+def _covers(case: Case, claim: LyapunovClaim | CoverClaim, region: Box) -> bool:
     shape = ellipsoid(claim, len(case.model.states))
     return shape is not None and region.is_bounded and covers(shape, region)
 
