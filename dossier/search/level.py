@@ -52,7 +52,9 @@ def slab_levels(function: Mapping[Exponents, Fraction], goal: Goal) -> tuple[Fra
     for slab in goal.slabs:
         weights = fmpq_mat(size, 1, [fmpq(w.numerator, w.denominator) for w in slab.weights])
         spread = (weights.transpose() * inverse * weights)[0, 0]
-        if slab.reach is not None and spread > 0:
+        if slab.reach is not None and slab.reach <= 0:
+            levels.append(Fraction(0))
+        elif slab.reach is not None and spread > 0:
             levels.append(slab.reach**2 / Fraction(int(spread.p), int(spread.q)))
     return tuple(levels)
 

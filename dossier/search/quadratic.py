@@ -6,13 +6,12 @@ that a candidate lost to rounding is replaced by a more modest one instead of fa
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable
 from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Final, Literal
 
 import numpy as np
-from numpy.typing import NDArray
 
 from dossier.model.attempt import Attempt
 from dossier.model.case import Case, Scope
@@ -20,41 +19,27 @@ from dossier.model.claim import LyapunovClaim
 from dossier.model.decrease import decrease_form
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.loop import model_hash
-from dossier.model.polynomial import Exponents, NotRational, OffsetField
+from dossier.model.polynomial import NotRational, OffsetField
 from dossier.search.effort import Effort
-from dossier.search.ellipsoid import (
-    Candidate,
-    Objective,
-    Pool,
-    Wish,
-    from_lyapunov_equation,
-    from_program,
-    region_corners,
-)
+from dossier.search.ellipsoid import Candidate, from_lyapunov_equation
 from dossier.search.goal import Goal
-from dossier.search.level import sampled_level, slab_levels
 from dossier.search.multipliers import NoWitness, Target, seek_witnesses
 from dossier.search.offsets import ScaledLoop, denominator_sign, scaled_loop
-from dossier.search.rounding import power_of_two_near, rounded_function, scaled_matrix, short_below, value_at
+from dossier.search.programs import (
+    UNBOUNDED_LEVEL,
+    Function,
+    covering_candidates,
+    extent,
+    largest_useful,
+    normalised,
+    promising_level,
+)
+from dossier.search.rounding import power_of_two_near, scaled_matrix, short_below
 
-Array = NDArray[np.float64]
 Verify = Callable[[LyapunovClaim], bool]
-Function = Mapping[Exponents, Fraction]
 
-DECREASE_SHARES: Final = (0.02, 0.15, 0.4)
-"""Shares of the slowest decay V must keep: more is asked for when less could not be proved."""
-REGION_SHARES: Final = (0.85, 0.7, 0.5, 0.25, 0.1)
-"""Parts of a region asked for when the whole cannot be had."""
 LEVEL_SHARES: Final = tuple(Fraction(s) for s in ("1", "0.9998", "0.999", "0.99"))
 """Shares of the promising level tried before bisection: mostly the first or second is proved."""
-SAMPLED: Final = Fraction(99999, 100000)
-"""Share of the sampled level taken as promising: the sample may have missed the very worst ray."""
-KEEP_OFF: Final = Fraction(1, 10**9)
-"""Share by which a slab is kept away from, so that containment is strict."""
-FARTHEST: Final = 16
-"""A set is not grown beyond this multiple of the region: it would only worsen the numbers."""
-UNBOUNDED_LEVEL: Final = Fraction(10**6)
-"""Level at which a search for the largest level stops where nothing bounds it."""
 LEAST_SHARE: Final = 1e-5
 """Share of the promising level at which bisection begins where nothing is proved yet."""
 CLOSE_ENOUGH: Final = 1.01
@@ -103,15 +88,19 @@ def seek_quadratic(
         return (task,), ()
     attempts: list[Attempt] = []
     candidates: list[Candidate] = []
-    for attempt, claims in _covering(task, candidates):
+    for attempt, candidate in covering_candidates(task.loop, goal, effort, task.subject):
         attempts.append(attempt)
+        if candidate is None:
+            continue
+        candidates.append(candidate)
+        attempts[-1], claims = _prove_cover(task, candidate, attempt)
         if claims:
             return tuple(attempts), claims
     best: LyapunovClaim | None = None
     candidates += from_lyapunov_equation(task.loop)
     for candidate in candidates:
-        function = _normalised(task, candidate.matrix)
-        proved = largest_proved(task, function, _promising(task, function, candidate.matrix))
+        function = normalised(task.loop, goal, candidate.matrix)
+        proved = largest_proved(task, function, _promising(task, function))
         attempts.append(_told(task, candidate, proved))
         if proved.claim is not None and (best is None or _extent(task, proved.claim) > _extent(task, best)):
             best = proved.claim
@@ -129,7 +118,7 @@ def largest_level(
     matrix = scaled_matrix(function, task.loop.scales)
     if np.linalg.eigvalsh(matrix)[0] <= 0:
         return (Attempt(task.subject, "quadratic, given V", "no candidate", "V is not positive definite"),), None
-    bound = _bound(task, function, matrix, UNBOUNDED_LEVEL)
+    bound = promising_level(task.loop, goal, effort, function, UNBOUNDED_LEVEL)
     proved = largest_proved(task, function, bound, method="given")
     ending = "found" if proved.claim else "no candidate"
     attempt = Attempt(
@@ -155,47 +144,10 @@ def _task(
     return Task(loop, loop.field, equilibrium, over, goal, effort, suffix, verify)
 
 
-def _covering(task: Task, candidates: list[Candidate]) -> Iterator[tuple[Attempt, tuple[LyapunovClaim, ...]]]:
-    """Programs for the whole region, then for parts of it; every P found is left in `candidates`."""
-    if not task.goal.region.is_bounded:
-        return
-    if not task.loop.is_settling:
-        why = "a linear part at nominal or at a vertex is not asymptotically stable"
-        yield Attempt(task.subject, "quadratic, conic program", "no candidate", why), ()
-        return
-    found = False
-    for objective in _objectives(task):
-        pool = Pool(np.zeros((0, task.loop.size)), np.zeros((0, task.loop.size)))
-        for share in DECREASE_SHARES:
-            wish = Wish(objective, share)
-            attempt, candidate = from_program(task.loop, task.goal, wish, task.effort, task.subject, pool)
-            if candidate is None:
-                yield attempt, ()
-                break
-            found = True
-            candidates.append(candidate)
-            yield _prove_cover(task, candidate, attempt)
-    if found:
-        return
-    for scale in REGION_SHARES:
-        pool = Pool(np.zeros((0, task.loop.size)), np.zeros((0, task.loop.size)))
-        wish = Wish("widest margin", DECREASE_SHARES[0], scale)
-        attempt, candidate = from_program(task.loop, task.goal, wish, task.effort, task.subject, pool)
-        yield attempt, ()
-        if candidate is not None:
-            candidates.append(candidate)
-            return
-
-
-def _objectives(task: Task) -> tuple[Objective, ...]:
-    bounded = any(s.reach is not None for s in task.goal.slabs)
-    return ("tightest bounds", "smallest set", "widest margin") if bounded else ("smallest set", "widest margin")
-
-
 def _prove_cover(task: Task, candidate: Candidate, attempt: Attempt) -> tuple[Attempt, tuple[LyapunovClaim, ...]]:
     """The region first; where that is proved, as large a set as can be proved."""
-    function = _normalised(task, candidate.matrix)
-    bound = _promising(task, function, candidate.matrix)
+    function = normalised(task.loop, task.goal, candidate.matrix)
+    bound = _promising(task, function)
     if bound < 1:
         remark = f"V stops falling or meets a slab at {float(bound):.4g} of the level that covers the region"
         return replace(attempt, ending="no candidate", remark=remark), ()
@@ -224,39 +176,11 @@ def _told(task: Task, candidate: Candidate, proved: Proved) -> Attempt:
 
 
 def _extent(task: Task, claim: LyapunovClaim) -> float:
-    """Share of the region covered, or the volume (but for a constant) where the region is unbounded."""
-    if task.goal.region.is_bounded:
-        return float(claim.level) ** 0.5
-    matrix = scaled_matrix(claim.function, task.loop.scales) / float(claim.level)
-    return float(np.linalg.det(matrix) ** -0.5)
+    return extent(task.loop, task.goal, claim.function, claim.level)
 
 
-def _normalised(task: Task, matrix: Array) -> Function:
-    """V with short coefficients such that {V <= 1} holds the region, barely; largest entry 1 without a region."""
-    corners = region_corners(task.loop, task.goal)
-    worst = float(np.max((corners @ matrix * corners).sum(1), initial=0.0))
-    if worst <= 0:
-        return rounded_function(matrix / np.abs(matrix).max(), task.loop.scales)
-    function = rounded_function(matrix / worst, task.loop.scales)
-    need = max(value_at(function, corner) for corner in task.goal.region.corners())
-    if need <= 1:
-        return function
-    return rounded_function(matrix / worst / (2 * float(need) - 1), task.loop.scales)
-
-
-def _promising(task: Task, function: Function, matrix: Array) -> Fraction:
-    """`_bound` for a normalised V, not far beyond the region."""
-    most = Fraction(FARTHEST**2) if task.goal.region.is_bounded else UNBOUNDED_LEVEL
-    return _bound(task, function, scaled_matrix(function, task.loop.scales), most)
-
-
-def _bound(task: Task, function: Function, matrix: Array, most: Fraction) -> Fraction:
-    """The largest level worth trying: inside the slabs (exactly) and below the sampled first rise of V."""
-    most = min([most, *(level * (1 - KEEP_OFF) for level in slab_levels(function, task.goal))])
-    if most <= 0:
-        return Fraction(0)
-    sampled = Fraction(sampled_level(task.loop, matrix, float(most), task.effort))
-    return short_below(most if sampled >= Fraction(float(most)) else min(most, sampled * SAMPLED))
+def _promising(task: Task, function: Function) -> Fraction:
+    return promising_level(task.loop, task.goal, task.effort, function, largest_useful(task.goal))
 
 
 def largest_proved(
