@@ -303,36 +303,62 @@ def kinks(expression: Expression) -> tuple[Expression, ...]:
     return tuple(found)
 
 
-_BINDING = {"add": 1, "neg": 2, "mul": 2, "div": 2, "pow": 3}
+LONGEST_PLAIN: Final = 15
+"""Digits up to which a decimal is printed without a power of ten; what a reader still counts at a glance."""
+
+
+def _decimal_text(value: Fraction) -> str | None:
+    """`value` as an exact decimal, None where it is negative or has none."""
+    twos = (value.denominator & -value.denominator).bit_length() - 1
+    rest, fives = value.denominator >> twos, 0
+    while rest % 5 == 0:
+        rest, fives = rest // 5, fives + 1
+    if value < 0 or rest != 1:
+        return None
+    places = max(twos, fives)
+    digits = str(value.numerator * 10**places // value.denominator)
+    if places == 0:
+        bare = digits.rstrip("0")
+        return digits if len(digits) <= LONGEST_PLAIN else f"{bare}e{len(digits) - len(bare)}"
+    if max(places, len(digits)) > LONGEST_PLAIN:
+        return f"{digits}e-{places}"
+    digits = digits.rjust(places + 1, "0")
+    return f"{digits[:-places]}.{digits[-places:]}"
 
 
 def to_text(expression: Expression) -> str:
-    """`expression` in the formula grammar of project files; reading it gives the same tree."""
+    """`expression` in the formula grammar of project files.
+
+    Reading it gives the same tree; only negative numbers and fractions without an exact decimal, which
+    the grammar has no sign for, come back as a minus sign or a division.
+    """
 
     def visit(node: Expression, parts: tuple[tuple[str, int], ...]) -> tuple[str, int]:
-        def wrap(part: tuple[str, int], least: int) -> str:
-            return part[0] if part[1] >= least else f"({part[0]})"
+        def wrap(index: int, least: int) -> str:
+            text, binding = parts[index]
+            nested = index == 0 and node.op in ("add", "mul") and node.args[0].op == node.op
+            return f"({text})" if binding < least or nested else text
 
         if node.op == "number":
-            text = str(node.value)
-            return text, 4 if text.isdigit() else 0
+            text = _decimal_text(node.fraction)
+            return (text, 5) if text is not None else (f"({node.value})", 5)
         if node.op in ("symbol", "pi"):
-            return str(node.value or "pi"), 4
+            return str(node.value or "pi"), 5
         if node.op == "add":
-            text = wrap(parts[0], 1)
-            for part, argument in zip(parts[1:], node.args[1:], strict=True):
-                text += f" - {part[0][1:]}" if argument.op == "neg" else f" + {wrap(part, 2)}"
+            text = wrap(0, 2)
+            for i, argument in enumerate(node.args[1:], start=1):
+                text += f" - {parts[i][0][1:]}" if argument.op == "neg" else f" + {wrap(i, 3)}"
             return text, 1
         if node.op == "neg":
-            return f"-{wrap(parts[0], 3)}", 2
+            return f"-{wrap(0, 3)}", 2
         if node.op == "mul":
-            return "*".join(wrap(p, 3 if i else 2) for i, p in enumerate(parts)), 2
+            return "*".join(wrap(i, 4 if i else 3) for i in range(len(parts))), 3
         if node.op == "div":
-            return f"{wrap(parts[0], 2)}/{wrap(parts[1], 3)}", 2
+            return f"{wrap(0, 3)}/{wrap(1, 4)}", 3
         if node.op == "pow":
             exponent = str(node.value)
-            return f"{wrap(parts[0], 4)}^{exponent if exponent.isdigit() else f'({exponent})'}", 3
-        return f"{node.op}({', '.join(p[0] for p in parts)})", 4
+            return f"{wrap(0, 5)}^{exponent if exponent.isdigit() else f'({exponent})'}", 4
+        return f"{node.op}({', '.join(p[0] for p in parts)})", 5
 
     return fold(expression, visit)[0]
 

@@ -7,11 +7,16 @@ from collections.abc import Iterable
 from dataclasses import dataclass, field
 from typing import Final
 
+from dossier.project.located import Items, Table, Text
+
 LONGEST_EXCERPT: Final = 80
 """Characters of offending text shown; the place says where the rest is."""
 
 CLOSE_ENOUGH: Final = 0.6
 """Similarity (difflib ratio) from which a known name is offered; difflib's own default."""
+
+LONGEST_LIST: Final = 12
+"""Names told when one of several is expected."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -27,43 +32,58 @@ class Fault:
     hint: str = ""
 
 
-@dataclass(frozen=True, slots=True)
-class Place:
-    """A position in a file; line and column count from 1."""
+@dataclass(slots=True)
+class Ledger:
+    """Gathers the faults and warnings of one file while it is read."""
 
     file: str
-    line: int
-    column: int
-
-
-@dataclass(slots=True)
-class Collector:
-    """Gathers faults and warnings while a project is read."""
-
     faults: list[Fault] = field(default_factory=list)
     warnings: list[str] = field(default_factory=list)
 
-    def fault(self, place: Place, message: str, text: str = "", expected: str = "", hint: str = "") -> None:
+    def fault(
+        self,
+        where: Text | Table | Items,
+        message: str,
+        *,
+        text: str | None = None,
+        expected: str = "",
+        hint: str = "",
+        offset: int = 0,
+    ) -> None:
+        """Add a fault at character `offset` of `where`; nothing is added about what is already reported."""
+        if isinstance(where, Text):
+            if where.is_absent:
+                return
+            line, column = where.place(offset)
+            text = str(where) if text is None else text
+        else:
+            line, column = where.line, where.column
+        self.add(line, column, message, text or "", expected, hint)
+
+    def add(self, line: int, column: int, message: str, text: str, expected: str, hint: str) -> None:
         """Add a fault, once."""
         shown = " ".join(text.split())
         if len(shown) > LONGEST_EXCERPT:
             shown = shown[: LONGEST_EXCERPT - 1] + "…"
-        found = Fault(place.file, place.line, place.column, message, shown, expected, hint)
+        found = Fault(self.file, line, column, message, shown, expected, hint)
         if found not in self.faults:
             self.faults.append(found)
 
-    def warn(self, place: Place, message: str) -> None:
+    def warn(self, where: Text, message: str, offset: int = 0) -> None:
         """Add a warning, once."""
-        text = f"{place.file}:{place.line}:{place.column}: {message}"
+        if where.is_absent:
+            return
+        line, column = where.place(offset)
+        text = f"{self.file}:{line}:{column}: {message}"
         if text not in self.warnings:
             self.warnings.append(text)
 
     def in_order(self) -> tuple[Fault, ...]:
         """All faults by position."""
-        return tuple(sorted(self.faults, key=lambda f: (f.file, f.line, f.column, f.message)))
+        return tuple(sorted(self.faults, key=lambda f: (f.line, f.column, f.message)))
 
 
-def nearest(name: str, known: Iterable[str]) -> str:
+def suggestion(name: str, known: Iterable[str]) -> str:
     """A hint that names the known name most like `name`, or nothing."""
     candidates = sorted(known)
     for candidate in candidates:
@@ -71,3 +91,9 @@ def nearest(name: str, known: Iterable[str]) -> str:
             return f"did you mean {candidate}?"
     close = difflib.get_close_matches(name, candidates, n=1, cutoff=CLOSE_ENOUGH)
     return f"did you mean {close[0]}?" if close else ""
+
+
+def listed(names: Iterable[str]) -> str:
+    """Names as a short list."""
+    every = list(names)
+    return ", ".join(every[:LONGEST_LIST]) + (", …" if len(every) > LONGEST_LIST else "")

@@ -13,13 +13,13 @@ A minus sign covers the product it precedes: ``-a*b`` is -(a*b), ``-x^2`` is -(x
 from __future__ import annotations
 
 import re
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import Final, NamedTuple
 
 from dossier.model.expression import FUNCTIONS, PI, SATURATION, Expression
-from dossier.project.faults import nearest
+from dossier.project.faults import suggestion
 
 LONGEST_FORMULA: Final = 20_000
 """Characters of one formula; above every formula a person can review."""
@@ -27,10 +27,12 @@ MOST_TOKENS: Final = 6_000
 """Tokens of one formula, for the same reason."""
 DEEPEST_NESTING: Final = 40
 """Open brackets and signs; keeps the recursive descent far from the limit of the interpreter."""
+TALLEST_TREE: Final = 100
+"""Levels of a tree: a long chain of quotients is as high as it is long, and comparing trees recurses."""
 LARGEST_EXPONENT: Final = 100
 """Bound on numerator and denominator of a power; higher ones only exhaust memory."""
 LARGEST_DECIMAL_EXPONENT: Final = 400
-"""Bound on the power of ten and the count of digits of a decimal; covers every binary float and any physical constant."""
+"""Bound on the power of ten and the length of a decimal; covers every binary float and physical constant."""
 
 SATURATION_ARGUMENTS: Final = 3
 
@@ -139,6 +141,8 @@ class _Parser:
     def __init__(self, text: str, tokens: list[_Token]) -> None:
         self.text, self.tokens, self.position, self.depth = text, tokens, 0, 0
         self.spans: dict[Expression, tuple[int, int]] = {}
+        self.heights: dict[int, int] = {}
+        self.alive: list[Expression] = []
 
     @property
     def token(self) -> _Token:
@@ -153,6 +157,11 @@ class _Parser:
         return token
 
     def keep(self, node: Expression, start: int) -> Expression:
+        height = 1 + max((self.heights.get(id(a), 0) for a in node.args), default=0)
+        if height > TALLEST_TREE:
+            raise FormulaError(f"a formula has at most {TALLEST_TREE} levels", start, 1, hint="use signals for parts")
+        self.heights[id(node)] = height
+        self.alive.append(node)
         self.spans.setdefault(node, (start, self.tokens[self.position - 1].end))
         return node
 
@@ -190,7 +199,7 @@ class _Parser:
     def term(self) -> tuple[Expression, int]:
         return self.signed(self.term) if self.next_is("-") else self.product()
 
-    def signed(self, rule) -> tuple[Expression, int]:  # noqa: ANN001 - one of the methods below
+    def signed(self, rule: Callable[[], tuple[Expression, int]]) -> tuple[Expression, int]:
         sign = self.take()
         self.enter(sign)
         part, _ = rule()
@@ -285,7 +294,7 @@ class _Parser:
         if token.text not in FUNCTIONS:
             raise FormulaError(
                 f"{token.text} is not a function", token.start, len(token.text),
-                "one of " + ", ".join(FUNCTIONS), nearest(token.text, FUNCTIONS) or "write * between two factors",
+                "one of " + ", ".join(FUNCTIONS), suggestion(token.text, FUNCTIONS) or "write * between two factors",
             )  # fmt: skip
         opened = self.take()
         self.enter(opened)
@@ -320,8 +329,8 @@ def constant(tree: Expression) -> Fraction | None:
     if tree.op == "div":
         return numbers[0] / numbers[1]
     if tree.op == "pow":
-        whole = tree.fraction.denominator == 1
-        return numbers[0] ** int(tree.fraction) if whole else None
+        usable = tree.fraction.denominator == 1 and max(numbers[0].numerator.bit_length(), 1) <= LARGEST_EXPONENT
+        return numbers[0] ** int(tree.fraction) if usable else None
     total = numbers[0]
     for value in numbers[1:]:
         total = total + value if tree.op == "add" else total * value
