@@ -7,16 +7,18 @@ from fractions import Fraction
 
 from flint import arb, fmpq_mpoly
 
-from dossier.checks.boxes import constant_sign
+from dossier.checks.boxes import condition_holds, constant_sign
 from dossier.checks.exact import is_positive_definite, is_positive_definite_for_all, root_above
+from dossier.checks.lyapunov import parameter_box
 from dossier.model.affine import spread_box
 from dossier.model.ball import Ball, to_fmpq
 from dossier.model.case import NOMINAL, Case
 from dossier.model.claim import MatrixCell, MatrixClaim, SpectralRegion
 from dossier.model.decrease import bernstein_coefficients
 from dossier.model.equilibrium import Equilibrium
+from dossier.model.expression import SATURATION, Condition, Expression, conditions, nodes, sub
 from dossier.model.finding import Enclosure, Finding, Premise, Strength, weakest
-from dossier.model.loop import model_hash
+from dossier.model.loop import model_hash, vector_field
 from dossier.model.polynomial import collapse, terms
 from dossier.model.region import Box, Interval
 from dossier.model.spectral_form import LinearForms, linear_forms, spectral_form
@@ -66,24 +68,68 @@ def _premises(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Itera
         return
     whole = Box((), ()) if claim.over == NOMINAL else spread_box(case)
     cells = [c.parameters for c in claim.cells]
-    common = len(cells) == 1 or claim.over == NOMINAL or not any(p.varies for p in case.model.parameters)
     yield _shown(
-        "vertices", "the cells cover the parameter box", covers_exactly(cells, whole) and common, claim, "exact",
+        "vertices", "the cells cover the parameter box", covers_exactly(cells, whole), claim, "exact",
         f"{len(cells)} cell{'' if len(cells) == 1 else 's'}",
     )  # fmt: skip
-    forms = linear_forms(case, equilibrium, claim.over)
-    if isinstance(forms, str):
-        yield _shown("smooth", "the linear part is known exactly or enclosed", False, claim, "exact", forms)
-        return
-    strength: Strength = "enclosed" if forms.balls else "exact"
-    yield _shown("smooth", "the linear part is known exactly or enclosed", True, claim, strength)
+    if claim.over != NOMINAL and any(p.varies and not p.spread.is_point for p in case.model.parameters):
+        common = len({c.matrix for c in claim.cells}) == 1
+        yield _shown("common", "one P serves all cells, as parameters vary during a motion", common, claim, "exact")
     if claim.over != NOMINAL:
-        fixed = forms.constant_terms_vanish and all(b.is_exact for b in equilibrium.state)
-        yield _shown("fixed", "the equilibrium is the same for every parameter combination", fixed, claim, "exact")
-    held = sum(cell_holds(forms, cell, claim.region, claim.level) for cell in claim.cells)
+        yield _regular(case, equilibrium, claim)
+    yield from _spectrum(case, equilibrium, claim)
+
+
+def _regular(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Premise:
+    """Over the whole parameter box the equations are smooth at the equilibrium and keep their nominal branch."""
+    parameters = parameter_box(case, claim.over)
+    states = tuple(Interval(b.lower, b.upper) for b in equilibrium.state)
+    place = Box((*case.model.state_names, *parameters.names), (*states, *parameters.intervals))
+    equations = vector_field(case).equations
+    asked = list(dict.fromkeys(c for e in equations for c in conditions(e)))
+    kinks = list(dict.fromkeys(k for e in equations for k in kink_distances(e)))
+    nominal_inside = all(p.spread.contains(Interval(p.nominal.lower, p.nominal.upper)) for p in case.model.parameters)
+    proofs = [condition_holds(c, place) for c in (*asked, *(Condition("nonzero", k) for k in kinks))]
+    return _shown(
+        "smooth", "the right-hand side is continuously differentiable at the equilibrium for every combination, and no "
+        "saturation or absolute value changes its branch", nominal_inside and all(p.holds for p in proofs), claim,
+        "enclosed" if proofs else "exact", f"{len(asked)} conditions, {len(kinks)} kinks" if proofs else "",
+    )  # fmt: skip
+
+
+def kink_distances(expression: Expression) -> Iterator[Expression]:
+    """Expressions that keep their sign while every ``abs`` and ``sat`` keeps its branch."""
+    for node in nodes(expression):
+        if node.op == "abs":
+            yield node.args[0]
+        elif node.op == SATURATION:
+            argument, lower, upper = node.args
+            yield from (sub(argument, lower), sub(upper, argument), sub(upper, lower))
+
+
+def _spectrum(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Iterator[Premise]:
+    whole = linear_forms(case, equilibrium, claim.over)
+    held, strength, why = 0, "exact", ""
+    fixed = True
+    for cell in claim.cells:
+        forms = whole
+        if claim.over != NOMINAL and (isinstance(whole, str) or whole.local):
+            forms = linear_forms(case, equilibrium, claim.over, cell.parameters)
+        if isinstance(forms, str):
+            why = forms
+            break
+        strength = "enclosed" if forms.balls else strength
+        fixed = fixed and forms.constant_terms_vanish
+        if not cell_holds(forms, cell, claim.region, claim.level):
+            break
+        held += 1
+    if claim.over != NOMINAL:
+        yield _shown(
+            "fixed", "the equilibrium is the same for every parameter combination", held > 0 and fixed, claim, "exact"
+        )
     yield _shown(
         "spectrum", "P and the Lyapunov form of the region are positive definite on every cell",
-        held == len(claim.cells), claim, strength, f"{held} of {len(claim.cells)} cells",
+        held == len(claim.cells), claim, strength, why or f"{held} of {len(claim.cells)} cells",
     )  # fmt: skip
 
 
@@ -91,14 +137,14 @@ def cell_holds(forms: LinearForms, cell: MatrixCell, region: SpectralRegion, lev
     """P > 0, and every Bernstein coefficient of the region's form over the cell is positive definite."""
     if len(cell.matrix) != len(forms.states) or not is_positive_definite(cell.matrix):
         return False
-    if cell.parameters.names != forms.parameters:
+    if not forms.box.contains(cell.parameters):
         return False
     sign = _denominator_sign(forms, cell.parameters)
     if sign == 0:
         return False
     slope = tangent_above(level) if region == "sector" else level
     form = spectral_form(forms, cell.matrix, region, slope, sign)
-    variables = len(forms.states) * (2 if region == "sector" else 1)
+    variables = len(forms.states) * (1 if region == "half-plane" else 2)
     return all(
         _is_definite(coefficient, forms, variables)
         for _, coefficient in bernstein_coefficients(form, forms.ring, cell.parameters)
@@ -143,7 +189,20 @@ def _is_definite(form: fmpq_mpoly, forms: LinearForms, variables: int) -> bool:
         if len(places) != len(("row", "column")) or max(places) >= variables:
             return False
         _add(middle, radius, places, ball)
-    return is_positive_definite_for_all(middle, radius)
+    if any(middle[i][i] <= 0 for i in range(variables)):
+        return False
+    factors = [_root_magnitude(middle[i][i]) for i in range(variables)]
+    return is_positive_definite_for_all(_congruent(middle, factors), _congruent(radius, factors))
+
+
+def _root_magnitude(value: Fraction) -> Fraction:
+    """The inverse of a power of two within a factor of two or so of the square root of `value` > 0."""
+    return Fraction(2) ** ((value.denominator.bit_length() - value.numerator.bit_length()) // 2)
+
+
+def _congruent(matrix: list[list[Fraction]], factors: list[Fraction]) -> list[list[Fraction]]:
+    """D M D with D = diag(factors): definite exactly when M is; entries of order one make the radii comparable."""
+    return [[a * v * b for v, b in zip(row, factors, strict=True)] for row, a in zip(matrix, factors, strict=True)]
 
 
 def _add(middle: list[list[Fraction]], radius: list[list[Fraction]], places: list[int], ball: Ball) -> None:
@@ -160,7 +219,7 @@ def covers_exactly(cells: list[Box], whole: Box) -> bool:
     Recursive: where the cells that meet the box leave a face inside it, cut there; a box inside one cell
     is covered.  Ends because cuts only happen at the finitely many faces.
     """
-    if any(cell.names != whole.names for cell in cells):
+    if any(cell.names != whole.names or not cell.is_bounded for cell in cells):
         return False
     if any(cell.contains(whole) for cell in cells):
         return True

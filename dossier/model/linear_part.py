@@ -123,14 +123,39 @@ def linear_loop(case: Case, equilibrium: Equilibrium, loop: str) -> LinearLoop |
             return NoLinearPart(str(refusal))
 
 
+@dataclass(frozen=True)
+class ActiveBranch:
+    """The closed loop near its equilibrium, free of kinks; `remarks` name signals held at a limit."""
+
+    equations: tuple[Expression, ...]
+    remarks: tuple[str, ...]
+
+
+def active_branch(case: Case, equilibrium: Equilibrium) -> ActiveBranch | NoLinearPart:
+    """The equations of `case`, each kink replaced by the branch proved active at `equilibrium` and nominal parameters.
+
+    Every domain condition of the equations is proved there too.
+    """
+    with precision(WORKING_BITS):
+        try:
+            return _active_branch(case, _Point(case, equilibrium))
+        except _RefusalError as refusal:
+            return NoLinearPart(str(refusal))
+
+
+def _active_branch(case: Case, point: _Point) -> ActiveBranch:
+    remarks: dict[str, None] = {}
+    equations = tuple(_smooth(e, point, remarks) for e in vector_field(case).equations)
+    return ActiveBranch(equations, tuple(remarks))
+
+
 def closed_matrix(case: Case, equilibrium: Equilibrium) -> tuple[tuple[Number, ...], ...] | NoLinearPart:
     """Linear part A (n x n, SI) of the closed loop at `equilibrium` and the nominal parameters, proved as above."""
     with precision(WORKING_BITS):
         try:
             point = _Point(case, equilibrium)
-            field = vector_field(case)
-            equations = tuple(_smooth(e, point, {}) for e in field.equations)
-            return tuple(tuple(point.value(e) for e in row) for row in jacobian(equations, field.states))
+            equations = _active_branch(case, point).equations
+            return tuple(tuple(point.value(e) for e in row) for row in jacobian(equations, case.model.state_names))
         except _RefusalError as refusal:
             return NoLinearPart(str(refusal))
 

@@ -1,8 +1,9 @@
 """The quadratic form whose sign keeps all eigenvalues of the linear part in a region of the complex plane.
 
 With A = L/D (L linear in the offsets y, D free of them) and V = y'Py:
-half-plane Re < -a:  -(A'P + PA) - 2aP > 0        form  -D^-1 (grad V . L) - 2a V, times |D|
-disc |z| < r:        r^2 P - A'PA > 0              form  r^2 V - V(L/D), times D^2
+half-plane Re < -a:  -(A'P + PA) - 2aP > 0         form  -D^-1 (grad V . L) - 2a V, times |D|
+disc |z| < r:        r^2 P - A'PA > 0              by Schur's complement the form r (y'Py + w'Pw) + 2 w'PAy in
+                     twice as many variables, times |D|; it stays linear in A
 sector, damping > d: the half-plane inequality for A turned by the angle b with sin b = d in the complex
 plane; for v = y + jw the Hermitian form v*(e^(jb) A'P + e^(-jb) PA)v is, divided by cos b,
 y'Ry + w'Rw + 2 t (y'A'Pw - y'PAw) with R = A'P + PA and t = tan b (the sign of t follows that of w).
@@ -21,32 +22,66 @@ from dossier.model.ball import Ball, from_arb, to_fraction
 from dossier.model.case import NOMINAL, Case, Scope
 from dossier.model.claim import Matrix, SpectralRegion
 from dossier.model.equilibrium import Equilibrium
-from dossier.model.linear_part import NoLinearPart, closed_matrix
-from dossier.model.loop import vector_field
-from dossier.model.polynomial import NotRational, Ring, offset_field
+from dossier.model.expression import (
+    ARITHMETIC,
+    Expression,
+    fold,
+    names,
+    number,
+    rebuild,
+    simplify,
+    sub,
+    substitute,
+    symbol,
+)
+from dossier.model.linear_part import NoLinearPart, active_branch, closed_matrix
+from dossier.model.loop import jacobian
+from dossier.model.polynomial import NotRational, Quotient, Ring, quotient_of, split_constants
+from dossier.model.region import Box
+from dossier.model.taylor import expand_functions
 
 
 @dataclass(frozen=True)
 class LinearForms:
-    """Rows L_i and the denominator D over the ring: offsets, their partners (sector), parameters, constants."""
+    """Rows L_i and the denominator D over the ring: offsets, their partners, parameters, constants.
+
+    Valid for parameters in `box`.  `constant_terms_vanish`: the right-hand side is proved zero at the equilibrium for
+    every parameter value.  `local`: functions of parameters are enclosed over `box`, so a smaller box is sharper.
+    """
 
     ring: Ring
     states: tuple[str, ...]
-    parameters: tuple[str, ...]
+    box: Box
     balls: Mapping[str, Ball]
     rows: tuple[fmpq_mpoly, ...]
     denominator: fmpq_mpoly
     constant_terms_vanish: bool
+    local: bool
+
+    @property
+    def parameters(self) -> tuple[str, ...]:
+        """Names of the symbolic parameters."""
+        return self.box.names
 
 
 def partner(name: str) -> str:
-    """Name of the second real variable that goes with a state in the sector form."""
+    """Name of the second real variable w that goes with a state in the forms of disc and sector."""
     return f"partner of {name}"
 
 
-def linear_forms(case: Case, equilibrium: Equilibrium, over: Scope) -> LinearForms | str:
-    """The linear part with the spread parameters symbolic (tolerances) or as numbers and balls (nominal)."""
-    return _nominal(case, equilibrium) if over == NOMINAL else _over_tolerances(case, equilibrium)
+def linear_forms(case: Case, equilibrium: Equilibrium, over: Scope, cell: Box | None = None) -> LinearForms | str:
+    """The linear part with the spread parameters symbolic (tolerances) or as numbers and balls (nominal).
+
+    Over tolerances it is valid on `cell`, by default the whole box of spreads; a reason where there is none.
+    """
+    if over == NOMINAL:
+        return _nominal(case, equilibrium)
+    free = tuple(p for p in case.model.parameters if not p.spread.is_point)
+    box = cell or Box(tuple(p.name for p in free), tuple(p.spread for p in free))
+    try:
+        return _over_tolerances(case, equilibrium, box)
+    except ArithmeticError as error:
+        return str(error)
 
 
 def _nominal(case: Case, equilibrium: Equilibrium) -> LinearForms | str:
@@ -75,52 +110,76 @@ def _nominal(case: Case, equilibrium: Equilibrium) -> LinearForms | str:
             factor = ring.gen(entry) if isinstance(entry, str) else ring.constant(entry)
             total = total + factor * ring.gen(name)
         rows.append(total)
-    return LinearForms(ring, states, (), balls, tuple(rows), ring.constant(Fraction(1)), True)
+    return LinearForms(ring, states, Box((), ()), balls, tuple(rows), ring.constant(Fraction(1)), True, False)
 
 
-def _over_tolerances(case: Case, equilibrium: Equilibrium) -> LinearForms | str:
-    free = tuple(p.name for p in case.model.parameters if not p.spread.is_point)
-    loop = vector_field(case)
-    known = {p.name: p.nominal for p in case.model.parameters}
-    try:
-        field = offset_field(loop.equations, loop.states, equilibrium.state, known, free, sampled=loop.sampled)
-    except ArithmeticError as error:
-        return str(error)
-    if isinstance(field, NotRational):
-        return f"the linear part is no quotient of polynomials in the parameters: {field.reason}"
-    size = len(field.states)
-    names = field.ring.names
-    ring = Ring((*field.states, *(partner(s) for s in field.states), *names[size:]))
-
-    def carried(polynomial: fmpq_mpoly, degree: int) -> fmpq_mpoly:
-        """Terms of that degree in the offsets, over the larger ring."""
-        kept = {
-            (*e[:size], *([0] * size), *e[size:]): c
-            for e, c in polynomial.to_dict().items()
-            if sum(e[:size]) == degree
-        }
-        return ring.context.from_dict(kept)
-
-    rows = tuple(carried(p, 1) for p in field.numerators)
-    return LinearForms(
-        ring, field.states, free, field.balls, rows, carried(field.denominator, 0), field.constant_terms_vanish
+def _over_tolerances(case: Case, equilibrium: Equilibrium, box: Box) -> LinearForms | str:
+    """Raises ArithmeticError where a constant or a Taylor polynomial has no finite enclosure on `box`."""
+    branch = active_branch(case, equilibrium)
+    if isinstance(branch, NoLinearPart):
+        return branch.reason
+    if not all(b.is_exact for b in equilibrium.state):
+        return "the equilibrium is not known to be the same for every parameter combination"
+    states = case.model.state_names
+    fixed = {p.name: p.nominal for p in case.model.parameters if p.name not in box.names}
+    exact = {n: number(b.middle) for n, b in fixed.items() if b.is_exact}
+    exact |= {s: number(b.middle) for s, b in zip(states, equilibrium.state, strict=True)}
+    entries = tuple(simplify(substitute(e, exact)) for row in jacobian(branch.equations, states) for e in row)
+    split, balls = split_constants(entries, frozenset(box.names), fixed)
+    rational, remainders = expand_functions(split, box, balls)
+    balls = {**balls, **remainders}
+    ring = Ring((*states, *(partner(s) for s in states), *box.names, *balls))
+    one = ring.constant(Fraction(1))
+    values = {n: Quotient(ring.gen(n), one) for n in (*box.names, *balls)}
+    quotients = [quotient_of(e, ring, values) for e in rational]
+    regular = [q for q in quotients if isinstance(q, Quotient)]
+    if len(regular) < len(quotients):
+        return next(q.reason for q in quotients if isinstance(q, NotRational))
+    denominator = one
+    for q in regular:
+        denominator = denominator * (q.denominator / denominator.gcd(q.denominator))
+    cleared = iter(q.numerator * (denominator / q.denominator) for q in regular)
+    rows = tuple(sum((next(cleared) * ring.gen(s) for s in states), ring.constant(Fraction(0))) for _ in states)
+    vanish = all(
+        vanishes_identically(sub(e, symbol(s)) if case.model.time == "sampled" else e, exact)
+        for e, s in zip(branch.equations, states, strict=True)
     )
+    return LinearForms(ring, states, box, balls, rows, denominator, vanish, bool(remainders))
 
 
-def spectral_form(
-    forms: LinearForms, matrix: Matrix, region: SpectralRegion, level: Fraction, sign: int
-) -> fmpq_mpoly:
+def vanishes_identically(expression: Expression, values: Mapping[str, Expression]) -> bool:
+    """`expression`, with `values` put in, is zero wherever it is defined; False proves nothing.
+
+    Functions of parameters count as unknowns of their own, so an identity between them is not seen.
+    """
+    atoms: dict[Expression, str] = {}
+
+    def visit(node: Expression, args: tuple[Expression, ...]) -> Expression:
+        whole = node.op != "pow" or node.fraction.denominator == 1
+        if node.op in ("number", "symbol") or (node.op in ARITHMETIC and whole):
+            return rebuild(node, args)
+        return symbol(atoms.setdefault(rebuild(node, args), f"atom {len(atoms)}"))
+
+    plain = fold(simplify(substitute(expression, values)), visit)
+    ring = Ring(tuple(sorted(names(plain))))
+    one = ring.constant(Fraction(1))
+    quotient = quotient_of(plain, ring, {n: Quotient(ring.gen(n), one) for n in ring.names})
+    return isinstance(quotient, Quotient) and quotient.numerator.is_zero()
+
+
+def spectral_form(forms: LinearForms, matrix: Matrix, region: SpectralRegion, level: Fraction, sign: int) -> fmpq_mpoly:
     """The form that must be positive definite; `sign` is the proved sign of D.  For the sector, `level` is tan b."""
     ring, states = forms.ring, forms.states
     y = [ring.gen(s) for s in states]
+    w = [ring.gen(partner(s)) for s in states]
     if region == "disc":
-        form = _bilinear(ring, matrix, y, y) * ring.constant(level**2) * forms.denominator**2
-        return form - _bilinear(ring, matrix, list(forms.rows), list(forms.rows))
+        form = _bilinear(ring, matrix, y, y) + _bilinear(ring, matrix, w, w)
+        form = form * ring.constant(level * sign) * forms.denominator
+        return form + ring.constant(Fraction(2)) * _bilinear(ring, matrix, w, list(forms.rows))
     signed = ring.constant(Fraction(-2 * sign))
     form = signed * _bilinear(ring, matrix, y, list(forms.rows))
     if region == "half-plane":
         return form - ring.constant(2 * level * sign) * forms.denominator * _bilinear(ring, matrix, y, y)
-    w = [ring.gen(partner(s)) for s in states]
     turned = [_turned(forms, row) for row in forms.rows]
     form = form + signed * _bilinear(ring, matrix, w, turned)
     cross = _bilinear(ring, matrix, list(forms.rows), w) - _bilinear(ring, matrix, y, turned)

@@ -1,0 +1,128 @@
+"""The Lyapunov inequality of a region of the complex plane, in floating point: candidates for one common P.
+
+Regions and forms as in `dossier.model.spectral_form`.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from typing import Any, Final
+
+import cvxpy
+import numpy as np
+import scipy.linalg
+from numpy.typing import NDArray
+
+from dossier.model.claim import SpectralRegion
+from dossier.search.conic import solve
+
+Array = NDArray[np.float64]
+
+LEAST_MARGIN: Final = 1e-8
+"""Margin of the conic program, relative to the fastest rate, below which rounding could undo the candidate."""
+
+THINNEST: Final = 1e-4
+"""Least eigenvalue of P where the largest is 1, in coordinates in which the centre of the cell is nearly normal."""
+
+STEEPNESS: Final = (1.0, 1 / 4, 1 / 16, 1 / 64, 1 / 256)
+"""Ratios of the geometric scaling of Schur vectors: one is steep enough for any matrix, the mildest is wanted."""
+
+DOUBT: Final = 1e-3
+"""Share of the largest eigenvalue by which a computed one may be off before it counts as outside.
+
+Rounding moves an eigenvalue of multiplicity k by about eps^(1/k): a thousandth covers multiplicity five."""
+
+FIRST_CUTS: Final = 16
+MORE_CUTS: Final = 8
+"""Vertices in the first program, and most added per round: few of them bind."""
+
+WORST_CONDITION: Final = 1e7
+"""Eigenvectors worse conditioned than this count as defective; their P would be lost to rounding."""
+
+
+def decay_matrix(a: Any, p: Any, region: SpectralRegion, level: float, stack: Any = np.block) -> Any:
+    """The matrix that must be positive definite for `a` and `p`; arrays, or cvxpy expressions with their `stack`."""
+    if region == "disc":
+        return stack([[level * p, a.T @ p], [p @ a, level * p]])
+    real = -(a.T @ p + p @ a)
+    if region == "half-plane":
+        return real - 2 * level * p
+    cross = level / np.sqrt(1 - level**2) * (a.T @ p - p @ a)
+    return stack([[real, cross], [cross.T, real]])
+
+
+def is_inside(eigenvalues: NDArray[np.complex128], region: SpectralRegion, level: float) -> bool:
+    """Whether all lie in the region, as computed; strongly non-normal matrices are given the benefit of the doubt."""
+    sizes = np.abs(eigenvalues)
+    slack = DOUBT * float(np.max(sizes, initial=0.0))
+    if region == "disc":
+        return bool(np.all(sizes < level + slack))
+    if region == "half-plane":
+        return bool(np.all(eigenvalues.real < -level + slack))
+    return bool(np.all(eigenvalues.real < -level * sizes + slack))
+
+
+def normal_shapes(a: Array) -> Iterator[Array]:
+    """P0 whose metric makes `a` nearly normal, mildest first: then P0 itself often solves the inequality.
+
+    With eigenvectors V, Re((V V*)^-1); with Schur's form a = U T U*, Re(U diag(d^(-2k)) U*), whose off-diagonal
+    entries shrink with d, also for defective matrices (R. A. Horn and C. R. Johnson, Matrix Analysis, 2.4.7).
+    """
+    vectors = np.linalg.eig(a).eigenvectors
+    if np.linalg.cond(vectors) < WORST_CONDITION:
+        inverse = np.linalg.inv(vectors)
+        yield np.real(inverse.conj().T @ inverse)
+    unitary = scipy.linalg.schur(a, output="complex")[1]
+    powers = np.arange(len(a))
+    for ratio in STEEPNESS:
+        weights = ratio ** (-2.0 * powers)
+        yield np.real(unitary @ np.diag(weights / weights.max()) @ unitary.conj().T)
+
+
+def common_matrix(vertices: Array, centre: Array, region: SpectralRegion, level: float) -> Array | None:
+    """P with the widest margin for all matrices `vertices` (V x n x n), None where the program finds none.
+
+    Solved in coordinates in which `centre` is nearly normal, so that stiff and skew systems do no harm.
+    """
+    try:
+        shape = next(normal_shapes(centre))
+        factor = np.linalg.cholesky(shape / np.max(np.abs(shape))).T
+        inverse = np.linalg.inv(factor)
+    except np.linalg.LinAlgError:
+        factor = inverse = np.eye(len(centre))
+    turned = np.array([factor @ a @ inverse for a in vertices])
+    p = _by_cuts(turned, region, level)
+    if p is None:
+        return None
+    result = factor.T @ p @ factor
+    return (result + result.T) / 2 / np.max(np.abs(result))
+
+
+def _by_cuts(vertices: Array, region: SpectralRegion, level: float) -> Array | None:
+    """The widest margin over a growing choice of vertices: those that the last P served worst are added."""
+    chosen = list(range(min(FIRST_CUTS, len(vertices))))
+    while True:
+        p = _widest_margin(vertices[chosen], region, level)
+        if p is None or len(chosen) == len(vertices):
+            return p
+        least = np.array([np.linalg.eigvalsh(decay_matrix(a, p, region, level))[0] for a in vertices])
+        worst = [int(i) for i in np.argsort(least) if least[i] <= 0 and int(i) not in chosen][:MORE_CUTS]
+        if not worst:
+            return p
+        chosen += worst
+
+
+def _widest_margin(vertices: Array, region: SpectralRegion, level: float) -> Array | None:
+    size = vertices.shape[1]
+    p = cvxpy.Variable((size, size), symmetric=True)
+    margin = cvxpy.Variable()
+    rate = 1.0 if region == "disc" else float(np.max(np.abs(vertices))) or 1.0
+    pace = level / rate if region == "half-plane" else level
+    constraints = [p >> THINNEST * np.eye(size), p << np.eye(size), margin <= 1.0]
+    for a in vertices:
+        m = decay_matrix(a / rate, p, region, pace, cvxpy.bmat)
+        constraints.append((m + m.T) / 2 >> margin * np.eye(m.shape[0]))
+    solved = solve(cvxpy.Problem(cvxpy.Maximize(margin), constraints))
+    if not solved.has_values or p.value is None or margin.value is None or float(margin.value) < LEAST_MARGIN:
+        return None
+    return np.asarray(p.value)
