@@ -5,12 +5,14 @@ from __future__ import annotations
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
-from typing import Final, Literal
+from functools import reduce
+from typing import Final
 
 from flint import arb
 
-from dossier.model.ball import Ball, enclose, evaluate, precision
-from dossier.model.expression import Condition, Expression
+from dossier.model.ball import Ball, enclose, evaluate, precision, to_fmpq
+from dossier.model.expression import Condition, Expression, fold
+from dossier.model.polynomial import Exponents
 from dossier.model.region import Box, Interval
 
 CHECK_BITS: Final = 128
@@ -19,16 +21,21 @@ CHECK_BITS: Final = 128
 PIECES: Final = 4_096
 """Most pieces one condition may need; beyond that the condition stays undecided."""
 
-Sign = Literal[-1, 1]
+Bounds = tuple[Fraction, Fraction]
+"""Lower and upper end."""
 
 
 @dataclass(frozen=True, slots=True)
 class BoxProof:
-    """`holds` is proved, or not shown within the piece budget; `sign` where a sign was asked for."""
+    """`holds` is proved, or not shown within the piece budget; `sign` where a sign was asked for.
+
+    `exact`: shown by rational interval arithmetic without any rounding.
+    """
 
     holds: bool
     sign: int
     pieces: int
+    exact: bool = False
 
 
 def ball_of(interval: Interval) -> Ball:
@@ -85,9 +92,47 @@ def split_widest(piece: Box, whole: Box) -> tuple[Box, Box] | None:
     return first, second
 
 
+def polynomial_sign(coefficients: Mapping[Exponents, Fraction], box: Box) -> BoxProof:
+    """Prove that a polynomial in the box's variables, in their order, has one sign and no zero on `box`.
+
+    Exactly where rational intervals decide at once, else by balls with subdivision.
+    """
+    plain = _exact_polynomial_range(coefficients, box)
+    if plain[0] > 0 or plain[1] < 0:
+        return BoxProof(True, 1 if plain[0] > 0 else -1, 1, True)
+
+    def value(environment: Mapping[str, arb]) -> arb:
+        total = arb(0)
+        for exponents, coefficient in coefficients.items():
+            term = arb(to_fmpq(coefficient))
+            for name, count in zip(box.names, exponents, strict=True):
+                for _ in range(count):
+                    term = term * environment[name]
+            total = total + term
+        return total
+
+    return constant_sign(value, box)
+
+
+def _exact_polynomial_range(coefficients: Mapping[Exponents, Fraction], box: Box) -> Bounds:
+    lower = upper = Fraction(0)
+    for exponents, coefficient in coefficients.items():
+        term = (coefficient, coefficient)
+        for side, count in zip(box.intervals, exponents, strict=True):
+            if count:
+                term = _times(term, _power_of(side.bounds, count))
+        lower, upper = lower + term[0], upper + term[1]
+    return lower, upper
+
+
 def condition_holds(condition: Condition, box: Box, pieces: int = PIECES) -> BoxProof:
     """Prove a domain condition of an expression over `box` (all symbols of the condition named there)."""
     expression = condition.expression
+    plain = exact_range(expression, box)
+    if plain is not None and condition.relation != "inside_unit":
+        lower, upper = plain
+        if lower > 0 or (upper < 0 and condition.relation == "nonzero"):
+            return BoxProof(True, 1 if lower > 0 else -1, 1, True)
     if condition.relation == "inside_unit":
         below = constant_sign(lambda env: 1 - evaluate(expression, env), box, pieces)
         above = constant_sign(lambda env: 1 + evaluate(expression, env), box, pieces)
@@ -97,6 +142,57 @@ def condition_holds(condition: Condition, box: Box, pieces: int = PIECES) -> Box
     if condition.relation == "positive":
         return BoxProof(proof.holds and proof.sign == 1, proof.sign, proof.pieces)
     return proof
+
+
+def exact_range(expression: Expression, box: Box) -> tuple[Fraction, Fraction] | None:
+    """Bounds of a rational expression over a bounded box by exact interval arithmetic; None where it has none.
+
+    None too for elementary functions, fractional powers and quotients whose divisor may be zero.
+    """
+    sides = dict(box.items())
+
+    def visit(node: Expression, args: tuple[tuple[Fraction, Fraction] | None, ...]) -> tuple[Fraction, Fraction] | None:
+        known = [a for a in args if a is not None]
+        if len(known) < len(args):
+            return None
+        if node.op == "number":
+            return node.fraction, node.fraction
+        if node.op == "symbol":
+            side = sides[str(node.value)]
+            return side.bounds if side.is_bounded else None
+        return _EXACT[node.op](node, known) if node.op in _EXACT else None
+
+    return fold(expression, visit)
+
+
+def _times(a: Bounds, b: Bounds) -> Bounds:
+    ends = [x * y for x in a for y in b]
+    return min(ends), max(ends)
+
+
+def _whole_power(node: Expression, args: list[Bounds]) -> Bounds | None:
+    count = node.fraction
+    return None if count.denominator != 1 or count < 0 else _power_of(args[0], int(count))
+
+
+def _power_of(bounds: Bounds, k: int) -> Bounds:
+    lower, upper = bounds
+    ends = (lower**k, upper**k)
+    return (Fraction(0) if k % 2 == 0 and lower <= 0 <= upper else min(ends)), max(ends)
+
+
+def _quotient(_: Expression, args: list[Bounds]) -> Bounds | None:
+    lower, upper = args[1]
+    return _times(args[0], (1 / upper, 1 / lower)) if lower > 0 or upper < 0 else None
+
+
+_EXACT: Final[dict[str, Callable[[Expression, list[Bounds]], Bounds | None]]] = {
+    "add": lambda _, args: (sum((a[0] for a in args), Fraction(0)), sum((a[1] for a in args), Fraction(0))),
+    "neg": lambda _, args: (-args[0][1], -args[0][0]),
+    "mul": lambda _, args: reduce(_times, args),
+    "div": _quotient,
+    "pow": _whole_power,
+}
 
 
 def range_over(expression: Expression, box: Box, pieces: int = PIECES) -> Ball | None:

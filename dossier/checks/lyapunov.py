@@ -10,9 +10,7 @@ from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
 
-from flint import arb
-
-from dossier.checks.boxes import condition_holds, constant_sign
+from dossier.checks.boxes import BoxProof, condition_holds, polynomial_sign
 from dossier.checks.exact import (
     expand,
     inverse,
@@ -26,7 +24,7 @@ from dossier.checks.exact import (
     vanishes_only_at_zero,
 )
 from dossier.model.affine import spread_box
-from dossier.model.ball import Ball, to_fmpq
+from dossier.model.ball import Ball
 from dossier.model.case import NOMINAL, Case, Scope
 from dossier.model.claim import DecreaseWitness, LyapunovClaim, Matrix
 from dossier.model.decrease import bernstein_coefficients, bernstein_count, decrease_form
@@ -149,7 +147,7 @@ def _place(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, shape: El
     proofs = [condition_holds(c, whole) for c in asked]
     yield _premise(
         "c", "the right-hand side is smooth near the set: denominators, roots and logarithms stay regular",
-        all(p.holds for p in proofs), claim.identifier, "enclosed" if asked else "exact",
+        all(p.holds for p in proofs), claim.identifier, "exact" if all(p.exact for p in proofs) else "enclosed",
         f"{len(asked)} conditions on the bounding box, {sum(p.pieces for p in proofs)} pieces"
         if asked else "no denominator, root or logarithm",
     )  # fmt: skip
@@ -186,10 +184,11 @@ def _decrease(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, shape:
             field.constant_terms_vanish and all(b.is_exact for b in equilibrium.state), ident,
         )  # fmt: skip
     form = decrease_form(field, claim.function)
-    sign = _denominator_sign(field, claim, shape, form.denominator_power)
+    proof = _denominator_sign(field, claim, shape)
+    sign = proof.sign**form.denominator_power if proof.holds else 0
     yield _premise(
         "polynomial", "the cleared denominator keeps one sign on the set", sign != 0, ident,
-        "exact" if field.denominator.is_constant() else "enclosed",
+        "exact" if proof.exact else "enclosed",
     )  # fmt: skip
     if sign == 0:
         return
@@ -213,26 +212,13 @@ def _decrease(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, shape:
     )  # fmt: skip
 
 
-def _denominator_sign(field: OffsetField, claim: LyapunovClaim, shape: Ellipsoid, power: int) -> int:
-    """The proved sign of D**power on the set times the parameter box, or 0."""
+def _denominator_sign(field: OffsetField, claim: LyapunovClaim, shape: Ellipsoid) -> BoxProof:
+    """The sign of D on the set times the parameter box."""
     ring = field.ring
     sides = [Interval(-w, w) for w in shape.half_widths]
     sides += list(claim.parameters.intervals)
     sides += [Interval(field.balls[n].lower, field.balls[n].upper) for n in ring.names[len(sides) :]]
-    coefficients = terms(field.denominator)
-
-    def value(environment: Mapping[str, arb]) -> arb:
-        total = arb(0)
-        for exponents, coefficient in coefficients.items():
-            term = arb(to_fmpq(coefficient))
-            for name, count in zip(ring.names, exponents, strict=True):
-                for _ in range(count):
-                    term = term * environment[name]
-            total = total + term
-        return total
-
-    proof = constant_sign(value, Box(ring.names, tuple(sides)))
-    return 0 if not proof.holds else proof.sign**power
+    return polynomial_sign(terms(field.denominator), Box(ring.names, tuple(sides)))
 
 
 def _decreases(target: Mapping[Exponents, Ball], witness: DecreaseWitness, claim: LyapunovClaim, size: int) -> bool:

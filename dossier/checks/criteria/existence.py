@@ -115,11 +115,12 @@ def _value(knowledge: Knowledge, criterion: Criterion) -> Finding:
         return open_question(knowledge, criterion, "the quantity has no finite enclosure at the equilibrium")
     value = Enclosure(ball.lower, ball.upper, "SI")
     inside = within(value, criterion)
-    statement = f"{criterion.of_written} at the equilibrium stays within its bounds"
+    statement = f"the quantity {criterion.of_written} at the equilibrium stays within its bounds"
     facts = {"value": value}
     if inside is False:
+        what = f"the quantity {criterion.of_written} at the equilibrium violates its bound"
         return refute(
-            knowledge, criterion, "E", f"{criterion.of_written} at the equilibrium violates its bound", "enclosed",
+            knowledge, criterion, "E", what, "enclosed",
             (chosen.identifier,), {"combination": "nominal"}, facts,
         )  # fmt: skip
     premise = Premise(

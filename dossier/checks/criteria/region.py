@@ -71,7 +71,8 @@ def _by_set(
         theorem, statement = "T9", "no motion from the region leaves the limits"
         premises.extend(_limit_premises(knowledge, criterion, equilibrium, claim, shape))
     elif criterion.claim == "excursion":
-        theorem, statement = "T9", f"{criterion.of_written} stays within its bounds along every motion from the region"
+        theorem = "T9"
+        statement = f"the quantity {criterion.of_written} stays within its bounds along every motion from the region"
         premise, more = _excursion(knowledge, criterion, equilibrium, claim, shape)
         premises.append(premise)
         facts.update(more)
@@ -96,8 +97,8 @@ def _excursion(
     detail = f"between {float(bound.over_set.lower):.6g} and {float(bound.over_set.upper):.6g} (SI)"
     strength: Strength = "exact" if bound.exact and bound.at_equilibrium.is_exact else "enclosed"
     premise = Premise(
-        "bound", f"{criterion.of_written} stays within the stated bounds on the set", "proved" if kept else "undecided",
-        strength, detail, claim.identifier,
+        "bound", f"the quantity {criterion.of_written} stays within the stated bounds on the set",
+        "proved" if kept else "undecided", strength, detail, claim.identifier,
     )  # fmt: skip
     return premise, facts
 
@@ -227,8 +228,8 @@ def _starts_beyond(
             continue
         if (lower is not None and value.upper < lower) or (upper is not None and value.lower > upper):
             start = ", ".join(f"{n} = {float(c):.6g}" for n, c in zip(region.names, corner, strict=True))
+            what = f"the quantity {criterion.of_written} violates its bound at a start of the region"
             yield refute(
-                knowledge, criterion, "T9", f"{criterion.of_written} violates its bound at a start of the region",
-                "enclosed", (), {"combination": "nominal", "start": start, "time": "0 s"},
+                knowledge, criterion, "T9", what, "enclosed", (), {"combination": "nominal", "start": start, "time": "0 s"},
             )  # fmt: skip
             return
