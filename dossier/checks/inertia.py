@@ -112,18 +112,51 @@ def _negative_roots(factor: fmpz_poly) -> int:
 
 
 def _by_routh(polynomial: Sequence[Number]) -> Inertia | None:
-    """Sign changes down the first column, where every entry is proved non-zero."""
-    column = first_column(polynomial)
-    signs = [sign_of(c) for c in column]
-    if len(column) != len(polynomial) or any(s in (None, 0) for s in signs):
+    """The inertia shared by all polynomials within the balls, where Routh's array in ball arithmetic decides it.
+
+    Exact trailing zeros are roots at 0, exact leading zeros roots at infinity.  A whole row of exact zeros
+    (coefficients that vanish by structure) means that the row above is an even or odd polynomial q that divides p;
+    the row becomes the derivative of q, and every sign change from there on is one root to the right with a
+    mirror image to the left (Routh's second singular case; Gantmacher, vol. 2, chapter XV).  Only one such row is
+    taken, and no undecided sign.
+    """
+    coefficients = list(polynomial)
+    boundary = 0
+    for end in (0, -1):
+        while len(coefficients) > 1 and coefficients[end] == 0:
+            coefficients.pop(end)
+            boundary += 1
+    column = _first_column(coefficients)
+    if column is None:
         return None
-    outside = _changes([s for s in signs if s is not None])
-    return Inertia(len(polynomial) - 1 - outside, 0, outside)
+    signs, symmetric_from = column
+    degree = len(coefficients) - 1
+    outside = _changes(signs)
+    if symmetric_from is not None:
+        axis = degree - symmetric_from - 2 * _changes(signs[symmetric_from:])
+        return Inertia(degree - outside - axis, boundary + axis, outside)
+    return Inertia(degree - outside, boundary, outside)
 
 
-def first_column(polynomial: Sequence[Number]) -> list[Number]:
-    """First column of Routh's array, cut short at the first entry not proved non-zero."""
-    return [row[0] for row in routh_rows(polynomial)]
+def _first_column(coefficients: Sequence[Number]) -> tuple[list[int], int | None] | None:
+    """Signs of the first column, and the row of the even or odd divisor where a row vanished exactly."""
+    upper, lower = list(coefficients[0::2]), list(coefficients[1::2])
+    degree = len(coefficients) - 1
+    signs, singular = [sign_of(upper[0])], None
+    for power in range(degree, 0, -1):
+        if all(v == 0 for v in lower):
+            if singular is not None:
+                return None
+            singular = degree - power
+            lower = [v * (power - 2 * i) for i, v in enumerate(upper) if power - 2 * i > 0]
+        signs.append(sign_of(lower[0]))
+        if not all(signs):
+            return None
+        ratio = upper[0] / lower[0]
+        padded = [*lower, *[fmpq(0)] * (len(upper) - len(lower))]
+        upper, lower = lower, [upper[i + 1] - ratio * padded[i + 1] for i in range(len(upper) - 1)]
+    decided = [s for s in signs if s]
+    return (decided, singular) if len(decided) == degree + 1 else None
 
 
 def routh_rows(polynomial: Sequence[Number]) -> list[list[Number]]:
@@ -147,7 +180,7 @@ def integer_array(polynomial: Sequence[Number]) -> tuple[tuple[int, ...], ...]:
     if not all(isinstance(c, fmpq) for c in polynomial):
         return ()
     rows = routh_rows(polynomial)
-    if len(rows) != len(polynomial):
+    if len(rows) != len(polynomial) or any(row[0] == 0 for row in rows):
         return ()
     result = []
     for row in rows:

@@ -75,9 +75,17 @@ def _premises(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Itera
     if claim.over != NOMINAL and any(p.varies and not p.spread.is_point for p in case.model.parameters):
         common = len({c.matrix for c in claim.cells}) == 1
         yield _shown("common", "one P serves all cells, as parameters vary during a motion", common, claim, "exact")
-    if claim.over != NOMINAL:
-        yield _regular(case, equilibrium, claim)
+    yield _smooth(case, equilibrium, claim) if claim.over == NOMINAL else _regular(case, equilibrium, claim)
     yield from _spectrum(case, equilibrium, claim)
+
+
+def _smooth(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Premise:
+    forms = linear_forms(case, equilibrium, NOMINAL)
+    return _shown(
+        "smooth", "the right-hand side is continuously differentiable at the equilibrium",
+        not isinstance(forms, str), claim, "enclosed" if isinstance(forms, str) or forms.balls else "exact",
+        forms if isinstance(forms, str) else "",
+    )  # fmt: skip
 
 
 def _regular(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Premise:
@@ -129,7 +137,7 @@ def _spectrum(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Itera
         )
     yield _shown(
         "spectrum", "P and the Lyapunov form of the region are positive definite on every cell",
-        held == len(claim.cells), claim, strength, why or f"{held} of {len(claim.cells)} cells",
+        held == len(claim.cells) > 0, claim, strength, why or f"{held} of {len(claim.cells)} cells",
     )  # fmt: skip
 
 

@@ -51,15 +51,15 @@ def decay_matrix(a: Any, p: Any, region: SpectralRegion, level: float, stack: An
     return stack([[real, cross], [cross.T, real]])
 
 
-def is_inside(eigenvalues: NDArray[np.complex128], region: SpectralRegion, level: float) -> bool:
+def is_inside(eigenvalues: NDArray[Any], region: SpectralRegion, level: float) -> bool:
     """Whether all lie in the region, as computed; strongly non-normal matrices are given the benefit of the doubt."""
     sizes = np.abs(eigenvalues)
     slack = DOUBT * float(np.max(sizes, initial=0.0))
     if region == "disc":
         return bool(np.all(sizes < level + slack))
     if region == "half-plane":
-        return bool(np.all(eigenvalues.real < -level + slack))
-    return bool(np.all(eigenvalues.real < -level * sizes + slack))
+        return bool(np.all(np.real(eigenvalues) < -level + slack))
+    return bool(np.all(np.real(eigenvalues) < -level * sizes + slack))
 
 
 def normal_shapes(a: Array) -> Iterator[Array]:
