@@ -118,7 +118,7 @@ def figure(printed: str) -> str:
     mantissa = mantissa.replace(numbers.GROUP, r"\,").replace(numbers.ELLIPSIS, r"\ldots")
     if not cross:
         return mantissa
-    exponent = power.rstrip(numbers.ELLIPSIS).translate(str.maketrans("⁰¹²³⁴⁵⁶⁷⁸⁹⁻", "0123456789-"))
+    exponent = power.translate(str.maketrans("⁰¹²³⁴⁵⁶⁷⁸⁹⁻", "0123456789-"))
     return rf"{mantissa} \times 10^{{{exponent}}}"
 
 

@@ -89,10 +89,16 @@ def estimate(value: float, digits: int = 3) -> str:
 def first_digits(lower: Fraction, upper: Fraction, digits: int = FIRST_DIGITS) -> str | None:
     """The leading digits that every number in [lower, upper] shares, with an ellipsis; None where they differ."""
     if lower == upper:
-        return exactly(lower) or _print(_round(lower, digits, ROUND_DOWN)) + ELLIPSIS
+        return exactly(lower) or _continued(_round(lower, digits, ROUND_DOWN))
     low, high = (_round(v, digits, ROUND_DOWN) for v in (lower, upper))
     same = low == high and low != 0 and (lower > 0) == (upper > 0)
-    return _print(low) + ELLIPSIS if same else None
+    return _continued(low) if same else None
+
+
+def _continued(value: Decimal) -> str:
+    """`value` with the sign that more digits follow, before any power of ten."""
+    mantissa, cross, power = _print(value).partition(f"{GROUP}{TIMES}")
+    return f"{mantissa}{ELLIPSIS}{cross}{power}"
 
 
 def enclosure(lower: Fraction | None, upper: Fraction | None, digits: int = DIGITS) -> str:

@@ -70,7 +70,12 @@ def say_number(value: Fraction) -> str:
 def say_figure(text: str) -> str:
     """A printed number with its signs in words."""
     mantissa, cross, power = text.partition(f"{numbers.GROUP}{numbers.TIMES}{numbers.GROUP}10")
-    mantissa = mantissa.replace(numbers.GROUP, "").replace(numbers.MINUS, "minus ").replace(numbers.ABOUT, "about ")
+    mantissa = (
+        mantissa.replace(numbers.GROUP, "")
+        .replace(numbers.ELLIPSIS, " and more digits")
+        .replace(numbers.MINUS, "minus ")
+        .replace(numbers.ABOUT, "about ")
+    )
     if not cross:
         return mantissa
     exponent = power.translate(str.maketrans("⁰¹²³⁴⁵⁶⁷⁸⁹", "0123456789")).replace("⁻", "minus ")

@@ -9,6 +9,7 @@ from typing import Final
 from dossier.model.case import TOLERANCES, Criterion, Scope
 from dossier.model.finding import Result, Strength
 from dossier.model.outcome import Verdict
+from dossier.report import numbers
 
 
 @dataclass(frozen=True, slots=True)
@@ -167,7 +168,7 @@ def property_of(criterion: Criterion, bounds: str, to: str, within: str) -> str:
 
 def counted(count: int, noun: str, nouns: str = "") -> str:
     """A count with its noun, in the plural where it is not one."""
-    return f"{count} {noun if count == 1 else nouns or noun + 's'}"
+    return f"{numbers.count(count)} {noun if count == 1 else nouns or noun + 's'}"
 
 
 def scope_words(over: Scope) -> str:

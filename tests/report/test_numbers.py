@@ -107,6 +107,11 @@ def test_a_missing_end_is_no_infinity() -> None:
     assert "no finite lower end" in numbers.enclosure(None, Fraction(1))
 
 
+def test_more_digits_are_announced_before_the_power_of_ten() -> None:
+    third = Fraction(1, 3 * 10**9)
+    assert numbers.first_digits(third, third) == "3.33333…\u202f×\u202f10⁻¹⁰"
+
+
 def test_a_narrow_enclosure_shows_its_common_digits() -> None:
     assert numbers.enclosure(Fraction("54.10812"), Fraction("54.10819")) == "54.1081…"
     assert numbers.enclosure(Fraction("1.7"), Fraction("1.9")) == "1.7 … 1.9"

@@ -8,7 +8,7 @@ from dossier.model.claim import Claim, CoverClaim, LyapunovClaim, RootsClaim, St
 from dossier.model.dossier import PointEvidence
 from dossier.model.finding import Finding
 from dossier.model.theorem import THEOREMS
-from dossier.report import equations, formulas, numbers, wording
+from dossier.report import equations, formulas, numbers, speech, wording
 from dossier.report.blocks import Block, Column, Equations, Facts, Paragraph, Row, Subheading, Table
 from dossier.report.content.context import Context
 from dossier.report.rich import Formula, Mono, Rich, rich
@@ -62,17 +62,18 @@ def _earlier_twin(point: PointEvidence, claim: SetClaim) -> SetClaim | None:
 
 
 def _set_facts(context: Context, point: PointEvidence, claim: SetClaim, degree: int) -> Iterator[tuple[str, Rich]]:
-    level = numbers.exactly(claim.level) or f"{claim.level}"
-    yield "Set", rich(
-        Formula(rf"\{{V \le {formulas.number_piece(claim.level)[0]}\}}", f"all states with V at most {level}"),
-        " around ", context.link(claim.equilibrium),
-    )  # fmt: skip
+    level = numbers.enclosure(claim.level, claim.level)
+    words = f"all states with V at most {speech.say_figure(level)}"
+    yield (
+        "Set",
+        rich(Formula(rf"\{{V \le {formulas.figure(level)}\}}", words), " around ", context.link(claim.equilibrium)),
+    )
     if isinstance(claim, LyapunovClaim):
         count = len(claim.decrease)
         identities = f"; {wording.counted(count, 'decrease identity', 'decrease identities')}" if count else ""
         yield "Form", (f"degree {degree}, {METHODS[claim.method]}{identities}",)
     else:
-        yield "Form", (f"degree {degree}; the decrease was closed by {numbers.count(claim.boxes)} boxes",)
+        yield "Form", (f"degree {degree}; the decrease was closed by {wording.counted(claim.boxes, 'box', 'boxes')}",)
     yield "Parameters", (wording.scope_words(claim.over),)
     theorem = THEOREMS.get(claim.theorem)
     if theorem is not None:
@@ -100,6 +101,7 @@ def premise_table(context: Context, finding: Finding) -> Table:
         )
         for p in finding.premises
     )
+    theorem = f", theorem {finding.theorem}" if finding.theorem else ""
     columns = (
         Column("Premise", "short", 11),
         Column("Statement", share=49),
@@ -107,7 +109,7 @@ def premise_table(context: Context, finding: Finding) -> Table:
         Column("Checked", "short", 10),
         Column("Evidence", "id", 17),
     )
-    return Table(f"Premises of theorem {finding.theorem or 'none'} for {finding.subject}", columns, rows)
+    return Table(f"Premises for {finding.subject}, {finding.check} check{theorem}", columns, rows)
 
 
 def _other_table(context: Context, point: PointEvidence) -> Table:
@@ -133,7 +135,8 @@ def _content(claim: Claim) -> str:
     """What a certificate without a function V holds; nothing for the kinds shown elsewhere."""
     if isinstance(claim, RootsClaim):
         boxes = wording.counted(len(claim.solutions), "uniqueness box", "uniqueness boxes")
-        return f"{boxes}, {len(claim.undecided)} undecided, {numbers.count(claim.boxes)} boxes looked at"
+        looked = wording.counted(claim.boxes, "box looked at", "boxes looked at")
+        return f"{boxes}, {len(claim.undecided)} undecided, {looked}"
     if isinstance(claim, SturmClaim):
         real = wording.counted(len(claim.gain_crossings), "crossing")
         peaks = wording.counted(len(claim.peak_candidates), "candidate")

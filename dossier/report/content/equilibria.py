@@ -32,9 +32,8 @@ def _completeness(context: Context, point: PointEvidence) -> Rich:
     roots = next((c for c in point.claims if isinstance(c, RootsClaim)), None)
     if roots is None:
         return ("No search box was closed, so nothing is said about further equilibria.",)
-    proof = rich(
-        " (", context.link(roots.identifier), f", {numbers.count(roots.boxes)} boxes, theorem {roots.theorem})."
-    )
+    boxes = wording.counted(roots.boxes, "box", "boxes")
+    proof = rich(" (", context.link(roots.identifier), f", {boxes}, theorem {roots.theorem}).")
     count = len(point.equilibria)
     if point.equilibria_complete and count == 0:
         return rich("Proved: the model has no equilibrium in the search box at the nominal parameter values", proof)
