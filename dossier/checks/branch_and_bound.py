@@ -25,6 +25,8 @@ SHRUNK: Final = 0.7
 """A box whose widest side fell below this share goes round again unsplit."""
 RESOLUTION: Final = 2.0**-30
 """Scaled width (1e-9 of the search box) below which a box is not split: double zeros are known to 1e-8 in doubles."""
+FEW_DOUBLES: Final = 2.0**-49
+"""16 units in the last place: a narrower side cannot be cut usefully (a small search box far from zero)."""
 FAILED_ATTEMPTS: Final = 16
 """Newton attempts from undecided boxes that may fail before no more are made: at a continuum all would."""
 NEAR: Final = 2.0**-10
@@ -126,7 +128,7 @@ def cover(system: System, known: Iterable[UniqueBox], budget: int) -> Cover:
             result.zeros.append(UniqueBox(_column(boxes, int(k)), _column(step.boxes, int(k))))
         left = ~step.excluded & ~step.unique
         before, after = _chosen(boxes, left), _chosen(step.boxes, left)
-        small = np.asarray(((after.hi - after.lo) < RESOLUTION).all(axis=0))
+        small = _is_tiny(after)
         if small.any():
             tiny = _chosen(after, small)
             failures += _attempt(system, tiny, result.zeros, FAILED_ATTEMPTS - failures)
@@ -136,6 +138,12 @@ def cover(system: System, known: Iterable[UniqueBox], budget: int) -> Cover:
     undecided = [_chosen(s, ~inside_known(s, result.zeros)) for s in stuck]
     result.undecided = clusters(_joined(undecided)) if undecided else []
     return result
+
+
+def _is_tiny(boxes: Span) -> Mask:
+    """Not to be split: below the resolution, or a few neighbouring doubles wide."""
+    least = RESOLUTION + FEW_DOUBLES * np.maximum(np.abs(boxes.lo), np.abs(boxes.hi))
+    return np.asarray(((boxes.hi - boxes.lo) < least).all(axis=0))
 
 
 def _attempt(system: System, boxes: Span, zeros: list[UniqueBox], allowed: int) -> int:

@@ -10,6 +10,7 @@ from typing import Any, Final
 from flint import arb
 
 from dossier.checks.elementary import constant
+from dossier.checks.intervals import Span, span_of
 from dossier.model.ball import Ball, enclose, precision
 from dossier.model.ball import evaluate as evaluate_ball
 from dossier.model.expression import Expression, fold, number, symbol
@@ -39,8 +40,7 @@ class Builder:
         self._constants: dict[int, arb] = {}
         self._derivatives: dict[tuple[int, int], int | None] = {}
         self._rows = {name: self._emit("variable", (), i) for i, name in enumerate(variables)}
-        with precision(CONSTANT_BITS):
-            self._symbols = {name: enclose(ball) for name, ball in constants.items()}
+        self._balls = dict(constants)
 
     def _emit(self, op: str, args: tuple[int, ...], data: Any = None) -> int:
         key = (op, args, data)
@@ -49,18 +49,28 @@ class Builder:
             self._known[key] = len(self.nodes) - 1
         return self._known[key]
 
-    def _constant(self, value: arb) -> int:
-        parts = tuple(str(v) for v in (*value.mid().man_exp(), *value.rad().man_exp())) if value.is_finite() else ()
-        key = ("constant", parts)
+    def _constant(self, key: tuple[Any, ...], value: arb, span: Span | None = None) -> int:
+        """A node without variables.
+
+        `key` names its derivation, never its value: two parameters with the same enclosure are different
+        numbers, and sharing them would turn their product into a square.
+        """
+        key = ("constant", *key)
         if key not in self._known:
-            self.nodes.append(Node("constant", (), constant(value)))
+            self.nodes.append(Node("constant", (), constant(value) if span is None else span))
             self._known[key] = len(self.nodes) - 1
             self._constants[len(self.nodes) - 1] = value
         return self._known[key]
 
     def _number(self, value: Fraction | int) -> int:
         with precision(CONSTANT_BITS):
-            return self._constant(evaluate_ball(number(value), {}))
+            return self._constant(("number", Fraction(value)), evaluate_ball(number(value), {}))
+
+    def _symbol(self, name: str) -> int:
+        if name in self._rows:
+            return self._rows[name]
+        ball = self._balls[name]
+        return self._constant(("symbol", name), enclose(ball), span_of(ball))
 
     def expression(self, expression: Expression) -> int:
         """Node of `expression`.  Raises KeyError for an unknown name."""
@@ -69,10 +79,11 @@ class Builder:
 
     def _visit(self, node: Expression, args: tuple[int, ...]) -> int:
         if node.op == "symbol":
-            name = str(node.value)
-            return self._rows[name] if name in self._rows else self._constant(self._symbols[name])
-        if node.op in ("number", "pi"):
-            return self._constant(evaluate_ball(node, {}))
+            return self._symbol(str(node.value))
+        if node.op == "number":
+            return self._number(node.fraction)
+        if node.op == "pi":
+            return self._constant(("pi",), evaluate_ball(node, {}))
         if all(a in self._constants for a in args):
             return self._folded(node, args)
         if node.op == "add":
@@ -88,7 +99,8 @@ class Builder:
         if node.op == "pow":
             return self._power(args[0], node.fraction)
         if node.op == "div" and args[1] in self._constants and not self._constants[args[1]].contains(0):
-            return self._product_as_written(args[0], self._constant(1 / self._constants[args[1]]))
+            inverse = self._constant(("inverse", args[1]), 1 / self._constants[args[1]])
+            return self._product_as_written(args[0], inverse)
         if node.op in ("neg", "div", *_UNARY):
             return self._emit(node.op, args)
         raise ValueError(f"unknown operation {node.op!r}")
@@ -98,7 +110,7 @@ class Builder:
         names = [f"argument {i}" for i in range(len(args))]
         shallow = Expression(node.op, tuple(symbol(n) for n in names), node.value)
         values = {n: self._constants[a] for n, a in zip(names, args, strict=True)}
-        return self._constant(evaluate_ball(shallow, values))
+        return self._constant((node.op, args, node.value), evaluate_ball(shallow, values))
 
     def _sum(self, node: Expression, args: tuple[int, ...]) -> int:
         """Terms in order, all constants first and together."""
@@ -108,11 +120,11 @@ class Builder:
             value = self._constants[fixed[0]]
             for other in fixed[1:]:
                 value = value + self._constants[other]
-            total = None if value.is_zero() else self._constant(value)
+            total = None if value.is_zero() else self._constant(("sum", *fixed), value)
         for term in args:
             if term not in self._constants:
                 total = term if total is None else self._add(total, term)
-        return self._constant(arb(0)) if total is None else total
+        return self._number(0) if total is None else total
 
     def _add(self, a: int, b: int) -> int:
         if self.nodes[b].op == "neg":
@@ -121,9 +133,10 @@ class Builder:
 
     def _product_as_written(self, a: int, b: int) -> int:
         """Product of two values; a zero factor does not remove the other one, which must stay defined."""
+        a, b = min(a, b), max(a, b)
         known = [self._constants.get(i) for i in (a, b)]
         if known[0] is not None and known[1] is not None:
-            return self._constant(known[0] * known[1])
+            return self._constant(("mul", a, b), known[0] * known[1])
         if a == b:
             return self._emit("square", (a,))
         for value, other in zip(known, (b, a), strict=True):
@@ -131,7 +144,7 @@ class Builder:
                 return other
             if value is not None and value.is_exact() and value == -1:
                 return self._emit("neg", (other,))
-        return self._emit("mul", (min(a, b), max(a, b)))
+        return self._emit("mul", (a, b))
 
     def _power(self, base: int, exponent: Fraction) -> int:
         if exponent.denominator != 1:
@@ -254,7 +267,7 @@ class Builder:
         if a is None or b is None:
             return b if a is None else a
         if a in self._constants and b in self._constants:
-            return self._constant(self._constants[a] + self._constants[b])
+            return self._constant(("add", a, b), self._constants[a] + self._constants[b])
         return self._add(a, b)
 
     def _minus(self, a: int | None, b: int | None) -> int | None:
@@ -263,5 +276,5 @@ class Builder:
         if a is None:
             return self._times(self._number(-1), b)
         if a in self._constants and b in self._constants:
-            return self._constant(self._constants[a] - self._constants[b])
+            return self._constant(("sub", a, b), self._constants[a] - self._constants[b])
         return self._emit("sub", (a, b))
