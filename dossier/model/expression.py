@@ -270,9 +270,14 @@ def conditions(expression: Expression) -> tuple[Condition, ...]:
     found: dict[Condition, None] = {}
     for node in nodes(expression):
         for condition in _conditions_of(node):
-            if condition.expression.op != "number":
+            if condition.expression.op != "number" or not _is_met(condition.relation, condition.expression.fraction):
                 found.setdefault(condition)
     return tuple(found)
+
+
+def _is_met(relation: str, value: Fraction) -> bool:
+    """A number satisfies the relation; a condition on one that does not is kept, so that it is never proved."""
+    return {"nonzero": value != 0, "positive": value > 0, "inside_unit": abs(value) < 1}[relation]
 
 
 def _conditions_of(node: Expression) -> Iterator[Condition]:

@@ -6,7 +6,7 @@ spreads decides; what it leaves open is a warning here and a premise that must b
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from typing import Final, Literal
 
 from flint import arb
@@ -14,7 +14,9 @@ from flint import arb
 from dossier.model.ball import WORKING_BITS, Ball, enclose, evaluate, precision
 from dossier.model.expression import Condition, Expression, conditions, substitute
 from dossier.model.region import Box, Interval
+from dossier.project.dimensions import Checked
 from dossier.project.faults import Ledger
+from dossier.project.located import Text
 from dossier.project.models import ModelReading
 
 Answer = Literal["holds", "fails", "open"]
@@ -26,12 +28,21 @@ _WORDS: Final = {
 }
 
 
-def check_conditions(reading: ModelReading, box: Box, spreads: Mapping[str, Interval], ledger: Ledger) -> None:
-    """Report what is proved to be undefined everywhere in `box`; warn of what is not excluded."""
+def check_conditions(
+    reading: ModelReading,
+    asked: Sequence[tuple[Text, Checked]],
+    box: Box,
+    spreads: Mapping[str, Interval],
+    ledger: Ledger,
+) -> None:
+    """Report what is proved to be undefined everywhere in `box`; warn of what is not excluded.
+
+    `asked` are the formulas of criteria, looked at like those of the model.
+    """
     environment = {n: _ball(i) for n, i in box.items()} | {n: _ball(i) for n, i in spreads.items()}
     environment |= {str(n): arb(0) for n in reading.entry.disturbances or {}}
     formulas = _inlined(reading)
-    for text, checked in reading.formulas:
+    for text, checked in (*reading.formulas, *asked):
         for condition in conditions(checked.expression):
             answer = _answer(condition, substitute(condition.expression, formulas), environment)
             offset, source = checked.formula.excerpt(condition.expression)

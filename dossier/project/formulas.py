@@ -20,6 +20,7 @@ from typing import Final, NamedTuple
 
 from dossier.model.expression import FUNCTIONS, PI, SATURATION, Expression
 from dossier.project.faults import suggestion
+from dossier.project.numbers import NumberError, exact
 
 LONGEST_FORMULA: Final = 20_000
 """Characters of one formula; above every formula a person can review."""
@@ -31,8 +32,6 @@ TALLEST_TREE: Final = 100
 """Levels of a tree: a long chain of quotients is as high as it is long, and comparing trees recurses."""
 LARGEST_EXPONENT: Final = 100
 """Bound on numerator and denominator of a power; higher ones only exhaust memory."""
-LARGEST_DECIMAL_EXPONENT: Final = 400
-"""Bound on the power of ten and the length of a decimal; covers every binary float and physical constant."""
 
 SATURATION_ARGUMENTS: Final = 3
 
@@ -40,7 +39,6 @@ _TOKEN: Final = re.compile(
     r"\s*(?:(?P<number>(?:\d+(?:\.\d*)?|\.\d+)(?:[eE][+-]?\d+)?)|(?P<name>[A-Za-z_]\w*)|(?P<sign>[-+*/^(),])|(?P<end>$))",
     re.ASCII,
 )
-_DECIMAL: Final = re.compile(r"[+-]?(?:\d+(?:\.\d*)?|\.\d+)(?:[eE]([+-]?\d+))?", re.ASCII)
 _STRANGE: Final = {
     "−": "write the minus sign as -",
     "–": "write the minus sign as -",
@@ -87,19 +85,6 @@ class _Token(NamedTuple):
     @property
     def end(self) -> int:
         return self.start + len(self.text)
-
-
-def decimal(text: str) -> Fraction:
-    """The exact value of a decimal, with or without a power of ten.
-
-    Raises ValueError for any other text, and for absurdly long or large numbers.
-    """
-    match = _DECIMAL.fullmatch(text)
-    if match is None:
-        raise ValueError("not a decimal number")
-    if len(text) > LARGEST_DECIMAL_EXPONENT or abs(int(match[1] or 0)) > LARGEST_DECIMAL_EXPONENT:
-        raise ValueError(f"numbers have at most {LARGEST_DECIMAL_EXPONENT} digits and decimal exponent")
-    return Fraction(text)
 
 
 def parse(text: str) -> Formula:
@@ -257,9 +242,9 @@ class _Parser:
         token = self.take()
         if token.kind == "number":
             try:
-                return self.keep(Expression("number", (), decimal(token.text)), token.start), token.start
-            except ValueError as error:
-                raise FormulaError(str(error), token.start, len(token.text), "a decimal number") from None
+                return self.keep(Expression("number", (), exact(token.text)), token.start), token.start
+            except NumberError as error:
+                raise FormulaError(str(error), token.start, len(token.text), "a number", error.hint) from None
         if token.kind == "name":
             return self.named(token), token.start
         if token.text == "(":

@@ -17,7 +17,7 @@ from dossier.project.located import Table, Text
 from dossier.project.names import check_names
 from dossier.project.parameters import ParameterReading, read_parameter
 from dossier.project.quantities import Meaning, read_interval, read_sides, read_unit, scale_of
-from dossier.project.schema import ModelEntry, SignalEntry
+from dossier.project.schema import ROLES, ModelEntry, Role, SignalEntry
 from dossier.project.units import TIME, Dimension, Unit
 
 MOST_STATES: Final = 32
@@ -64,6 +64,13 @@ def _dimension(unit: Unit | None) -> Dimension | None:
     return None if unit is None else unit.dimension
 
 
+def _role(text: Text | None) -> Role:
+    for role in ROLES:
+        if text == role:
+            return role
+    return "internal"
+
+
 def _is_absent(table: Mapping[Text, object]) -> bool:
     return isinstance(table, Table) and table.is_absent
 
@@ -105,7 +112,8 @@ class _ModelReader:
             (t, c) for t, c in zip(texts, [*signals.values(), *equations.values()], strict=True) if c is not None
         )
         model = None
-        if len(self.ledger.faults) == before and not self._anything_absent(signals, equations, parameters):
+        whole = not (self.scope.open or self._anything_absent(signals, equations, parameters, self.units))
+        if whole and len(self.ledger.faults) == before:
             model = self._model(parameters, signals, limits, disturbances, equations, interval, domain)
         return ModelReading(self.name, self.entry, self.units, self.scope, parameters, formulas, domain, model)
 
@@ -259,7 +267,7 @@ class _ModelReader:
             ),
             tuple(p.parameter for p in parameters.values() if p is not None),
             tuple(
-                Signal(str(n), str(e.unit), self._scale(n), c.expression, str(e.role or "internal"),
+                Signal(str(n), str(e.unit), self._scale(n), c.expression, _role(e.role),
                        limits[n], str(e.meaning or ""))
                 for n, e in self.signals.items() if (c := signals[n]) is not None
             ),

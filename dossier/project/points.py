@@ -10,7 +10,9 @@ from dossier.model.case import Case, Quantity, value_of
 from dossier.model.region import UNBOUNDED, Box, Interval
 from dossier.project.conditions import check_conditions
 from dossier.project.criteria import PointContext, read_criteria, read_region
+from dossier.project.dimensions import Checked
 from dossier.project.faults import Ledger, listed, suggestion
+from dossier.project.formulas import parse
 from dossier.project.located import Table, Text
 from dossier.project.models import ModelReading
 from dossier.project.names import check_names
@@ -45,6 +47,7 @@ class _PointReader:
         before = len(self.ledger.faults)
         entry, states = self.entry, self.reading.state_names
         parameters = self._parameters()
+        self._check_sample_interval(parameters)
         at, near = self._point(entry.equilibrium.at, "at"), self._point(entry.equilibrium.near, "near")
         none_expected = entry.equilibrium.none_expected == "true"
         self._check_equilibrium()
@@ -63,7 +66,7 @@ class _PointReader:
         box = Box(
             states, tuple(d if d.is_bounded else s for d, s in zip(domain.intervals, search.intervals, strict=True))
         )
-        check_conditions(self.reading, box, {n: p.spread for n, p in known.items()}, self.ledger)
+        check_conditions(self.reading, self._asked(), box, {n: p.spread for n, p in known.items()}, self.ledger)
         if len(self.ledger.faults) > before:
             return None
         return Case(
@@ -155,6 +158,24 @@ class _PointReader:
                 if state not in sides:
                     self.ledger.warn(next(iter(sides)), f"the region of {self.name} leaves {state} free")
         return found
+
+    def _asked(self) -> list[tuple[Text, Checked]]:
+        """Formulas of criteria (they were read without fault)."""
+        entries = self.entry.criteria.values()
+        return [(e.of, Checked(parse(str(e.of)), None)) for e in entries if e.of is not None]
+
+    def _check_sample_interval(self, parameters: Mapping[str, ParameterReading | None]) -> None:
+        text = self.reading.entry.sample_interval
+        reading = None if text is None else parameters.get(str(text))
+        if text is None or reading is None:
+            return
+        lower = reading.parameter.spread.lower
+        if lower is None or lower <= 0:
+            value = (self.entry.set or {}).get(text, self.reading.entry.sample_interval)
+            where = value if isinstance(value, Text) else text
+            self.ledger.fault(
+                where, "the sampling interval is not positive", expected="a positive time over its whole spread"
+            )
 
     def _search(self, centre: tuple[Fraction, ...] | None, region: Box, limits: Box) -> Box:
         """Stated sides; else the domain where bounded, else the hull of region and limits about the point."""

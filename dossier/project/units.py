@@ -230,7 +230,7 @@ def _exact_power(value: Fraction, exponent: Fraction, offset: int) -> Fraction:
 @cache
 def _registry() -> pint.UnitRegistry:
     """The registry of the known units, with exact fractions for numbers."""
-    registry = pint.UnitRegistry(None, non_int_type=Fraction)
+    registry = pint.UnitRegistry(None, non_int_type=Fraction)  # type: ignore[arg-type] - pint's stub knows floats only
     registry.load_definitions([f"pi_unit = {_PI}", *(f"{name} = {row.relation}" for name, row in _ROWS.items())])
     return registry
 
@@ -245,10 +245,10 @@ def _known(symbol: str) -> _Part:
     pi_power = Fraction(0)
     for name, exponent in dimensions.items():
         if name == _PI:
-            pi_power = Fraction(exponent)
+            pi_power = Fraction(str(exponent))
         else:
-            exponents[_BASE_OF[name.strip("[]")]] = Fraction(exponent)
-    if isinstance(factor, float):
+            exponents[_BASE_OF[name.strip("[]")]] = Fraction(str(exponent))
+    if not isinstance(factor, int | Fraction):
         raise ArithmeticError(f"the factor of {symbol} is not exact")
     return _Part(Fraction(factor), pi_power, Dimension(tuple(exponents)), ())
 
@@ -330,7 +330,8 @@ class _UnitParser:
         part = self._product()
         if self.position < len(self.tokens):
             token, offset = self.tokens[self.position]
-            raise UnitError(f"{token} is not expected here", offset, "write products with *, as kg*m^2/s^2")
+            hint = "write powers with ^, as m^2" if token.isdigit() else "write products with *, as kg*m^2/s^2"
+            raise UnitError(f"{token} is not expected here", offset, hint)
         return part
 
     def _peek(self) -> str:

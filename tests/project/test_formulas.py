@@ -62,7 +62,7 @@ def test_a_formula_is_kept_as_written(text: str, expected: Expression) -> None:
         ("x − y", 2, "−", "write the minus sign as -"),
         ("sin", 0, "sin", ""),
         ("sat(x)", 0, "sat", ""),
-        ("1e9999", 0, "1e9999", ""),
+        ("1e9999", 0, "1e9999", "between 1e-100 and 1e100, or 0"),
         ("x^1000", 2, "1000", ""),
         ("x;y", 1, ";", ""),
     ],
