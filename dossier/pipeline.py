@@ -50,6 +50,9 @@ from dossier.search.quadratic import seek_quadratic
 SEED: Final = 20_140
 """Seed of the simulated campaigns, so that a build can be repeated."""
 
+TIGHT: Final = "-tight"
+"""Suffix of a set that lies in another with the same V: its motions are among that one's."""
+
 Progress = Callable[[str, str], None]
 """Called with the operating point and the stage that begins."""
 
@@ -174,7 +177,8 @@ def simulate(case: Case, assessment: Assessment, effort: Effort) -> tuple[Campai
     chosen = assessment.knowledge.chosen
     if chosen is None:
         return None, ()
-    return run_campaign(case, chosen, assessment.proved_sets, effort.motions, SEED)
+    largest = [c for c in assessment.proved_sets if not c.identifier.endswith(TIGHT)]
+    return run_campaign(case, chosen, largest, effort.motions, SEED)
 
 
 @dataclass(frozen=True, slots=True)

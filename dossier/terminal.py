@@ -39,12 +39,22 @@ STYLES: Final[dict[Verdict, str]] = {
 }
 
 
+PLAIN_WIDTH: Final = 200
+"""Columns where the output is no terminal: wide enough that no row of the table is folded."""
+
+
+def _console(is_terminal: bool, *, stderr: bool) -> Console:
+    return Console(
+        stderr=stderr, highlight=False, soft_wrap=not is_terminal, width=None if is_terminal else PLAIN_WIDTH
+    )
+
+
 class Terminal:
     """Writes results to standard output, faults and progress to standard error."""
 
     def __init__(self) -> None:
-        self.out = Console(highlight=False, soft_wrap=not sys.stdout.isatty())
-        self.err = Console(stderr=True, highlight=False, soft_wrap=not sys.stderr.isatty())
+        self.out = _console(sys.stdout.isatty(), stderr=False)
+        self.err = _console(sys.stderr.isatty(), stderr=True)
 
     @contextmanager
     def progress(self) -> Iterator[Callable[[str, str], None]]:

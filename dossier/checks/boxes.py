@@ -11,7 +11,7 @@ from typing import Final
 from flint import arb
 
 from dossier.model.ball import Ball, enclose, evaluate, precision, to_fmpq
-from dossier.model.expression import Condition, Expression, fold
+from dossier.model.expression import Condition, Expression, fold, names
 from dossier.model.polynomial import Exponents
 from dossier.model.region import Box, Interval
 
@@ -198,8 +198,11 @@ _EXACT: Final[dict[str, Callable[[Expression, list[Bounds]], Bounds | None]]] = 
 def range_over(expression: Expression, box: Box, pieces: int = PIECES) -> Ball | None:
     """An enclosure of the range of `expression` over `box`, sharpened by cutting it into `pieces` or fewer.
 
-    None where some part has no finite enclosure.
+    Only sides whose name occurs are cut.  None where some part has no finite enclosure.
     """
+    used = names(expression)
+    kept = [(n, side) for n, side in box.items() if n in used]
+    box = Box(tuple(n for n, _ in kept), tuple(side for _, side in kept))
     with precision(CHECK_BITS):
         parts = [box]
         while len(parts) * 2 <= pieces:

@@ -16,8 +16,8 @@ from dossier.checks.starts import Starts
 from dossier.checks.watch import FAR, NEIGHBOURHOOD, Recorder, Watched
 from dossier.model.case import Case
 
-RELATIVE: Final = 1e-8
-ABSOLUTE: Final = 1e-10
+RELATIVE: Final = 1e-7
+ABSOLUTE: Final = 1e-9
 """Error per step of a campaign: relative, and as a share of the region; far below what a drawing or limit shows."""
 
 TIGHT: Final = 1e-3

@@ -18,6 +18,8 @@ from dossier.model.text import claim_to_data, encode
 
 RECORD_FORMAT: Final = 1
 CERTIFICATE_FORMAT: Final = 1
+SAMPLED_CHECK: Final = "simulation"
+"""Findings of this check prove nothing and are no part of a certificate."""
 DIGITS: Final = 17
 """Significant digits of decimals in the record; a radius says what is lost."""
 
@@ -148,13 +150,13 @@ def certificate_file(claim: Claim, findings: Sequence[Finding]) -> dict[str, Any
                 ],
             }
             for f in findings
-            if f.subject == claim.identifier
+            if f.subject == claim.identifier and f.check != SAMPLED_CHECK
         ],
     }
 
 
 def _certificate_data(claim: Claim, point: PointEvidence) -> dict[str, Any]:
-    findings = [f for f in point.findings if f.subject == claim.identifier]
+    findings = [f for f in point.findings if f.subject == claim.identifier and f.check != SAMPLED_CHECK]
     data: dict[str, Any] = {
         "id": claim.identifier,
         "kind": kind_of(claim),
