@@ -13,7 +13,8 @@ from dossier.checks import intervals as iv
 from dossier.checks.intervals import Span
 from dossier.model.ball import Ball, precision
 
-MODERATE = st.floats(-1e150, 1e150, allow_subnormal=True) | st.floats(-4, 4) | st.sampled_from([0.0, -0.0, 5e-324, 1e-310])
+SPECIAL = st.sampled_from([0.0, -0.0, 5e-324, -5e-324, 1e-310, 2.0**-1022])
+MODERATE = st.floats(-1e150, 1e150) | st.floats(-4, 4) | SPECIAL
 
 
 @st.composite
@@ -58,8 +59,12 @@ def test_squares_powers_and_sizes_hold_the_exact_result(first, exponent):
     a, x = first
     with np.errstate(over="ignore", invalid="ignore"):
         assert holds(iv.square(a), x * x)
-        assert holds(iv.power(a, exponent), x**exponent)
         assert holds(iv.absolute(a), abs(x))
+        power = iv.power(a, exponent)
+    # Beyond the range of doubles, 1e43^7 at the least, an end is unknown and nothing may rest on it.
+    assert (
+        holds(power, x**exponent) if iv.is_sound(power)[0] else max(map(abs, (*a.lo.tolist(), *a.hi.tolist()))) > 1e43
+    )
 
 
 @given(spans())
