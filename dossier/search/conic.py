@@ -25,10 +25,14 @@ OPTIONS: Final[dict[str, dict[str, Any]]] = {
 
 @dataclass(frozen=True, slots=True)
 class Solved:
-    """`status`: ``optimal`` and ``inaccurate`` leave values in the variables, the others do not."""
+    """`status`: ``optimal`` and ``inaccurate`` leave values in the variables, the others do not.
+
+    `iterations` counts the work, 0 where the solver did not say.
+    """
 
     status: Literal["optimal", "inaccurate", "infeasible", "failed"]
     remark: str
+    iterations: int = 0
 
     @property
     def has_values(self) -> bool:
@@ -70,10 +74,12 @@ def solve(problem: cvxpy.Problem, solver: str = "CLARABEL") -> Solved:
 
 def _ending(problem: cvxpy.Problem) -> Solved:
     status = str(problem.status)
+    stats = problem.solver_stats
+    iterations = 0 if stats is None else int(stats.num_iters or 0)
     if status == cvxpy.OPTIMAL:
-        return Solved("optimal", "optimal")
+        return Solved("optimal", "optimal", iterations)
     if status == cvxpy.OPTIMAL_INACCURATE:
-        return Solved("inaccurate", "optimal within reduced accuracy")
+        return Solved("inaccurate", "optimal within reduced accuracy", iterations)
     if status in (cvxpy.INFEASIBLE, cvxpy.INFEASIBLE_INACCURATE):
-        return Solved("infeasible", "reported infeasible")
-    return Solved("failed", status.replace("_", " "))
+        return Solved("infeasible", "reported infeasible", iterations)
+    return Solved("failed", status.replace("_", " "), iterations)

@@ -69,7 +69,7 @@ class Wish:
     @property
     def method(self) -> str:
         """Words for the record."""
-        part = "" if self.scale == 1 else f", {self.scale:g} of the region"
+        part = "" if self.scale == 1 else f", {self.scale:.3g} of the region"
         return f"quadratic, conic program, {self.objective}, {self.share:g} of the slowest decay{part}"
 
 

@@ -18,11 +18,13 @@ from dossier.search.offsets import ScaledLoop
 
 Array = NDArray[np.float64]
 
-RAYS: Final = 3_000
-"""Rays of the first sample; the refinement around the worst ones finds the rest."""
+RAYS_PER_PAIR: Final = 200
+"""Rays of the first sample, times the squared number of states; the refinement around the worst finds the rest."""
+MOST_RAYS: Final = 4_000
+"""Rays of the first sample at most."""
 NEAREST_RADIUS: Final = 1e-3
 """Share of the largest radius at which a ray begins."""
-RADII: Final = 64
+RADII: Final = 48
 """Geometric steps along a ray; each crossing is then bisected."""
 BISECTIONS: Final = 40
 """Halvings of a step: to rounding of double precision."""
@@ -68,7 +70,8 @@ def sampled_level(loop: ScaledLoop, matrix: Array, most: float, effort: Effort) 
     generator = np.random.default_rng(loop.size)
     root = np.linalg.cholesky(np.linalg.inv(matrix)).T
     least = float(np.sqrt(most))
-    directions, parameters = sample_set(loop, matrix, min(RAYS, effort.samples), generator)
+    count = min(RAYS_PER_PAIR * loop.size**2, MOST_RAYS, effort.samples)
+    directions, parameters = sample_set(loop, matrix, count, generator)
     radii = first_rises(loop, matrix, _on_sphere(directions, matrix), parameters, least)
     if np.isinf(radii).all():
         directions, parameters = worst_points(loop, matrix / most, 0.0, effort.samples, generator)

@@ -18,6 +18,7 @@ import cvxpy
 import numpy as np
 from flint import fmpq_mpoly
 from numpy.typing import NDArray
+from scipy.sparse import csr_array
 
 from dossier.model.ball import Ball
 from dossier.model.claim import DecreaseWitness, Gram
@@ -50,6 +51,11 @@ class NoWitness:
 
     reason: str
     index: Exponents = ()
+
+    @property
+    def text(self) -> str:
+        """The reason with its place in the parameter box."""
+        return f"{self.reason} at Bernstein index {self.index}" if any(self.index) else self.reason
 
 
 @dataclass(frozen=True)
@@ -137,12 +143,14 @@ class _GramVariable:
         """Coefficients of z'Qz times the fixed polynomial `factor`, in the order of `rows`."""
         total: cvxpy.Expression = cvxpy.Constant(np.zeros(len(rows)))
         for group, part in zip(self.groups, self.parts, strict=True):
-            table = np.zeros((len(rows), len(group) ** 2))
-            for i, a in enumerate(group):
-                for j, b in enumerate(group):
-                    for exponents, coefficient in factor.items():
-                        row = rows[_product(self.basis[a], self.basis[b], exponents)]
-                        table[row, i * len(group) + j] += coefficient
+            entries = [
+                (coefficient, rows[_product(self.basis[a], self.basis[b], exponents)], i * len(group) + j)
+                for i, a in enumerate(group)
+                for j, b in enumerate(group)
+                for exponents, coefficient in factor.items()
+            ]
+            values, places, columns = zip(*entries, strict=True)
+            table = csr_array((values, (places, columns)), shape=(len(rows), len(group) ** 2))
             total = total + table @ cvxpy.vec(part, order="C")
         return total
 
@@ -204,8 +212,11 @@ class MultiplierProgram:
         return f"no positive definite Gram matrices ({remark})"
 
 
-def seek_witnesses(target: Target, level: Fraction) -> tuple[DecreaseWitness, ...] | NoWitness:
-    """One witness per Bernstein coefficient of the target at this level, in order, or why there is none."""
+def seek_witnesses(target: Target, level: Fraction, hardest: Exponents = ()) -> tuple[DecreaseWitness, ...] | NoWitness:
+    """One witness per Bernstein coefficient of the target at this level, in order, or why there is none.
+
+    The coefficient `hardest`, if any, is tried first: where it failed at another level it may fail again.
+    """
     if bernstein_count(target.numerator, target.ring, target.parameters) > MOST_WITNESSES:
         return NoWitness("the parameter box has too many vertices")
     size = len(target.scales)
@@ -227,35 +238,53 @@ def seek_witnesses(target: Target, level: Fraction) -> tuple[DecreaseWitness, ..
         _GramVariable(multiplier, blocks(multiplier, support, function)),
         function, float(level),
     )  # fmt: skip
-    witnesses = []
-    for index, polynomial in pairs:
-        witness = _witness(program, index, polynomial, target.scales)
-        if isinstance(witness, NoWitness):
-            return witness
-        witnesses.append(witness)
-    return tuple(witnesses)
+    grams: dict[Exponents, _RoughGrams] = {}
+    for index, polynomial in sorted(pairs, key=lambda pair: pair[0] != hardest):
+        rough = _rough_grams(program, polynomial)
+        if isinstance(rough, str):
+            return NoWitness(rough, index)
+        grams[index] = rough
+    return tuple(_witness(index, grams[index], main, multiplier, target.scales) for index, _ in pairs)
+
+
+@dataclass(frozen=True, slots=True)
+class _RoughGrams:
+    """Floating Gram matrices of (main, multiplier), to be rounded to `bits` and multiplied by `unit`."""
+
+    main: Array
+    multiplier: Array
+    bits: int
+    unit: Fraction
 
 
 def _scale_of(exponents: Exponents, scales: tuple[Fraction, ...]) -> Fraction:
     return prod((s**k for s, k in zip(scales, exponents, strict=True)), start=Fraction(1))
 
 
-def _witness(
-    program: MultiplierProgram, index: Exponents, polynomial: Mapping[Exponents, Fraction], scales: tuple[Fraction, ...]
-) -> DecreaseWitness | NoWitness:
+def _rough_grams(program: MultiplierProgram, polynomial: Mapping[Exponents, Fraction]) -> _RoughGrams | str:
     unit = power_of_two_near(max((abs(float(c)) for c in polynomial.values()), default=1.0))
     margin = program.solve_for({e: float(c / unit) for e, c in polynomial.items() if c})
     if isinstance(margin, str):
-        return NoWitness(margin, index)
+        return margin
     size = len(program.main.basis) + len(program.multiplier.basis)
     bits = min(MOST_BITS, max(LEAST_BITS, ceil(log2(size / margin)) + GUARD_BITS))
+    return _RoughGrams(program.main.value, program.multiplier.value, bits, unit)
+
+
+def _witness(
+    index: Exponents,
+    rough: _RoughGrams,
+    main: tuple[Exponents, ...],
+    multiplier: tuple[Exponents, ...],
+    scales: tuple[Fraction, ...],
+) -> DecreaseWitness:
     return DecreaseWitness(
-        index, _gram(program.main, bits, unit, scales), _gram(program.multiplier, bits, unit, scales)
+        index, _gram(main, rough.main, rough, scales), _gram(multiplier, rough.multiplier, rough, scales)
     )
 
 
-def _gram(variable: _GramVariable, bits: int, unit: Fraction, scales: tuple[Fraction, ...]) -> Gram:
+def _gram(basis: tuple[Exponents, ...], values: Array, rough: _RoughGrams, scales: tuple[Fraction, ...]) -> Gram:
     """Rounded, and back to unscaled offsets exactly: z^a = y^a / S^a."""
-    rounded = to_matrix(variable.value, bits)
-    back = rescale(rounded, tuple(1 / _scale_of(e, scales) for e in variable.basis))
-    return Gram(variable.basis, tuple(tuple(unit * v for v in row) for row in back))
+    rounded = to_matrix(values, rough.bits)
+    back = rescale(rounded, tuple(1 / _scale_of(e, scales) for e in basis))
+    return Gram(basis, tuple(tuple(rough.unit * v for v in row) for row in back))

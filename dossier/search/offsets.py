@@ -9,7 +9,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass
 from fractions import Fraction
-from functools import reduce
+from functools import cached_property, reduce
 from itertools import islice, product
 from typing import Any, Final
 
@@ -64,7 +64,7 @@ class ScaledLoop:
         """Number of states n."""
         return len(self.scales)
 
-    @property
+    @cached_property
     def decay(self) -> float:
         """Slowest decay of the linear parts, per unit of scaled time; 1 - rho^2 for sampled loops; <= 0: none."""
         eigenvalues = np.linalg.eigvals(self.linear)
@@ -97,7 +97,8 @@ class ScaledLoop:
             else:
                 change = 2.0 * ((image @ matrix) * points).sum(1)
                 decay = 2.0 * self.decay
-            return np.nan_to_num(change / value + share * decay, nan=np.inf)
+            slope = change / value + share * decay
+        return np.where(np.isfinite(slope), slope, np.inf)
 
     def draw(self, count: int, generator: np.random.Generator) -> Array:
         """Parameter rows: mostly vertices, some interior."""

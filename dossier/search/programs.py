@@ -25,6 +25,8 @@ DECREASE_SHARES: Final = (0.02, 0.15, 0.4)
 """Shares of the slowest decay V must keep: more is asked for when less could not be proved."""
 REGION_SHARES: Final = (0.85, 0.7, 0.5, 0.25, 0.1)
 """Parts of a region asked for when the whole cannot be had."""
+REFINEMENTS: Final = 3
+"""Bisections between a part of the region that has an answer and one that has none: to about 5 %."""
 SAMPLED: Final = Fraction(99999, 100000)
 """Share of the sampled level taken as promising: the sample may have missed the very worst ray."""
 KEEP_OFF: Final = Fraction(1, 10**9)
@@ -64,12 +66,29 @@ def covering_candidates(
             if candidate is None:
                 break
             found = True
-    for scale in () if found else REGION_SHARES:
+    if not found:
+        yield from _partial_candidates(loop, goal, effort, subject)
+
+
+def _partial_candidates(
+    loop: ScaledLoop, goal: Goal, effort: Effort, subject: str
+) -> Iterator[tuple[Attempt, Candidate | None]]:
+    """Programs for smaller and smaller parts of the region until one has an answer, then bisection upward."""
+    refused, granted = 1.0, 0.0
+    for scale in REGION_SHARES:
         wish = Wish("widest margin", DECREASE_SHARES[0], scale)
         attempt, candidate = from_program(loop, goal, wish, effort, subject, _empty_pool(loop))
         yield attempt, candidate
         if candidate is not None:
+            granted = scale
             break
+        refused = scale
+    for _ in range(REFINEMENTS if granted else 0):
+        scale = (granted * refused) ** 0.5
+        wish = Wish("smallest set", DECREASE_SHARES[0], scale)
+        attempt, candidate = from_program(loop, goal, wish, effort, subject, _empty_pool(loop))
+        yield attempt, candidate
+        granted, refused = (granted, scale) if candidate is None else (scale, refused)
 
 
 def _objectives(goal: Goal) -> tuple[Objective, ...]:

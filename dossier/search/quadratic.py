@@ -19,7 +19,7 @@ from dossier.model.claim import LyapunovClaim
 from dossier.model.decrease import decrease_form
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.loop import model_hash
-from dossier.model.polynomial import NotRational, OffsetField
+from dossier.model.polynomial import Exponents, NotRational, OffsetField
 from dossier.search.effort import Effort
 from dossier.search.ellipsoid import Candidate, from_lyapunov_equation
 from dossier.search.goal import Goal
@@ -66,6 +66,15 @@ class Task:
 
 
 @dataclass(frozen=True, slots=True)
+class Prospect:
+    """A normalised V, where it came from, and the level up to which it looks promising."""
+
+    method: str
+    function: Function
+    bound: Fraction
+
+
+@dataclass(frozen=True, slots=True)
 class Proved:
     """The largest verified claim if any, how many levels were tried, and why the last one was refused."""
 
@@ -87,24 +96,36 @@ def seek_quadratic(
     if isinstance(task, Attempt):
         return (task,), ()
     attempts: list[Attempt] = []
-    candidates: list[Candidate] = []
+    prospects: list[Prospect] = []
     for attempt, candidate in covering_candidates(task.loop, goal, effort, task.subject):
         attempts.append(attempt)
         if candidate is None:
             continue
-        candidates.append(candidate)
-        attempts[-1], claims = _prove_cover(task, candidate, attempt)
+        attempts[-1], prospect, claims = _prove_cover(task, _prospect(task, candidate), attempt)
         if claims:
             return tuple(attempts), claims
+        prospects.append(prospect)
+    prospects += [_prospect(task, candidate) for candidate in from_lyapunov_equation(task.loop)]
+    more, best = _largest_of(task, prospects)
+    return (*attempts, *more), () if best is None else (best,)
+
+
+def _largest_of(task: Task, prospects: list[Prospect]) -> tuple[list[Attempt], LyapunovClaim | None]:
+    """The largest set provable with any of the prospects, the most promising first."""
+    attempts: list[Attempt] = []
     best: LyapunovClaim | None = None
-    candidates += from_lyapunov_equation(task.loop)
-    for candidate in candidates:
-        function = normalised(task.loop, goal, candidate.matrix)
-        proved = largest_proved(task, function, _promising(task, function))
-        attempts.append(_told(task, candidate, proved))
-        if proved.claim is not None and (best is None or _extent(task, proved.claim) > _extent(task, best)):
-            best = proved.claim
-    return tuple(attempts), () if best is None else (best,)
+    for prospect in sorted(prospects, key=lambda p: -_extent(task, p.function, p.bound)):
+        hoped = _extent(task, prospect.function, prospect.bound)
+        if best is not None and hoped <= CLOSE_ENOUGH * _extent(task, best.function, best.level):
+            break
+        proved = largest_proved(task, prospect.function, prospect.bound)
+        attempts.append(_told(task, prospect, proved))
+        claim = proved.claim
+        if claim is not None and (
+            best is None or _extent(task, claim.function, claim.level) > _extent(task, best.function, best.level)
+        ):
+            best = claim
+    return attempts, best
 
 
 def largest_level(
@@ -144,43 +165,49 @@ def _task(
     return Task(loop, loop.field, equilibrium, over, goal, effort, suffix, verify)
 
 
-def _prove_cover(task: Task, candidate: Candidate, attempt: Attempt) -> tuple[Attempt, tuple[LyapunovClaim, ...]]:
-    """The region first; where that is proved, as large a set as can be proved."""
+def _prospect(task: Task, candidate: Candidate) -> Prospect:
     function = normalised(task.loop, task.goal, candidate.matrix)
-    bound = _promising(task, function)
-    if bound < 1:
-        remark = f"V stops falling or meets a slab at {float(bound):.4g} of the level that covers the region"
-        return replace(attempt, ending="no candidate", remark=remark), ()
-    tight, why = prove(task, function, Fraction(1), "quadratic", "-tight")
-    if tight is None:
-        remark = f"no proof at the level that covers the region: {why}"
-        return replace(attempt, ending="no candidate", remark=remark, work={**attempt.work, "levels": 1}), ()
-    large = largest_proved(task, function, bound, Fraction(1))
-    work = {**attempt.work, "levels": 1 + large.levels}
+    bound = promising_level(task.loop, task.goal, task.effort, function, largest_useful(task.goal))
+    return Prospect(candidate.method, function, bound)
+
+
+def _prove_cover(
+    task: Task, prospect: Prospect, attempt: Attempt
+) -> tuple[Attempt, Prospect, tuple[LyapunovClaim, ...]]:
+    """The region first; where that is proved, as large a set as can be proved.  A refusal lowers the bound."""
+    if prospect.bound < 1:
+        remark = f"V stops falling or meets a slab at {float(prospect.bound):.4g} of the level that covers the region"
+        return replace(attempt, ending="no candidate", remark=remark), prospect, ()
+    tight = prove(task, prospect.function, Fraction(1), "quadratic", "-tight")
+    if isinstance(tight, NoWitness):
+        remark = f"no proof at the level that covers the region: {tight.text}"
+        told = replace(attempt, ending="no candidate", remark=remark, work={**attempt.work, "levels": 1})
+        return told, replace(prospect, bound=LEVEL_SHARES[-1]), ()
+    large = largest_proved(task, prospect.function, prospect.bound, Fraction(1))
     if large.claim is None:
-        return replace(attempt, remark="proved at the level that covers the region", work=work), (
-            replace(tight, identifier=_identifier(task)),
-        )
-    remark = f"proved at a level that covers {float(large.claim.level) ** 0.5:.4g} of the region"
-    told = replace(attempt, ending="found", remark=remark, work=work)
-    return told, (large.claim, tight) if task.goal.slabs else (large.claim,)
+        claims = (replace(tight, identifier=_identifier(task)),)
+    else:
+        claims = (large.claim, tight) if task.goal.slabs else (large.claim,)
+    covered = _extent(task, prospect.function, claims[0].level)
+    remark = f"proved at a level that covers {covered:.4g} of the region"
+    work = {**attempt.work, "levels": 1 + large.levels}
+    return replace(attempt, ending="found", remark=remark, work=work), prospect, claims
 
 
-def _told(task: Task, candidate: Candidate, proved: Proved) -> Attempt:
-    method = f"quadratic, {candidate.method.removeprefix('quadratic, ')}, largest level"
+def _told(task: Task, prospect: Prospect, proved: Proved) -> Attempt:
+    method = f"quadratic, {prospect.method.removeprefix('quadratic, ')}, largest level"
     work = {"levels": proved.levels}
     if proved.claim is None:
         return Attempt(task.subject, method, "no candidate", f"no level could be proved: {proved.why}", work)
-    part = f"covers {_extent(task, proved.claim):.4g} of the region" if task.goal.region.is_bounded else "found"
-    return Attempt(task.subject, method, "found", f"the largest proved level {part}", work)
+    remark = f"proved at V ≤ {float(proved.claim.level):.6g}"
+    if task.goal.region.is_bounded:
+        covered = _extent(task, proved.claim.function, proved.claim.level)
+        remark += f", which covers {covered:.4g} of the region"
+    return Attempt(task.subject, method, "found", remark, work)
 
 
-def _extent(task: Task, claim: LyapunovClaim) -> float:
-    return extent(task.loop, task.goal, claim.function, claim.level)
-
-
-def _promising(task: Task, function: Function) -> Fraction:
-    return promising_level(task.loop, task.goal, task.effort, function, largest_useful(task.goal))
+def _extent(task: Task, function: Function, level: Fraction) -> float:
+    return extent(task.loop, task.goal, function, level)
 
 
 def largest_proved(
@@ -188,31 +215,31 @@ def largest_proved(
 ) -> Proved:
     """The largest level in (`proved`, `bound`] found provable: a few shares of `bound`, then bisection."""
     best: LyapunovClaim | None = None
-    why, tried, refused = "no level is left inside the slabs", 0, bound
+    refusal, tried, refused = NoWitness("V rises at once, or the slabs leave no room"), 0, bound
     for share in LEVEL_SHARES:
         level = short_below(bound * share)
         if level <= proved or tried >= task.effort.levels:
             break
-        best, why = prove(task, function, level, method)
+        result = prove(task, function, level, method, hardest=refusal.index)
         tried += 1
-        if best is not None:
-            return Proved(best, tried)
-        refused = level
+        if isinstance(result, LyapunovClaim):
+            return Proved(result, tried)
+        refusal, refused = result, level
     low = float(proved) or float(bound) * LEAST_SHARE
     while tried < task.effort.levels and float(refused) > CLOSE_ENOUGH * low:
         level = short_below(Fraction((low * float(refused)) ** 0.5))
-        claim, reason = prove(task, function, level, method)
+        result = prove(task, function, level, method, hardest=refusal.index)
         tried += 1
-        if claim is None:
-            refused, why = level, reason
+        if isinstance(result, LyapunovClaim):
+            best, low = result, float(level)
         else:
-            best, low = claim, float(level)
-    return Proved(best, tried, why)
+            refusal, refused = result, level
+    return Proved(best, tried, refusal.text)
 
 
 def prove(
-    task: Task, function: Function, level: Fraction, method: str, mark: str = ""
-) -> tuple[LyapunovClaim | None, str]:
+    task: Task, function: Function, level: Fraction, method: str, mark: str = "", hardest: Exponents = ()
+) -> LyapunovClaim | NoWitness:
     """A verified claim at this level, or why there is none."""
     form = decrease_form(task.field, function)
     sign = denominator_sign(task.field, task.loop.vertices) ** form.denominator_power
@@ -221,17 +248,16 @@ def prove(
     scales = tuple(s * power_of_two_near(float(w)) for s, w in zip(task.loop.scales, widths, strict=True))
     numerator = form.numerator * task.field.ring.constant(Fraction(sign))
     target = Target(numerator, task.field.ring, task.field.balls, task.loop.spread, function, scales)
-    witnesses = seek_witnesses(target, level)
+    witnesses = seek_witnesses(target, level, hardest)
     if isinstance(witnesses, NoWitness):
-        where = f" at Bernstein index {witnesses.index}" if any(witnesses.index) else ""
-        return None, f"{witnesses.reason}{where}"
+        return witnesses
     kind: Literal["given", "quadratic"] = "given" if method == "given" else "quadratic"
     theorem = "T3" if task.loop.sampled else "T2"
     claim = LyapunovClaim(
         _identifier(task) + mark, model_hash(task.loop.case), task.over, theorem, task.equilibrium.identifier, kind,
         function, level, task.loop.spread, witnesses,
     )  # fmt: skip
-    return (claim, "") if task.verify(claim) else (None, "the exact check did not accept the rounded certificate")
+    return claim if task.verify(claim) else NoWitness("the exact check did not accept the rounded certificate")
 
 
 def _identifier(task: Task) -> str:
