@@ -36,7 +36,10 @@ def routh_claim_id(equilibrium: Equilibrium) -> str:
 
 
 def routh_claim(case: Case, equilibrium: Equilibrium) -> RouthClaim | str:
-    """The root count of the linear part at `equilibrium`, or why it is not decided."""
+    """The root count of the linear part at `equilibrium`, or why it is not decided.
+
+    Theorem T8 with an eigenvalue outside, T1 with all inside; none where the boundary decides nothing.
+    """
     polynomial = stability_polynomial(case, equilibrium)
     if isinstance(polynomial, NoLinearPart):
         return polynomial.reason
@@ -45,7 +48,7 @@ def routh_claim(case: Case, equilibrium: Equilibrium) -> RouthClaim | str:
         balls = [_ball(c) for c in polynomial]
         if counts is None or any(b is None for b in balls):
             return "the enclosures do not decide on which side of the stability boundary the eigenvalues lie"
-        theorem = "T8" if counts.outside else "T1"
+        theorem = "T8" if counts.outside else "" if counts.boundary else "T1"
         return RouthClaim(
             routh_claim_id(equilibrium), model_hash(case), NOMINAL, theorem, equilibrium.identifier,
             tuple(b for b in balls if b is not None), integer_array(polynomial),
