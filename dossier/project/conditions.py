@@ -13,6 +13,7 @@ from flint import arb
 
 from dossier.model.ball import WORKING_BITS, Ball, enclose, evaluate, precision
 from dossier.model.expression import Condition, Expression, conditions, substitute
+from dossier.model.loop import ordered_signals
 from dossier.model.region import Box, Interval
 from dossier.project.dimensions import Checked
 from dossier.project.faults import Ledger
@@ -60,11 +61,13 @@ def check_conditions(
 
 def _inlined(reading: ModelReading) -> dict[str, Expression]:
     """Formula of every signal in states, parameters and disturbances."""
-    model = reading.model
-    own = {} if model is None else {s.name: s.expression for s in model.signals}
-    for _ in own:
-        own = {n: substitute(e, own) for n, e in own.items()}
-    return own
+    if reading.model is None:
+        return {}
+    signals = {s.name: s.expression for s in reading.model.signals}
+    formulas: dict[str, Expression] = {}
+    for name in ordered_signals(reading.model):
+        formulas[name] = substitute(signals[name], formulas)
+    return formulas
 
 
 def _ball(side: Interval) -> arb:

@@ -11,8 +11,9 @@ from typing import Final
 from dossier.model.case import Disturbance, Model, Quantity, Signal, State
 from dossier.model.expression import Expression
 from dossier.model.region import UNBOUNDED, Box, Interval
-from dossier.project.dimensions import Checked, Scope, check_formula, names_of, require_dimension
+from dossier.project.dimensions import Checked, Scope, check_formula, require_dimension
 from dossier.project.faults import Ledger, listed, suggestion
+from dossier.project.inlining import check_inlining
 from dossier.project.located import Table, Text
 from dossier.project.names import check_names
 from dossier.project.parameters import ParameterReading, read_parameter
@@ -100,7 +101,9 @@ class _ModelReader:
         disturbances = [self._disturbance(n) for n in self.disturbances]
         equations = self._equations()
         interval = self._sample_interval()
-        self._check_signal_order(signals)
+        placed = {str(n): (e.is_, signals[str(n)]) for n, e in self.signals.items()}
+        placed |= {f"equation {n}": (self._equation_text(n), equations[str(n)]) for n in self.entry.states}
+        check_inlining(placed, frozenset(signals), self.ledger)
         self._check_use()
         sides = read_sides(
             self.entry.domain or {}, {n: self.units[n] for n in self.entry.states}, self.ledger, "inward", False,
@@ -212,22 +215,6 @@ class _ModelReader:
             return None
         checked = self._formula(text, TIME, "the unit of time")
         return None if checked is None else checked.expression
-
-    def _check_signal_order(self, signals: Mapping[str, Checked | None]) -> None:
-        needs = {
-            n: names_of([c.expression]) & set(signals) if c is not None else frozenset() for n, c in signals.items()
-        }
-        done: set[str] = set()
-        while ready := [n for n in needs if n not in done and needs[n] <= done]:
-            done.update(ready)
-        circle = [n for n in needs if n not in done]
-        if circle:
-            first = next(k for k in self.signals if k in circle)
-            self.ledger.fault(
-                self.signals[first].is_, "signals define each other in a circle: " + ", ".join(circle),
-                expected="signals that use states, parameters and earlier signals",
-                hint="an algebraic loop needs a state, or a formula solved for the signal",
-            )  # fmt: skip
 
     def _check_use(self) -> None:
         texts = [e.is_ for e in self.signals.values()] + list(self.entry.equations.values())

@@ -78,6 +78,10 @@ def set_parameter(
         return None
     value = value_of(nominal)
     old = declared.parameter
+    if old.kind == "tolerance" and spread.kind == "exact":
+        ledger.warn(
+            text, f"{name} is set to {text} exactly; its tolerance {old.spread_written} is absolute and dropped"
+        )
     if old.kind == "range" and not old.spread.contains(Interval(value.lower, value.upper)):
         ledger.warn(text, f"{name} is set to {text}, outside its declared range {old.spread_written}")
     parameter = replace(
@@ -138,6 +142,11 @@ def _tolerance(text: Text, nominal: Quantity | None, unit: Unit | None, ledger: 
     if text.is_absent or unit is None:
         return None
     relative = _is_relative(text)
+    if relative and unit.is_percent:
+        ledger.fault(
+            text, "% of a percentage may mean two things", expected="a range", hint="write range: [lower, upper]"
+        )
+        return None
     if relative and unit.zero:
         ledger.fault(text, "a relative tolerance of a temperature in degC has no meaning", expected="a tolerance in K")
         return None

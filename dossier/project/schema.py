@@ -265,3 +265,8 @@ class ProjectEntry(Entry):
     )
     models: Annotated[dict[Plain, ModelEntry], _keep(Table)] = Field(description="closed loops")
     operating_points: Annotated[dict[Plain, PointEntry], _keep(Table)] = Field(description="where they are operated")
+
+
+def json_schema() -> dict[str, Any]:
+    """The JSON Schema of the format, for editors."""
+    return ProjectEntry.model_json_schema()

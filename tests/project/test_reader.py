@@ -16,6 +16,7 @@ from dossier.model.case import Case, value_of
 from dossier.model.expression import symbol, to_text
 from dossier.model.region import UNBOUNDED, Interval
 from dossier.project.reader import Faults, Project, read_project
+from dossier.project.schema import json_schema
 
 TESTS = Path(__file__).parent.parent
 MACHINES = sorted((TESTS / "data" / "machines").glob("*.yaml"))
@@ -275,6 +276,7 @@ def test_a_criterion_that_does_not_fit_its_claim_is_a_fault(tmp_path: Path, crit
         ("b: {value: 40,", "b: {value: 40, tolerance: 3 %, range: [1, 50],", "a tolerance and a range"),
         ("b: {value: 40,", "b: {value: 40, range: [50, 60],", "outside its range"),
         ("b: {value: 40,", "b: {value: 40, varies: true,", "varies but has no range"),
+        ("k: {value: 8 kN/m, unit: N/m}", 'k: {value: 8 %, unit: "%", tolerance: 1 %}', "may mean two things"),
         ("b: {value: 40,", "b: {value: .inf,", "is not a number"),
         ("b: {value: 40,", "b: {value: 1_000,", "is not a number"),
         ("{at: {x: 0, v: 0}}", "{at: {x: 0}}", "gives no value for v"),
@@ -306,6 +308,33 @@ def test_what_is_not_excluded_is_a_warning(tmp_path: Path) -> None:
     )
     assert isinstance(result, Project), result
     assert any("m*(1 - x/L) is not proved to stay away from 0" in w for w in result.warnings)
+
+
+def test_an_absolute_tolerance_is_dropped_by_a_set_value_with_a_warning(tmp_path: Path) -> None:
+    changes = (("tolerance: 5 %", "tolerance: 0.1 kg"), ("    model: cart\n", "    model: cart\n    set: {m: 3}\n"))
+    result = variant(tmp_path, *changes)
+    assert isinstance(result, Project)
+    assert parameter(result.cases[0], "m").spread == Interval.point(F(3))
+    assert any("absolute and dropped" in w for w in result.warnings)
+
+
+@pytest.mark.parametrize("formula", ["{0}*{0}", "{0} + 1 + {0}", "cos(cos(cos(cos(cos(cos(cos(cos(cos({0})))))))))"])
+def test_signals_within_signals_are_bounded(tmp_path: Path, formula: str) -> None:
+    chain = [f"      s{i}: {{is: '{formula.format(f's{i - 1}')}', unit: '1'}}\n" for i in range(1, 60)]
+    signals = "    signals:\n      s0: {is: 'x*k/(m*g)', unit: '1'}\n" + "".join(chain)
+    gravity = "      g: {value: 9.81, unit: m/s^2}\n      b: {value"
+    result = variant(tmp_path, ("    signals:\n", signals), ("      b: {value", gravity), ("- b*v)/m", "- b*v)/m*s59"))
+    assert isinstance(result, Faults)
+    assert any("with its signals written out" in f.message for f in result.faults)
+
+
+def test_the_schema_for_editors_names_every_field() -> None:
+    schema = json_schema()
+    assert {"dossier", "document", "models", "operating_points"} <= set(schema["required"])
+    assert schema["$defs"]["SignalEntry"]["required"] == ["is", "unit"]
+    assert "attraction" in schema["$defs"]["CriterionEntry"]["properties"]["claim"]["enum"]
+    described = [p for d in schema["$defs"].values() for p in d["properties"].values()]
+    assert all(p.get("description") for p in described)
 
 
 def test_disturbances_hold_zero(tmp_path: Path) -> None:
