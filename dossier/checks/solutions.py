@@ -21,9 +21,9 @@ from dossier.model.region import Box, Interval
 
 TIGHT_BITS: Final = 200
 """Solutions are enclosed to 2^-200, about 6e-61, of the larger of their size and the radius of their box."""
-LOOSER: Final = 2**24
-LOOSENINGS: Final = 6
-"""Where that is out of reach (a parameter carries pi, a nearly singular Jacobian), up to 6 times 2^24 wider."""
+LOOSER: Final = 2**8
+LOOSENINGS: Final = 26
+"""Where that is out of reach (an inexact parameter, a nearly singular Jacobian), wider by steps of 2^8."""
 NEWTON_STEPS: Final = 14
 """Doubling digits from 16 to over 100 takes 3 steps; the rest serves slow starts."""
 SIMPLE_BITS: Final = 100
