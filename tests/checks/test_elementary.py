@@ -93,6 +93,18 @@ def test_extrema_inside_an_interval_are_reached_and_those_outside_are_not():
     assert cosine.hi[3] == 1.0 and cosine.hi[4] < 0.996
 
 
+@pytest.mark.parametrize("turn", [-100_000, -3, -1, 0, 1, 2, 100_000])
+@pytest.mark.parametrize("past", [1e-3, 1e-5, 1e-7])
+def test_an_extremum_just_inside_either_end_is_not_missed(turn, past):
+    # 1e-7 past the peak the value at the end is 5e-15 below it, far outside rounding.
+    for function, peak in ((el.sin, math.pi / 2), (el.cos, 0.0)):
+        for half, sign in ((0, 1), (1, -1)):
+            place = peak + (2 * turn + half) * math.pi
+            boxes = Span(np.array([place - 0.3, place - past]), np.array([place + past, place + 0.3]))
+            result = function(boxes)
+            assert ((result.hi if sign > 0 else -result.lo) == 1.0).all()
+
+
 def test_tangents_across_a_pole_are_unbounded():
     boxes = Span(np.array([1.0, 1.0, -0.1, 0.0]), np.array([2.0, 1.5, 0.1, 40.0]))
     sound = iv.is_sound(el.tan(boxes))
