@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import hashlib
 from collections.abc import Callable, Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from pathlib import Path
 from typing import Final
@@ -23,6 +23,7 @@ from dossier.checks.lyapunov import check_lyapunov, ellipsoid
 from dossier.checks.sets import covers
 from dossier.checks.simulation import figure_data, run_campaign
 from dossier.checks.spectral import cell_holds
+from dossier.checks.spectrum import spectral_values
 from dossier.evidence.provenance import Stopwatch, components, run_log
 from dossier.evidence.record import certificate_file, record_data
 from dossier.evidence.store import refuse_foreign_folder, write_dossier
@@ -43,7 +44,7 @@ from dossier.search.cover import seek_cover_candidate
 from dossier.search.effort import EFFORTS, Effort
 from dossier.search.equilibria import seed_equilibria
 from dossier.search.frequency import seek_crossings
-from dossier.search.goals import ABOUT_SPECTRUM, SetTask, loops, set_tasks, spectral_tasks
+from dossier.search.goals import ABOUT_SPECTRUM, SetTask, loops, set_tasks, spectral_tasks, stronger_levels
 from dossier.search.linearisation import seek_matrix
 from dossier.search.quadratic import seek_quadratic
 
@@ -118,12 +119,24 @@ def _wanted(case: Case) -> Iterator[tuple[Criterion, SpectralRegion, Fraction]]:
 
 
 def _spectral_claims(case: Case, chosen: Equilibrium, effort: Effort) -> Found:
+    """A Lyapunov inequality per task, then the same for more than was asked, so that the reserve shows."""
     claims: list[Claim] = []
     attempts: list[Attempt] = []
+    values = spectral_values(case, chosen)
     for task in spectral_tasks(case, _wanted(case)):
         tried, claim = seek_matrix(case, chosen, task.over, task.region, task.level, effort, task.suffix, cell_holds)
         attempts += tried
-        claims += [] if claim is None else [claim]
+        if claim is None:
+            continue
+        for level in stronger_levels(task, values):
+            more, better = seek_matrix(
+                case, chosen, task.over, task.region, level, replace(effort, cells=1), task.suffix, cell_holds
+            )
+            if better is not None:
+                claim = better
+                attempts += more
+                break
+        claims.append(claim)
     return tuple(claims), tuple(attempts)
 
 

@@ -30,6 +30,7 @@ from dossier.model.ball import Ball
 from dossier.model.case import NOMINAL, Case
 from dossier.model.claim import CoverClaim, LyapunovClaim
 from dossier.model.equilibrium import Equilibrium
+from dossier.model.figures import figure
 from dossier.model.finding import Finding, Premise, Result, weakest
 from dossier.model.loop import model_hash, vector_field
 
@@ -56,7 +57,9 @@ def check_cover(case: Case, equilibrium: Equilibrium, claim: SetClaim, boxes: in
     premises = tuple(_premises(case, equilibrium, claim, boxes))
     result, strength = weakest(premises)
     theorem = "T3" if case.model.time == "sampled" else "T2"
-    statement = f"V falls everywhere in the set V ≤ {claim.level} but at {claim.equilibrium}, at the nominal parameters"
+    statement = (
+        f"V falls everywhere in the set V ≤ {figure(claim.level)} but at {claim.equilibrium}, at the nominal parameters"
+    )
     evidence = (claim.identifier,)
     return Finding(
         claim.identifier, "interval", result, strength, NOMINAL, theorem, statement, premises, evidence=evidence

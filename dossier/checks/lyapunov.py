@@ -30,6 +30,7 @@ from dossier.model.claim import DecreaseWitness, LyapunovClaim, Matrix
 from dossier.model.decrease import bernstein_coefficients, bernstein_count, decrease_form
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.expression import conditions
+from dossier.model.figures import figure, span
 from dossier.model.finding import Finding, Premise, Result, Strength, weakest
 from dossier.model.loop import model_hash, vector_field
 from dossier.model.polynomial import Exponents, NotRational, OffsetField, collapse, offset_field, terms
@@ -106,7 +107,7 @@ def check_lyapunov(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim) -
 def _statement(case: Case, claim: LyapunovClaim) -> str:
     verb = "falls from every sample to the next" if case.model.time == "sampled" else "decreases along every motion"
     scope = "at the nominal parameters" if claim.over == NOMINAL else "for every parameter combination"
-    return f"V is positive and {verb} in the set V ≤ {claim.level} around {claim.equilibrium}, {scope}"
+    return f"V is positive and {verb} in the set V ≤ {figure(claim.level)} around {claim.equilibrium}, {scope}"
 
 
 def _premises(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim) -> Iterator[Premise]:
@@ -154,7 +155,7 @@ def _place(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, shape: El
 
 
 def _sides(box: Box) -> str:
-    return ", ".join(f"{n} in [{float(i.bounds[0]):.6g}, {float(i.bounds[1]):.6g}]" for n, i in box.items())
+    return ", ".join(f"{n} in {span(*i.bounds)}" for n, i in box.items())
 
 
 def certified_field(case: Case, equilibrium: Equilibrium, over: Scope) -> OffsetField | NotRational:

@@ -17,6 +17,7 @@ from dossier.model.claim import MatrixCell, MatrixClaim, SpectralRegion
 from dossier.model.decrease import bernstein_coefficients
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.expression import SATURATION, Condition, Expression, conditions, nodes, sub
+from dossier.model.figures import figure
 from dossier.model.finding import Enclosure, Finding, Premise, Strength, weakest
 from dossier.model.loop import model_hash, vector_field
 from dossier.model.polynomial import collapse, terms
@@ -30,12 +31,19 @@ REGION_TEXT: Mapping[SpectralRegion, str] = {
 }
 
 
+def region_text(region: SpectralRegion, level: Fraction) -> str:
+    """What the region asks of every eigenvalue, in words."""
+    if region == "half-plane" and level == 0:
+        return "every eigenvalue has a negative real part"
+    return REGION_TEXT[region].format(level=figure(level))
+
+
 def check_matrix(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Finding:
     """Verify the Lyapunov inequality of `claim` on every cell, and that the cells cover the scope's box."""
     premises = tuple(_premises(case, equilibrium, claim))
     result, strength = weakest(premises)
     scope = "at the nominal parameters" if claim.over == NOMINAL else "for every parameter combination"
-    text = REGION_TEXT[claim.region].format(level=claim.level)
+    text = region_text(claim.region, claim.level)
     return Finding(
         claim.identifier, "interval" if strength == "enclosed" else "exact", result, strength, claim.over, "T1",
         f"{text}, {scope}", premises, {"level": Enclosure(claim.level, claim.level, "1")}, (claim.identifier,),

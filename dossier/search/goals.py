@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import Final
@@ -12,6 +12,7 @@ from dossier.model.case import NOMINAL, TOLERANCES, Case, Criterion, Quantity, S
 from dossier.model.claim import SpectralRegion
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.expression import Expression, symbol
+from dossier.model.finding import Enclosure
 from dossier.model.loop import inline_signals
 from dossier.model.region import Box, Interval
 from dossier.search.goal import Goal, Slab
@@ -137,6 +138,37 @@ def spectral_tasks(case: Case, wanted: Iterator[tuple[Criterion, SpectralRegion,
         if key not in seen:
             seen.add(key)
             yield SpectralTask(*key, f"P-{criterion.name}")
+
+
+STRONGER: Final = tuple(Fraction(share) for share in ("0.95", "0.85", "0.7", "0.5", "0.3", "0.15"))
+"""Shares of the way from the level asked for to the nominal value that are tried, most ambitious first."""
+
+LEVEL_DIGITS: Final = 3
+"""Significant digits of a level the program chooses itself."""
+
+_NOMINAL_VALUE: Final[dict[SpectralRegion, str]] = {
+    "half-plane": "decay rate",
+    "sector": "damping ratio",
+    "disc": "contraction",
+}
+
+
+def stronger_levels(task: SpectralTask, nominal: Mapping[str, Enclosure]) -> Iterator[Fraction]:
+    """Levels between the one asked for and the nominal value, short decimals, most ambitious first."""
+    value = nominal.get(_NOMINAL_VALUE[task.region])
+    best = None if value is None else value.upper if task.region == "disc" else value.lower
+    if best is None or (best >= task.level if task.region == "disc" else best <= task.level):
+        return
+    for share in STRONGER:
+        level = task.level + share * (best - task.level)
+        unit = Fraction(10) ** (_magnitude(level) - LEVEL_DIGITS)
+        yield -(-level // unit) * unit if task.region == "disc" else level // unit * unit
+
+
+def _magnitude(value: Fraction) -> int:
+    """Number of digits before the decimal point (zero or negative below 1)."""
+    power = len(str(abs(value.numerator))) - len(str(value.denominator))
+    return power if abs(value) < Fraction(10) ** power else power + 1
 
 
 def loops(case: Case) -> tuple[str, ...]:

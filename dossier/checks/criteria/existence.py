@@ -11,6 +11,7 @@ from dossier.checks.criteria.region import quantity_of
 from dossier.checks.knowledge import Knowledge
 from dossier.checks.lyapunov import parameter_box
 from dossier.model.case import NOMINAL, Criterion
+from dossier.model.figures import span
 from dossier.model.finding import Enclosure, Finding, Premise
 from dossier.model.region import Box, Interval
 
@@ -125,6 +126,6 @@ def _value(knowledge: Knowledge, criterion: Criterion) -> Finding:
         )  # fmt: skip
     premise = Premise(
         "value", statement, "proved" if inside else "undecided", "exact" if ball.is_exact else "enclosed",
-        f"between {float(ball.lower):.9g} and {float(ball.upper):.9g} (SI)", chosen.identifier,
+        f"in {span(ball.lower, ball.upper)} (SI)", chosen.identifier,
     )  # fmt: skip
     return conclude(knowledge, criterion, "E", statement, (knowledge.place, premise), (), facts)

@@ -15,6 +15,7 @@ from dossier.model.case import NOMINAL, Criterion
 from dossier.model.claim import CoverClaim, LyapunovClaim
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.expression import Expression, symbol
+from dossier.model.figures import figure, span
 from dossier.model.finding import Enclosure, Finding, Premise, Strength
 from dossier.model.loop import inline_signals
 from dossier.model.region import Box, Interval
@@ -61,7 +62,7 @@ def _by_set(
         knowledge.place,
         Premise(
             "a", "every start of the region lies in the proved set", "proved" if covers(shape, region) else "undecided",
-            "exact", f"the region fits at scale {float(scale):.4g}", claim.identifier,
+            "exact", f"the region fits at scale {figure(scale)}", claim.identifier,
         ),
         *finding.premises,
     ]  # fmt: skip
@@ -94,7 +95,7 @@ def _excursion(
         "bound": Enclosure(bound.over_set.lower, bound.over_set.upper, "SI"),
         "equilibrium value": Enclosure(bound.at_equilibrium.lower, bound.at_equilibrium.upper, "SI"),
     }
-    detail = f"between {float(bound.over_set.lower):.6g} and {float(bound.over_set.upper):.6g} (SI)"
+    detail = f"in {span(bound.over_set.lower, bound.over_set.upper)} (SI)"
     strength: Strength = "exact" if bound.exact and bound.at_equilibrium.is_exact else "enclosed"
     premise = Premise(
         "bound", f"the quantity {criterion.of_written} stays within the stated bounds on the set",
@@ -120,7 +121,7 @@ def _limit_premises(
             kept = side.contains(Interval(-width, width))
             yield Premise(
                 f"limit {name}", f"{name} stays within its limits on the set", "proved" if kept else "undecided",
-                "exact", f"at most {float(width):.6g} from the equilibrium (SI)", claim.identifier,
+                "exact", f"at most {figure(width)} from the equilibrium (SI)", claim.identifier,
             )  # fmt: skip
     for signal in case.model.signals:
         if signal.limits == Interval(None, None):
@@ -128,9 +129,7 @@ def _limit_premises(
         formula = inline_signals(symbol(signal.name), case.model)
         bound = bound_over_set(case, equilibrium, shape, formula, criterion.over)
         kept = bound is not None and signal.limits.contains(Interval(bound.over_set.lower, bound.over_set.upper))
-        detail = (
-            "" if bound is None else f"within {float(bound.over_set.lower):.6g} .. {float(bound.over_set.upper):.6g}"
-        )
+        detail = "" if bound is None else f"in {span(bound.over_set.lower, bound.over_set.upper)} (SI)"
         yield Premise(
             f"limit {signal.name}", f"the signal {signal.name} stays within its limits on the set",
             "proved" if kept else "undecided", "enclosed", detail, claim.identifier,
@@ -227,9 +226,10 @@ def _starts_beyond(
         if value is None:
             continue
         if (lower is not None and value.upper < lower) or (upper is not None and value.lower > upper):
-            start = ", ".join(f"{n} = {float(c):.6g}" for n, c in zip(region.names, corner, strict=True))
+            start = ", ".join(f"{n} = {figure(c)}" for n, c in zip(region.names, corner, strict=True))
             what = f"the quantity {criterion.of_written} violates its bound at a start of the region"
             yield refute(
-                knowledge, criterion, "T9", what, "enclosed", (), {"combination": "nominal", "start": start, "time": "0 s"},
+                knowledge, criterion, "T9", what, "enclosed", (),
+                {"combination": "nominal", "start": start, "time": "0 s"},
             )  # fmt: skip
             return
