@@ -132,7 +132,8 @@ def _limit_premises(
         detail = "" if bound is None else f"in {span(bound.over_set.lower, bound.over_set.upper)} (SI)"
         yield Premise(
             f"limit {signal.name}", f"the signal {signal.name} stays within its limits on the set",
-            "proved" if kept else "undecided", "enclosed", detail, claim.identifier,
+            "proved" if kept else "undecided", "exact" if bound is not None and bound.exact else "enclosed",
+            detail, claim.identifier,
         )  # fmt: skip
 
 
