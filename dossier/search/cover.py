@@ -8,7 +8,7 @@ needs second derivatives.
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Final
 
@@ -31,11 +31,14 @@ from dossier.search.programs import (
     normalised,
     promising_level,
 )
+from dossier.search.rounding import short_below
 
 Verify = Callable[[CoverClaim], bool]
 
 SHARES: Final = tuple(Fraction(s) for s in ("0.95", "0.8", "0.6", "0.35"))
 """Shares of the promising level handed to the interval check, which needs room before V first rises."""
+MOST_REFUSALS: Final = 5
+"""Refusals by the interval check, each of which may cost the whole box budget, before a search gives up."""
 KEEP_OFF: Final = Fraction(1, 10**6)
 """Share by which a set keeps off a saturation limit: the interval check must see that it is not met."""
 
@@ -50,19 +53,33 @@ def seek_cover_candidate(
         loop = scaled_loop(case, equilibrium, NOMINAL, goal.region)
     except ArithmeticError as error:
         return (Attempt(subject, "quadratic, interval check", "out of reach", str(error)),), None
+    search = _CoverSearch(loop, equilibrium, goal, effort, suffix, verify)
     attempts: list[Attempt] = []
-    best: CoverClaim | None = None
+    rest: list[tuple[Fraction, Function, str]] = []
     for attempt, candidate in _candidates(loop, goal, effort, subject):
         attempts.append(attempt)
         if candidate is None:
             continue
         function = normalised(loop, goal, candidate.matrix)
-        least = Fraction(0) if best is None else best.level
-        claim, remark = _verified(loop, equilibrium, goal, effort, suffix, verify, function, least)
-        attempts[-1] = replace(attempt, ending="found" if claim else "no candidate", remark=remark)
-        best = claim or best
-        if best is not None and goal.region.is_bounded and best.level >= 1:
+        bound = promising_level(loop, goal, effort, function, largest_useful(goal))
+        if goal.region.is_bounded and bound >= 1:
+            claim = search.verified(function, Fraction(1))
+            attempts[-1] = search.told(attempt, claim, "no proof by boxes at the level that covers the region")
+            if claim is not None:
+                return tuple(attempts), claim
+            bound = Fraction(1)
+        else:
+            where = f"V stops falling or meets a slab at {float(bound):.4g} of the level that covers the region"
+            attempts[-1] = search.told(attempt, None, where)
+        rest.append((bound, function, attempt.method))
+    best: CoverClaim | None = None
+    for bound, function, method in sorted(rest, key=lambda r: -extent(loop, goal, r[1], r[0])):
+        if best is not None and extent(loop, goal, function, bound) <= extent(loop, goal, best.function, best.level):
             break
+        claim = search.largest(function, bound, best)
+        told = Attempt(subject, f"{method}, largest level", "no candidate", "")
+        attempts.append(search.told(told, claim, "no larger set was proved by boxes"))
+        best = claim or best
     return tuple(attempts), best
 
 
@@ -74,31 +91,52 @@ def _candidates(
         yield Attempt(subject, f"quadratic, {candidate.method}", "found", ""), candidate
 
 
-def _verified(
-    loop: ScaledLoop,
-    equilibrium: Equilibrium,
-    goal: Goal,
-    effort: Effort,
-    suffix: str,
-    verify: Verify,
-    function: Function,
-    least: Fraction,
-) -> tuple[CoverClaim | None, str]:
-    """The claim at the first level above `least` that `verify` accepts: the region's own first where it is in reach."""
-    bound = promising_level(loop, goal, effort, function, largest_useful(goal))
-    covers = goal.region.is_bounded and bound >= 1
-    levels = [Fraction(1)] if covers else [bound * share for share in SHARES]
-    tried = [level for level in levels if level > least]
-    for level in tried:
+@dataclass
+class _CoverSearch:
+    """What every claim of one search has in common, and how often the check has refused."""
+
+    loop: ScaledLoop
+    equilibrium: Equilibrium
+    goal: Goal
+    effort: Effort
+    suffix: str
+    verify: Verify
+    refusals: int = 0
+
+    def verified(self, function: Function, level: Fraction) -> CoverClaim | None:
+        """The claim at this level if `verify` accepts it."""
+        if level <= 0 or self.refusals >= MOST_REFUSALS:
+            return None
         claim = CoverClaim(
-            f"{loop.case.name}.{suffix}", model_hash(loop.case), NOMINAL, "T3" if loop.sampled else "T2",
-            equilibrium.identifier, function, level, effort.boxes,
+            f"{self.loop.case.name}.{self.suffix}", model_hash(self.loop.case), NOMINAL,
+            "T3" if self.loop.sampled else "T2", self.equilibrium.identifier, function, level, 0,
         )  # fmt: skip
-        if verify(claim):
-            return claim, f"the interval check closed at {extent(loop, goal, function, level):.4g} of the region"
-    if not tried:
-        return None, f"V stops falling or meets a slab at {extent(loop, goal, function, bound):.4g} of the region"
-    return None, "the interval check did not close at any level tried"
+        if self.verify(claim):
+            return claim
+        self.refusals += 1
+        return None
+
+    def largest(self, function: Function, bound: Fraction, best: CoverClaim | None) -> CoverClaim | None:
+        """The first accepted claim among shares of `bound` whose set is larger than that of `best`."""
+        for share in SHARES:
+            level = short_below(bound * share)
+            if best is not None and self._extent(function, level) <= self._extent(best.function, best.level):
+                return None
+            claim = self.verified(function, level)
+            if claim is not None:
+                return claim
+        return None
+
+    def told(self, attempt: Attempt, claim: CoverClaim | None, otherwise: str) -> Attempt:
+        """`attempt` with its ending."""
+        if claim is None:
+            return replace(attempt, ending="no candidate", remark=otherwise)
+        covered = self._extent(claim.function, claim.level)
+        size = f"{covered:.4g} of the region" if self.goal.region.is_bounded else f"V ≤ {float(claim.level):.6g}"
+        return replace(attempt, ending="found", remark=f"the interval check closed at {size}")
+
+    def _extent(self, function: Function, level: Fraction) -> float:
+        return extent(self.loop, self.goal, function, level)
 
 
 def unsaturated_slabs(case: Case, equilibrium: Equilibrium) -> tuple[Slab, ...]:
