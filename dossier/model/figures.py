@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from decimal import Context, Decimal
+from decimal import ROUND_CEILING, ROUND_FLOOR, Context, Decimal
 from fractions import Fraction
 from typing import Final
 
@@ -24,8 +24,13 @@ def figure(value: Fraction) -> str:
 
 
 def span(lower: Fraction, upper: Fraction) -> str:
-    """A closed interval in short decimals."""
-    return f"[{figure(lower)}, {figure(upper)}]"
+    """A closed interval in short decimals, rounded outward."""
+    return f"[{_end(lower, ROUND_FLOOR)}, {_end(upper, ROUND_CEILING)}]"
+
+
+def _end(value: Fraction, rounding: str) -> str:
+    context = Context(prec=ROUNDED, rounding=rounding)
+    return _printed(context.divide(Decimal(value.numerator), Decimal(value.denominator)).normalize())
 
 
 def _printed(value: Decimal) -> str:
