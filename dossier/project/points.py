@@ -162,7 +162,7 @@ class _PointReader:
     def _asked(self) -> list[tuple[Text, Checked]]:
         """Formulas of criteria (they were read without fault)."""
         entries = self.entry.criteria.values()
-        return [(e.of, Checked(parse(str(e.of)), None)) for e in entries if e.of is not None]
+        return [(e.of, Checked(parse(str(e.of)), None)) for e in entries if e.of is not None and not e.of.is_absent]
 
     def _check_sample_interval(self, parameters: Mapping[str, ParameterReading | None]) -> None:
         text = self.reading.entry.sample_interval

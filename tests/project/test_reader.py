@@ -257,6 +257,7 @@ def test_every_claim_takes_its_fields(tmp_path: Path, criterion: str) -> None:
         ("invariance", "the model has no disturbances"),
         ("parameter_margin, of: x, at_least: 5 %", "x is not a parameter"),
         ("settling_time, of: x, to: 1 mm, within: 0 s", "within is not positive"),
+        ("excursion, of: {x: v}, at_most: 1 m", "a table or list stands where one value is expected"),
         ("attraction, over: everything", "this word is not allowed here"),
     ],
 )
