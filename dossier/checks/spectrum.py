@@ -1,8 +1,8 @@
 """Eigenvalues of the nominal linear part as certified discs, and the rates they give.
 
 Roots of an exact characteristic polynomial are isolated with their multiplicities by python-flint
-(`fmpz_poly.complex_roots`), so multiple and defective eigenvalues do no harm; ball polynomials only where
-their roots are simple.
+(`fmpz_poly.complex_roots`), so multiple and defective eigenvalues do no harm; those of ball polynomials are
+enclosed one by one or in clusters (`dossier.checks.clusters`).
 """
 
 from __future__ import annotations
@@ -12,8 +12,9 @@ from dataclasses import dataclass
 from fractions import Fraction
 from typing import Final
 
-from flint import acb, acb_poly, arb, fmpq, fmpq_poly
+from flint import acb, arb, fmpq, fmpq_poly
 
+from dossier.checks.clusters import distinct_roots, root_discs
 from dossier.model.ball import WORKING_BITS, evaluate, from_arb, precision
 from dossier.model.ball import enclose as ball_to_arb
 from dossier.model.case import Case
@@ -29,23 +30,18 @@ DIGITS: Final = 18
 
 @dataclass(frozen=True, slots=True)
 class Root:
-    """One distinct eigenvalue: an enclosure and its multiplicity."""
+    """An enclosure of one eigenvalue, or of a cluster, and how many it holds."""
 
     value: acb
     multiplicity: int
 
 
 def roots(polynomial: Sequence[Number]) -> tuple[Root, ...]:
-    """All roots, highest power first in; () where balls do not isolate them."""
+    """All roots, highest power first in; () where balls do not separate them."""
     if all(isinstance(c, fmpq) for c in polynomial):
         exact = fmpq_poly([c for c in reversed(polynomial) if isinstance(c, fmpq)])
-        _, factors = (exact * exact.denom()).numer().factor_squarefree()
-        return tuple(Root(acb(r), m) for factor, m in factors for r, _ in factor.complex_roots())
-    try:
-        found = acb_poly([acb(arb(c)) for c in reversed(polynomial)]).roots()
-    except ValueError:
-        return ()
-    return tuple(Root(r, 1) for r in found)
+        return tuple(Root(r, m) for r, m in distinct_roots(exact))
+    return tuple(Root(d.enclosure, d.multiplicity) for d in root_discs(polynomial))
 
 
 def eigenvalue_discs(case: Case, equilibrium: Equilibrium) -> tuple[Eigenvalue, ...]:
