@@ -11,7 +11,7 @@ from dataclasses import dataclass
 from fractions import Fraction
 from functools import cached_property, reduce
 from itertools import islice, product
-from typing import Any, Final
+from typing import Final
 
 import numpy as np
 from flint import fmpq_mpoly
@@ -19,10 +19,10 @@ from numpy.typing import NDArray
 
 from dossier.model.case import NOMINAL, Case, Scope
 from dossier.model.equilibrium import Equilibrium
-from dossier.model.expression import Expression, fold
 from dossier.model.loop import VectorField, vector_field
 from dossier.model.polynomial import NotRational, OffsetField, Ring, offset_field, terms
 from dossier.model.region import Box
+from dossier.search.numeric import NumericFunction, nominal_floats
 from dossier.search.rounding import power_of_two_near
 
 Array = NDArray[np.float64]
@@ -201,43 +201,14 @@ def _linear_parts(field: OffsetField, vertices: Array, scales: tuple[Fraction, .
 def _from_expressions(case: Case, loop: VectorField, equilibrium: Equilibrium, spread: Box) -> Evaluate:
     """The equations as written, less their value at the equilibrium, which is zero but for rounding."""
     place = np.array([float(b.middle) for b in equilibrium.state])
-    nominal = {p.name: float(p.nominal.middle) for p in case.model.parameters}
-
-    def values(states: Array, parameters: Array) -> Array:
-        columns: dict[str, Any] = dict(nominal)
-        columns.update(zip(loop.states, states.T, strict=True))
-        columns.update(zip(spread.names, parameters.T, strict=True))
-        with np.errstate(all="ignore"):
-            results = [fold(e, lambda node, args: _node(node, args, columns)) for e in loop.equations]
-        return np.stack([np.broadcast_to(r, len(states)) for r in results], axis=1)
+    constants = {n: v for n, v in nominal_floats(case).items() if n not in spread.names}
+    function = NumericFunction(loop.equations, (*loop.states, *spread.names), constants)
 
     def evaluate(points: Array, parameters: Array) -> Array:
-        return values(points + place, parameters) - values(np.broadcast_to(place, points.shape), parameters)
+        moved = function(np.hstack([points + place, parameters]).T).T
+        return moved - function(np.hstack([np.broadcast_to(place, points.shape), parameters]).T).T
 
     return evaluate
-
-
-def _node(node: Expression, args: tuple[Any, ...], columns: dict[str, Any]) -> Any:
-    if node.op == "number":
-        return float(node.fraction)
-    if node.op == "pi":
-        return np.pi
-    if node.op == "symbol":
-        return columns[str(node.value)]
-    if node.op == "pow":
-        exponent = node.fraction
-        return np.power(args[0], int(exponent) if exponent.denominator == 1 and exponent > 0 else float(exponent))
-    if node.op == "sat":
-        return np.clip(args[0], args[1], args[2])
-    function = _NUMPY[node.op]
-    return function(*args) if len(args) == 1 else reduce(function, args)
-
-
-_NUMPY: Final[dict[str, Callable[..., Any]]] = {
-    "add": np.add, "mul": np.multiply, "div": np.divide, "neg": np.negative, "sin": np.sin, "cos": np.cos,
-    "tan": np.tan, "asin": np.arcsin, "acos": np.arccos, "atan": np.arctan, "exp": np.exp, "log": np.log,
-    "sqrt": np.sqrt, "abs": np.abs, "tanh": np.tanh,
-}  # fmt: skip
 
 
 def _differences(evaluate: Evaluate, vertices: Array, scales: tuple[Fraction, ...]) -> Array:
