@@ -157,10 +157,14 @@ def _rounded(middle: Fraction, radius: Fraction) -> Ball:
 
 
 def with_exact_coordinates(problem: RestProblem, enclosure: Enclosure, hints: Box) -> Enclosure:
-    """`enclosure` with every coordinate of radius zero that is proved to be a simple rational number."""
-    simple = [_simple_value(b, side) for b, side in zip(enclosure, hints.intervals, strict=True)]
+    """`enclosure` with every coordinate of radius zero that is proved to be a simple rational number.
+
+    Tried in turn: all coordinates that may be simple, those at end points of `hints`, those that may be zero.
+    """
+    ends = [_touched_end(b, side) for b, side in zip(enclosure, hints.intervals, strict=True)]
+    simple = [_simple_value(b) if end is None else end for b, end in zip(enclosure, ends, strict=True)]
     zeros = [v if v == 0 else None for v in simple]
-    for candidates in (simple, zeros):
+    for candidates in (simple, ends, zeros):
         if any(v is not None for v in candidates):
             exact = tuple(b if v is None else Ball(v) for b, v in zip(enclosure, candidates, strict=True))
             if holds_solution(problem, exact):
@@ -168,10 +172,12 @@ def with_exact_coordinates(problem: RestProblem, enclosure: Enclosure, hints: Bo
     return enclosure
 
 
-def _simple_value(ball: Ball, side: Interval) -> Fraction | None:
-    for end in (side.lower, side.upper):
-        if end is not None and ball.lower <= end <= ball.upper:
-            return end
+def _touched_end(ball: Ball, side: Interval) -> Fraction | None:
+    """The end point of `side` that lies in `ball`, if any."""
+    return next((e for e in (side.lower, side.upper) if e is not None and ball.lower <= e <= ball.upper), None)
+
+
+def _simple_value(ball: Ball) -> Fraction | None:
     value = simplest_between(ball.lower, ball.upper)
     bits = value.numerator.bit_length() + value.denominator.bit_length()
     return value if bits <= SIMPLE_BITS else None

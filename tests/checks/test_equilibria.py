@@ -122,6 +122,13 @@ def test_a_border_equilibrium_with_an_irrational_coordinate_counts_inside():
     assert [s[0] for s in states(case, claim)] == [Ball(Fraction(0)), Ball(Fraction(1))] and proved(case, claim)
 
 
+def test_a_border_equilibrium_counts_inside_although_its_other_coordinate_resists_proof():
+    # x = 2 exactly, but sin(y) - sin(y) at y = 1 is not folded; y = 1, on the border, is proved by itself.
+    case = make_case({"x": "x - 2 + sin(y) - sin(y)", "y": "y - 1"}, search={"x": (0, 3), "y": (0, 1)})
+    claim = claimed(case)
+    assert states(case, claim)[0][1] == Ball(Fraction(1)) and proved(case, claim)
+
+
 def test_an_irrational_equilibrium_next_to_the_border_is_placed_by_its_digits():
     below, above = "1.41421356237309504880", "1.41421356237309504881"
     inside = make_case({"x": "x^2 - 2"}, search={"x": (0, above)})
