@@ -5,7 +5,9 @@ Regions and forms as in `dossier.model.spectral_form`.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+from functools import lru_cache
 from typing import Any, Final
 
 import cvxpy
@@ -32,6 +34,9 @@ DOUBT: Final = 1e-3
 
 Rounding moves an eigenvalue of multiplicity k by about eps^(1/k): a thousandth covers multiplicity five."""
 
+PROGRAMS: Final = 32
+"""Shapes of programs kept compiled: numbers of vertices and states, and regions."""
+
 FIRST_CUTS: Final = 16
 MORE_CUTS: Final = 8
 """Vertices in the first program, and most added per round: few of them bind."""
@@ -40,14 +45,20 @@ WORST_CONDITION: Final = 1e7
 """Eigenvectors worse conditioned than this count as defective; their P would be lost to rounding."""
 
 
-def decay_matrix(a: Any, p: Any, region: SpectralRegion, level: float, stack: Any = np.block) -> Any:
-    """The matrix that must be positive definite for `a` and `p`; arrays, or cvxpy expressions with their `stack`."""
+def decay_matrix(a: Array, p: Array, region: SpectralRegion, level: float) -> Array:
+    """The matrix that must be positive definite for the linear part `a` and `p`."""
+    slope = level / np.sqrt(1 - level**2) if region == "sector" else 0.0
+    return _form(a, slope * a, p, level, region, np.block)
+
+
+def _form(a: Any, turned: Any, p: Any, level: Any, region: SpectralRegion, stack: Callable[..., Any]) -> Any:
+    """The same for arrays or cvxpy expressions; `turned` is `a` times the tangent of the sector's angle."""
     if region == "disc":
         return stack([[level * p, a.T @ p], [p @ a, level * p]])
     real = -(a.T @ p + p @ a)
     if region == "half-plane":
         return real - 2 * level * p
-    cross = level / np.sqrt(1 - level**2) * (a.T @ p - p @ a)
+    cross = turned.T @ p - p @ turned
     return stack([[real, cross], [cross.T, real]])
 
 
@@ -113,16 +124,40 @@ def _by_cuts(vertices: Array, region: SpectralRegion, level: float) -> Array | N
 
 
 def _widest_margin(vertices: Array, region: SpectralRegion, level: float) -> Array | None:
-    size = vertices.shape[1]
-    p = cvxpy.Variable((size, size), symmetric=True)
-    margin = cvxpy.Variable()
     rate = 1.0 if region == "disc" else float(np.max(np.abs(vertices))) or 1.0
-    pace = level / rate if region == "half-plane" else level
-    constraints = [p >> THINNEST * np.eye(size), p << np.eye(size), margin <= 1.0]
-    for a in vertices:
-        m = decay_matrix(a / rate, p, region, pace, cvxpy.bmat)
-        constraints.append((m + m.T) / 2 >> margin * np.eye(m.shape[0]))
-    solved = solve(cvxpy.Problem(cvxpy.Maximize(margin), constraints))
-    if not solved.has_values or p.value is None or margin.value is None or float(margin.value) < LEAST_MARGIN:
+    program = _program(len(vertices), vertices.shape[1], region)
+    program.level.value = level / rate if region == "half-plane" else level
+    slope = level / np.sqrt(1 - level**2) if region == "sector" else 0.0
+    for place, turned, a in zip(program.vertices, program.turned, vertices, strict=True):
+        place.value, turned.value = a / rate, slope * a / rate
+    solved = solve(program.problem)
+    p, margin = program.matrix.value, program.margin.value
+    if not solved.has_values or p is None or margin is None or float(margin) < LEAST_MARGIN:
         return None
-    return np.asarray(p.value)
+    return np.array(p)
+
+
+@dataclass(frozen=True)
+class _Program:
+    """One compiled program per shape: cvxpy spends most of the time on compiling, not on solving."""
+
+    problem: cvxpy.Problem
+    matrix: cvxpy.Variable
+    margin: cvxpy.Variable
+    level: cvxpy.Parameter
+    vertices: tuple[cvxpy.Parameter, ...]
+    turned: tuple[cvxpy.Parameter, ...]
+
+
+@lru_cache(maxsize=PROGRAMS)
+def _program(count: int, size: int, region: SpectralRegion) -> _Program:
+    p, margin = cvxpy.Variable((size, size), symmetric=True), cvxpy.Variable()
+    level = cvxpy.Parameter(nonneg=True)
+    vertices = tuple(cvxpy.Parameter((size, size)) for _ in range(count))
+    turned = tuple(cvxpy.Parameter((size, size)) for _ in range(count))
+    constraints = [p >> THINNEST * np.eye(size), p << np.eye(size), margin <= 1.0]
+    for a, b in zip(vertices, turned, strict=True):
+        m = _form(a, b, p, level, region, cvxpy.bmat)
+        constraints.append((m + m.T) / 2 >> margin * np.eye(m.shape[0]))
+    problem = cvxpy.Problem(cvxpy.Maximize(margin), constraints)
+    return _Program(problem, p, margin, level, vertices, turned)
