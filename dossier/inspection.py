@@ -55,7 +55,7 @@ def _criterion(criterion: Criterion) -> str:
 
 
 def _parameter(parameter: Parameter) -> str:
-    spread = "" if parameter.spread.is_point else f", {parameter.kind} {_side(parameter.spread)}"
+    spread = "" if not parameter.has_spread else f", {parameter.kind} {_side(parameter.spread)}"
     varies = ", may vary in time" if parameter.varies else ""
     value = numbers.number(parameter.nominal.middle)
     return f"{parameter.name} = {value} (SI; written {parameter.written} {parameter.unit}){spread}{varies}"

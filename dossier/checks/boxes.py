@@ -11,7 +11,7 @@ from typing import Final
 from flint import arb
 
 from dossier.model.ball import Ball, enclose, evaluate, precision, to_fmpq
-from dossier.model.expression import Condition, Expression, fold, names
+from dossier.model.expression import SATURATION, Condition, Expression, fold, names, neg, rebuild, sub
 from dossier.model.polynomial import Exponents
 from dossier.model.region import Box, Interval
 
@@ -142,6 +142,36 @@ def condition_holds(condition: Condition, box: Box, pieces: int = PIECES) -> Box
     if condition.relation == "positive":
         return BoxProof(proof.holds and proof.sign == 1, proof.sign, proof.pieces)
     return proof
+
+
+def resolve_kinks(expression: Expression, box: Box) -> Expression:
+    """`expression` with every saturation and absolute value replaced by the branch proved active over `box`.
+
+    A branch counts only where it holds strictly on the whole box; the others are left as they are.
+    """
+
+    def sign(difference: Expression) -> int:
+        proof = condition_holds(Condition("nonzero", difference), box, KINK_PIECES)
+        return proof.sign if proof.holds else 0
+
+    def visit(node: Expression, args: tuple[Expression, ...]) -> Expression:
+        if node.op == "abs":
+            return {1: args[0], -1: neg(args[0])}.get(sign(args[0]), rebuild(node, args))
+        if node.op != SATURATION:
+            return rebuild(node, args)
+        x, lower, upper = args
+        above, below = sign(sub(x, lower)), sign(sub(upper, x))
+        if above == below == 1:
+            return x
+        if sign(sub(upper, lower)) == 1 and -1 in (above, below):
+            return lower if above == -1 else upper
+        return rebuild(node, args)
+
+    return fold(expression, visit)
+
+
+KINK_PIECES: Final = 256
+"""Pieces spent on the sign that decides one branch."""
 
 
 def exact_range(expression: Expression, box: Box) -> tuple[Fraction, Fraction] | None:

@@ -8,7 +8,7 @@ from dataclasses import replace
 from fractions import Fraction
 from typing import Final
 
-from dossier.checks.boxes import condition_holds
+from dossier.checks.boxes import condition_holds, resolve_kinks
 from dossier.checks.solutions import (
     Enclosure,
     RestProblem,
@@ -122,15 +122,16 @@ def reason_against_fixed(case: Case, state: Sequence[Fraction]) -> str:
     """
     names = case.model.state_names
     place = {n: number(v) for n, v in zip(names, state, strict=True)}
-    spread = [p for p in case.model.parameters if not p.spread.is_point]
+    spread = [p for p in case.model.parameters if p.has_spread]
     place |= {p.name: number(p.nominal.middle) for p in case.model.parameters if _is_constant(p.spread, p.nominal)}
-    for name, equation in zip(names, rest_equations(case), strict=True):
-        if not vanishes(substitute(equation, place)):
-            return f"the equation of {name} does not vanish at the stated point for every parameter combination"
     box = Box(
         tuple(p.name for p in case.model.parameters),
         tuple(p.spread if p in spread else Interval(p.nominal.lower, p.nominal.upper) for p in case.model.parameters),
     )
+    for name, equation in zip(names, rest_equations(case), strict=True):
+        at_rest = resolve_kinks(substitute(equation, place), box)
+        if not vanishes(at_rest):
+            return f"the equation of {name} does not vanish at the stated point for every parameter combination"
     for equation in vector_field(case).equations:
         for condition in conditions(equation):
             at_point = Condition(condition.relation, substitute(condition.expression, place))

@@ -80,7 +80,7 @@ def _premises(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Itera
         "vertices", "the cells cover the parameter box", covers_exactly(cells, whole), claim, "exact",
         f"{len(cells)} cell{'' if len(cells) == 1 else 's'}",
     )  # fmt: skip
-    if claim.over != NOMINAL and any(p.varies and not p.spread.is_point for p in case.model.parameters):
+    if claim.over != NOMINAL and any(p.varies and p.has_spread for p in case.model.parameters):
         common = len({c.matrix for c in claim.cells}) == 1
         yield _shown("common", "one P serves all cells, as parameters vary during a motion", common, claim, "exact")
     yield _smooth(case, equilibrium, claim) if claim.over == NOMINAL else _regular(case, equilibrium, claim)

@@ -15,7 +15,7 @@ from dossier.model.region import Box
 
 def spread_box(case: Case) -> Box:
     """Every parameter with a spread, in the model's order."""
-    free = [p for p in case.model.parameters if not p.spread.is_point]
+    free = [p for p in case.model.parameters if p.has_spread]
     return Box(tuple(p.name for p in free), tuple(p.spread for p in free))
 
 

@@ -57,6 +57,11 @@ class Parameter:
     written: str
     spread_written: str
 
+    @property
+    def has_spread(self) -> bool:
+        """More than one value is meant; False for an exact value that is a tiny ball only because it carries pi."""
+        return self.kind != "exact" and not self.spread.is_point
+
 
 @dataclass(frozen=True, slots=True)
 class Signal:

@@ -76,7 +76,7 @@ def linear_forms(case: Case, equilibrium: Equilibrium, over: Scope, cell: Box | 
     """
     if over == NOMINAL:
         return _nominal(case, equilibrium)
-    free = tuple(p for p in case.model.parameters if not p.spread.is_point)
+    free = tuple(p for p in case.model.parameters if p.has_spread)
     box = cell or Box(tuple(p.name for p in free), tuple(p.spread for p in free))
     try:
         return _over_tolerances(case, equilibrium, box)

@@ -60,7 +60,7 @@ def set_tasks(case: Case, equilibrium: Equilibrium) -> Iterator[SetTask]:
 
 def effective_scope(case: Case, over: Scope) -> Scope:
     """Without any spread, every combination is the nominal one."""
-    has_spread = any(not p.spread.is_point for p in case.model.parameters)
+    has_spread = any(p.has_spread for p in case.model.parameters)
     return over if has_spread else NOMINAL
 
 

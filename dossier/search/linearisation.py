@@ -83,7 +83,7 @@ def seek_matrix(
         return (Attempt(subject, method, "out of reach", forms),), None
     if isinstance(forms, LinearForms) and not forms.constant_terms_vanish:
         return (Attempt(subject, method, "out of reach", "the equilibrium moves with the parameters"),), None
-    common = over != NOMINAL and any(p.varies and not p.spread.is_point for p in case.model.parameters)
+    common = over != NOMINAL and any(p.varies and p.has_spread for p in case.model.parameters)
     task = _Task(_Family(case, equilibrium, over, forms), region, level, effort.cells, common, verify)
     cells, why = _cells(task, box)
     work = {"cells": len(cells)}

@@ -115,7 +115,7 @@ def scaled_loop(case: Case, equilibrium: Equilibrium, over: Scope, region: Box) 
 
     Raises ArithmeticError where a constant of the equations has no finite enclosure.
     """
-    free = () if over == NOMINAL else tuple(p for p in case.model.parameters if not p.spread.is_point)
+    free = () if over == NOMINAL else tuple(p for p in case.model.parameters if p.has_spread)
     spread = Box(tuple(p.name for p in free), tuple(p.spread for p in free))
     loop = vector_field(case)
     known = {p.name: p.nominal for p in case.model.parameters}

@@ -70,7 +70,7 @@ def _parameter_cells(
     context: Context, model: Model, parameter: Parameter, notation: Notation, changed: bool
 ) -> tuple[Rich, ...]:
     unit = units.absolute_unit(parameter.unit, parameter.scale)
-    spread = NOTHING if parameter.spread.is_point else side_text(parameter.spread, unit)
+    spread = NOTHING if not parameter.has_spread else side_text(parameter.spread, unit)
     kind = KIND_WORDS[parameter.kind] + (", varies" if parameter.varies else "") + (", set below" if changed else "")
     low, high = unit.from_si(parameter.nominal.lower, parameter.nominal.upper)
     value = numbers.stated((low + high) / 2) if low is not None and high is not None else NOTHING
