@@ -5,6 +5,7 @@ A. M. Lyapunov 1892; for maps P. Stein, J. Res. NBS 48, 1952.
 
 from __future__ import annotations
 
+import warnings
 from collections.abc import Iterator
 from fractions import Fraction
 from typing import Final
@@ -42,12 +43,14 @@ def from_equation(a: list[list[Fraction]], region: SpectralRegion, level: Fracti
 
 def _in_floating_point(a: Array, region: SpectralRegion, level: float) -> list[Array]:
     unit = np.eye(len(a))
-    try:
-        if region == "disc":
-            return [scipy.linalg.solve_discrete_lyapunov(a.T / level, unit)]
-        return [scipy.linalg.solve_continuous_lyapunov((a + level * unit).T, -unit)]
-    except (np.linalg.LinAlgError, ValueError):
-        return []
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore")  # an ill-conditioned equation gives a candidate that fails its check
+        try:
+            if region == "disc":
+                return [scipy.linalg.solve_discrete_lyapunov(a.T / level, unit)]
+            return [scipy.linalg.solve_continuous_lyapunov((a + level * unit).T, -unit)]
+        except (np.linalg.LinAlgError, ValueError):
+            return []
 
 
 def solve_exactly(a: list[list[Fraction]], region: SpectralRegion, level: Fraction) -> Matrix | None:

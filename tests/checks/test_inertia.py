@@ -1,6 +1,7 @@
 """Root counts against products of factors whose roots are known."""
 
 from fractions import Fraction
+from itertools import pairwise
 
 import pytest
 from flint import arb, fmpq, fmpq_poly
@@ -26,7 +27,7 @@ def pair(p, q):
 
 @st.composite
 def factors(draw):
-    """A list of (ascending coefficients, roots left, on, right); values from a short list make multiple roots likely."""
+    """(ascending coefficients, roots left, on, right); values from a short list make multiple roots likely."""
     a, b = draw(st.sampled_from([(1, 1), (1, 2), (2, 1), (Fraction(1, 3), 5)]))
     return draw(
         st.sampled_from(
@@ -102,7 +103,7 @@ def test_the_integer_array_shows_the_roots_to_the_right_by_its_sign_changes(coef
     array = integer_array(polynomial)
     if array:
         column = [row[0] for row in array]
-        changes = sum(a * b < 0 for a, b in zip(column, column[1:], strict=False))
+        changes = sum(a * b < 0 for a, b in pairwise(column))
         assert len(column) == len(polynomial)
         assert inertia(polynomial) == Inertia(len(polynomial) - 1 - changes, 0, changes)
 

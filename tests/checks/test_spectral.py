@@ -123,23 +123,27 @@ def test_a_box_is_proved_exactly_where_the_inequality_holds_at_its_vertices(k_wi
     assert found == (least > 0) or abs(least) < 1e-9
 
 
+def of_cell(**changes):
+    """Damage to the first cell."""
+    return lambda claim: replace(claim, cells=(replace(claim.cells[0], **changes),))
+
+
+HALF_OPEN = Box(("k", "c"), (Interval(None, F(9)), Interval(F(0), F(9))))
 DAMAGES = {
     "another model": lambda c: replace(c, model_hash="0" * 64),
     "another equilibrium": lambda c: replace(c, equilibrium="point.E2"),
     "a larger level": lambda c: replace(c, level=F(1)),
     "no cell": lambda c: replace(c, cells=()),
-    "a cell too small": lambda c: replace(c, cells=(replace(c.cells[0], parameters=box(k=("19/10", 2), c=("9/10", "11/10"))),)),
-    "sides in another order": lambda c: replace(c, cells=(replace(c.cells[0], parameters=box(c=(0, 3), k=(0, 3))),)),
-    "an unbounded cell": lambda c: replace(
-        c, cells=(replace(c.cells[0], parameters=Box(("k", "c"), (Interval(None, F(9)), Interval(F(0), F(9))))),)
-    ),
-    "an indefinite P": lambda c: replace(c, cells=(replace(c.cells[0], matrix=((F(2), F(3)), (F(3), F(1)))),)),
-    "an asymmetric P": lambda c: replace(c, cells=(replace(c.cells[0], matrix=((F(2), F(1)), (F(0), F(1)))),)),
-    "a P of another size": lambda c: replace(c, cells=(replace(c.cells[0], matrix=((F(1),),)),)),
-    "a ragged P": lambda c: replace(c, cells=(replace(c.cells[0], matrix=((F(2), F(1, 2)), (F(1, 2),))),)),
-    "minus P": lambda c: replace(c, cells=(replace(c.cells[0], matrix=((F(-2), F(-1, 2)), (F(-1, 2), F(-1)))),)),
     "the nominal scope": lambda c: replace(c, over="nominal"),
-}  # fmt: skip
+    "a cell too small": of_cell(parameters=box(k=("19/10", 2), c=("9/10", "11/10"))),
+    "sides in another order": of_cell(parameters=box(c=(0, 3), k=(0, 3))),
+    "an unbounded cell": of_cell(parameters=HALF_OPEN),
+    "an indefinite P": of_cell(matrix=((F(2), F(3)), (F(3), F(1)))),
+    "an asymmetric P": of_cell(matrix=((F(2), F(1)), (F(0), F(1)))),
+    "a P of another size": of_cell(matrix=((F(1),),)),
+    "a ragged P": of_cell(matrix=((F(2), F(1, 2)), (F(1, 2),))),
+    "minus P": of_cell(matrix=((F(-2), F(-1, 2)), (F(-1, 2), F(-1)))),
+}
 
 
 @pytest.mark.parametrize("damage", DAMAGES.values(), ids=DAMAGES.keys())
