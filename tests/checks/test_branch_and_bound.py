@@ -12,7 +12,7 @@ from loop_cases import formula
 from dossier.checks.branch_and_bound import clusters, cover
 from dossier.checks.intervals import Span
 from dossier.checks.newton import System, approximate_inverses, box_around, newton_step
-from dossier.model.expression import add, mul, number, symbol
+from dossier.model.expression import add, mul, number, power, symbol
 
 
 def system(texts, sides):
@@ -78,6 +78,23 @@ def test_a_root_of_the_square_root_at_the_border_stays_undecided():
 def test_a_part_outside_the_domain_of_the_formula_holds_no_zero():
     found = cover(system(["sqrt(x) - 1"], {"x": (-4, 4)}), (), 10_000)
     assert len(found.zeros) >= 1 and found.undecided == []
+
+
+def test_a_zero_that_exists_only_in_the_formal_continuation_is_not_found():
+    # x^(3/2) + x + 1/2 is positive wherever it is defined; with slopes in [1, 5/2] Krawczyk would accept [-1, 1].
+    expression = add(power(symbol("x"), Fraction(3, 2)), symbol("x"), number("1/2"))
+    problem = System([expression], ("x",), {}, box(("x",), {"x": (-1, 1)}))
+    assert not newton_step(problem, Span(np.full((1, 1), -1.0), np.ones((1, 1)))).unique[0]
+    found = cover(problem, (), 1_000)
+    assert found.zeros == [] and found.undecided == []
+
+
+def test_scaled_boxes_are_rounded_inward_and_scale_back_exactly():
+    problem = system(["x"], {"x": ("-0.003", "0.003")})
+    side = {"x": (Fraction(1, 3000), Fraction(2, 3000))}
+    (inner,) = problem.rational(problem.scaled(box(("x",), side))).intervals
+    assert Fraction(1, 3000) < inner.bounds[0] < inner.bounds[1] < Fraction(2, 3000)
+    assert inner.width > Fraction(999, 3_000_000)
 
 
 def test_a_pole_is_not_taken_for_a_zero_nor_hidden():

@@ -262,7 +262,14 @@ def with_solution(claim, index, **changes):
 
 
 def _moved(claim):
-    return with_solution(claim, 1, enclosure=(Ball(Fraction(1, 100)), Ball(Fraction(1, 100))))
+    sides = claim.solutions[1].uniqueness.intervals
+    beside = tuple(Ball(s.bounds[0] + s.width / 8, s.width / 1000) for s in sides)
+    return with_solution(claim, 1, enclosure=beside)
+
+
+def _moved_exactly(claim):
+    sides = claim.solutions[1].uniqueness.intervals
+    return with_solution(claim, 1, enclosure=tuple(Ball(s.bounds[0] + s.width / 8) for s in sides))
 
 
 def _shaved(claim):
@@ -275,6 +282,7 @@ SABOTAGE = {
     "all solutions left out": lambda c: replace(c, solutions=()),
     "a solution twice": lambda c: replace(c, solutions=(*c.solutions, c.solutions[0])),
     "an enclosure beside the solution": _moved,
+    "an exact point beside the solution": _moved_exactly,
     "a uniqueness box beside the solution": _shaved,
     "a uniqueness box over two solutions": lambda c: with_solution(c, 1, uniqueness=c.search),
     "an enclosure of the wrong size": lambda c: with_solution(c, 0, enclosure=c.solutions[0].enclosure[:1]),
@@ -306,6 +314,14 @@ def test_an_invented_equilibrium_is_neither_proved_nor_listed():
     )
     damaged = replace(claim, solutions=(*claim.solutions, invented))
     assert not proved(BISTABLE, damaged) and len(states(BISTABLE, damaged)) == 3
+
+
+def test_an_equilibrium_outside_the_search_box_is_neither_proved_nor_listed():
+    smaller = replace(BISTABLE, search=box(("x", "y"), {"x": (-2, "0.5"), "y": (-4, 4)}))
+    claim, outside = claimed(smaller), claimed(BISTABLE).solutions[-1]
+    damaged = replace(claim, solutions=(*claim.solutions, outside))
+    assert len(claim.solutions) == 2 and proved(smaller, claim)
+    assert not proved(smaller, damaged) and len(states(smaller, damaged)) == 2
 
 
 def test_a_cover_without_enough_boxes_is_not_proved():

@@ -10,7 +10,7 @@ from loop_cases import formula
 
 from dossier.checks.slopes import krawczyk, newton_step, value_and_slopes
 from dossier.model.ball import Ball, evaluate, precision
-from dossier.model.expression import call, differentiate, symbol
+from dossier.model.expression import add, call, differentiate, number, power, symbol
 
 X = ("x",)
 
@@ -39,7 +39,7 @@ def test_slopes_at_a_point_are_the_derivative(text, x):
 
 def test_the_slope_at_a_kink_holds_both_sides():
     with precision(64):
-        _, (slope,) = value_and_slopes(formula("abs(x)"), X, {"x": arb(0, 1)})
+        _, (slope,) = value_and_slopes(formula("abs(x)"), X, {"x": arb("0.5", 1)})
         assert slope.contains(-1) and slope.contains(1)
         saturated = call("sat", symbol("x"), formula("0-1"), formula("1"))
         _, (slope,) = value_and_slopes(saturated, X, {"x": arb(1, 0.1)})
@@ -67,6 +67,12 @@ def test_a_simple_zero_is_accepted_with_a_tight_image():
 )
 def test_boxes_without_exactly_one_zero_inside_are_refused(text, middle, radius):
     assert krawczyk([formula(text)], X, {}, around(middle, radius)) is None
+
+
+def test_a_zero_that_exists_only_in_the_formal_continuation_is_refused():
+    # x^(3/2) + x + 1/2 is positive wherever it is defined.
+    expression = add(power(symbol("x"), Fraction(3, 2)), symbol("x"), number("1/2"))
+    assert krawczyk([expression], X, {}, around("0", "1")) is None
 
 
 def test_a_zero_at_a_kink_is_accepted_where_all_slopes_have_one_sign():

@@ -91,10 +91,11 @@ def test_constants_enter_as_intervals():
 
 def test_equal_enclosures_of_different_constants_are_different_numbers():
     around_zero = Ball(Fraction(0), Fraction(1))
-    tape = Tape([formula("(x*(p + q))*(x*(p - q)) + (x*p)*(x*q)")], ("x",), {"p": around_zero, "q": around_zero})
+    texts = ["(x*p)*(x*q)", "(x*(p + 1))*(x*(q + 1)) - (x*(p + 1))^2"]
+    tape = Tape([formula(t) for t in texts], ("x",), {"p": around_zero, "q": around_zero})
     result = tape.values(Span(np.ones((1, 1)), np.ones((1, 1)))).values
-    # p = 0, q = 1 gives -1 and p = -q = 1 gives -1: a square would hide both.
-    assert result.lo[0, 0] <= -1
+    # p = -q = 1 gives -1 and p = 1, q = -1 gives -4: taking q for p would hide both behind squares.
+    assert result.lo[0, 0] <= -1 and result.lo[1, 0] <= -4
 
 
 def test_a_zero_factor_does_not_hide_that_the_other_is_undefined():
@@ -132,6 +133,17 @@ def test_a_box_wholly_outside_the_domain_is_empty(text, lower, upper):
 def test_a_value_may_be_valid_where_its_derivative_is_not():
     result = Tape([formula("sqrt(x)")], ("x",), {}).first_order(Span(np.zeros((1, 1)), np.ones((1, 1))))
     assert result.valid[0] and not result.smooth[0] and not result.empty[0]
+
+
+def test_an_undefined_derivative_does_not_make_a_box_empty():
+    result = Tape([formula("sqrt(x)")], ("x",), {}).first_order(Span(np.zeros((1, 1)), np.zeros((1, 1))))
+    assert not result.empty[0] and not result.smooth[0]
+
+
+def test_a_power_that_is_undefined_in_part_is_not_smooth():
+    tape = Tape([power(symbol("x"), Fraction(3, 2))], ("x",), {})
+    result = tape.first_order(Span(np.full((1, 1), -1.0), np.ones((1, 1))))
+    assert not result.valid[0] and not result.smooth[0]
 
 
 def test_a_partly_undefined_value_is_still_enclosed_where_it_is_defined():
