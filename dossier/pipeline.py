@@ -20,6 +20,7 @@ from dossier.checks.criteria.linear import region_and_level
 from dossier.checks.equilibria import enclose_equilibria
 from dossier.checks.linear import classify, routh_claim
 from dossier.checks.lyapunov import check_lyapunov, ellipsoid
+from dossier.checks.self_test import self_test
 from dossier.checks.sets import covers
 from dossier.checks.simulation import figure_data, run_campaign
 from dossier.checks.spectral import cell_holds
@@ -210,11 +211,20 @@ def build_evidence(
     project: Project, cases: tuple[Case, ...], effort_name: str, command: str, progress: Progress, stopwatch: Stopwatch
 ) -> Evidence:
     """All operating points of `cases`, in order."""
+    tests = self_test()
+    failed = [name for name, _, _, passed in tests if not passed]
+    if failed:
+        raise ArithmeticError(f"this machine does not compute as the proofs assume: {', '.join(failed)}")
     effort = EFFORTS[effort_name]
     points = tuple(build_point(case, effort, progress, stopwatch) for case in cases)
     package = Path(dossier.__file__).parent
     provenance = Provenance(
-        dossier.__version__, project.sha256, command, effort_name, components(package, dossier.__version__)
+        dossier.__version__,
+        project.sha256,
+        command,
+        effort_name,
+        components(package, dossier.__version__),
+        tuple((name, str(known), str(found), passed) for name, known, found, passed in tests),
     )
     files = tuple((name, _sha256(content)) for name, content in project.files)
     return Evidence(project.document, project.assumptions, points, provenance, files)

@@ -15,6 +15,7 @@ from pathlib import Path
 from typing import Any, Final
 
 from dossier.checks.assess import assess
+from dossier.checks.self_test import self_test
 from dossier.evidence.record import certificate_file, point_data
 from dossier.evidence.store import verify_manifest
 from dossier.judgement.points import judge_point
@@ -47,6 +48,7 @@ class Recheck:
 def recheck(folder: Path) -> Recheck:
     """Verify the dossier in `folder`; never raises for a damaged one."""
     refusals = [f"manifest: {p}" for p in verify_manifest(folder)]
+    refusals += [f"arithmetic: this machine fails the self-test {name}" for name, _, _, ok in self_test() if not ok]
     verified: list[str] = []
     try:
         record = json.loads((folder / "record.json").read_text(encoding="utf-8"))

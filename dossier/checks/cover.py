@@ -22,6 +22,7 @@ from fractions import Fraction
 from typing import Final
 
 import numpy as np
+from numpy.typing import NDArray
 
 from dossier.checks.intervals import Array, Mask, Span, add, down, is_sound, mul, point, square, sub, up
 from dossier.checks.lyapunov import Ellipsoid, absolute_box, ellipsoid
@@ -126,7 +127,7 @@ class Problem:
             basis = inverse.T @ turn
         except np.linalg.LinAlgError:
             basis = np.linalg.inv(np.linalg.cholesky(matrix)).T
-        return basis
+        return np.asarray(basis, dtype=np.float64)
 
     def _jacobian(self) -> Array:
         centre = Span(self.centre.lo.reshape(-1, 1), self.centre.hi.reshape(-1, 1))
@@ -256,7 +257,7 @@ def _take(waiting: list[Span]) -> Span:
     return Span(np.concatenate([p.lo for p in parts], axis=1), np.concatenate([p.hi for p in parts], axis=1))
 
 
-def _close(problem: Problem, batch: Span) -> tuple[Mask, Array]:
+def _close(problem: Problem, batch: Span) -> tuple[Mask, NDArray[np.intp]]:
     """Which boxes are proved decreasing, and along which axis the others are best cut."""
     middle = (batch.lo + batch.hi) / 2
     half = up(np.maximum(batch.hi - middle, middle - batch.lo))
@@ -306,7 +307,7 @@ def _row_products(matrix: Array, vector: Array) -> Array:
     return total
 
 
-def _halves(boxes: Span, axes: Array) -> Span:
+def _halves(boxes: Span, axes: NDArray[np.intp]) -> Span:
     columns = np.arange(boxes.lo.shape[1])
     cut = (boxes.lo[axes, columns] + boxes.hi[axes, columns]) / 2
     left_hi, right_lo = boxes.hi.copy(), boxes.lo.copy()

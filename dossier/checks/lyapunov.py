@@ -26,7 +26,7 @@ from dossier.checks.exact import (
 from dossier.model.affine import spread_box
 from dossier.model.ball import Ball
 from dossier.model.case import NOMINAL, Case, Scope
-from dossier.model.claim import DecreaseWitness, LyapunovClaim, Matrix
+from dossier.model.claim import CoverClaim, DecreaseWitness, LyapunovClaim, Matrix
 from dossier.model.decrease import bernstein_coefficients, bernstein_count, decrease_form
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.expression import conditions
@@ -62,7 +62,7 @@ def quadratic_matrix(function: Mapping[Exponents, Fraction], size: int) -> Matri
     return tuple(tuple(row) for row in matrix)
 
 
-def ellipsoid(claim: LyapunovClaim, size: int) -> Ellipsoid | None:
+def ellipsoid(claim: LyapunovClaim | CoverClaim, size: int) -> Ellipsoid | None:
     """The set of a quadratic claim, or None unless P is proved positive definite and the level positive."""
     matrix = quadratic_matrix(claim.function, size)
     if matrix is None or claim.level <= 0 or not is_positive_definite(matrix):
