@@ -39,8 +39,7 @@ def list_equilibria(case: Case, claim: RootsClaim) -> tuple[Equilibrium, ...]:
     Enclosures are as tight as `dossier.checks.solutions.tighten` proves them; stability is left to the linear part.
     """
     problem = rest_problem(case)
-    states = [_state(case, problem, solution) for solution in claim.solutions]
-    proved = sorted((s for s in states if s is not None), key=lambda s: [b.middle for b in s])
+    proved = sorted(_distinct_states(case, problem, claim), key=lambda s: [b.middle for b in s])
     listed = [_equilibrium(case, state, k) for k, state in enumerate(proved, 1)]
     if case.none_expected or not listed:
         return tuple(listed)
@@ -48,6 +47,18 @@ def list_equilibria(case: Case, claim: RootsClaim) -> tuple[Equilibrium, ...]:
         stated = tuple(Ball(v) for v in case.fixed)
         return tuple(replace(e, chosen=e.state == stated) for e in listed)
     return _nearest_chosen(case, listed)
+
+
+def _distinct_states(case: Case, problem: RestProblem, claim: RootsClaim) -> list[Enclosure]:
+    """Every confirmed state once: what lies in a uniqueness box confirmed before is that box's solution again."""
+    kept: list[Enclosure] = []
+    taken: list[Box] = []
+    for solution in claim.solutions:
+        state = _state(case, problem, solution)
+        if state is not None and not any(lies_in(state, box) for box in taken):
+            kept.append(state)
+            taken.append(solution.uniqueness)
+    return kept
 
 
 def _state(case: Case, problem: RestProblem, solution: SolutionBox) -> Enclosure | None:

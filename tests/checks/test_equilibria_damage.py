@@ -14,6 +14,7 @@ from dossier.checks.equilibria import check_roots, enclose_equilibria, list_equi
 from dossier.checks.intervals import Span
 from dossier.checks.newton import System, UniqueBox, newton_step
 from dossier.model.ball import Ball
+from dossier.model.claim import SolutionBox
 from dossier.model.expression import Expression, add, number, power, symbol
 
 BUDGET = 20_000
@@ -77,6 +78,13 @@ def test_one_equilibrium_listed_with_two_enclosures_is_refused():
     assert "may be the same" in unproved(case, replace(claim, solutions=(solution, again)))["unique"]
 
 
+def test_an_equilibrium_that_a_damaged_list_names_twice_is_listed_once():
+    claim = whole(CUBIC)
+    twice = replace(claim, solutions=(*claim.solutions, *claim.solutions))
+    assert "may be the same" in unproved(CUBIC, twice)["unique"]
+    assert list_equilibria(CUBIC, twice) == list_equilibria(CUBIC, claim)
+
+
 def test_a_border_nearer_to_an_irrational_equilibrium_than_its_enclosure_leaves_it_undecided():
     # 70 digits of the root of 2, cut off or rounded up: the equilibrium is outside or inside by less than 1e-70.
     below = Fraction(isqrt(2 * 10**140), 10**70)
@@ -97,6 +105,16 @@ def test_a_budget_that_ran_out_is_said():
         finding.result == "undecided"
         and "not finished with 64 boxes" in {p.label: p.detail for p in finding.premises}["cover"]
     )
+
+
+@pytest.mark.parametrize("text", ["x*log(x)", "x*sqrt(x - 1)", "x/x - 1 + x*log(x)"])
+def test_a_stated_point_where_the_equation_is_undefined_is_not_listed_though_a_factor_is_zero(text):
+    case = make_case({"x": text}, search={"x": ("-0.1", "0.1")}, fixed=(0,))
+    honest = enclose_equilibria(case, (), BUDGET)
+    forged = SolutionBox(box(("x",), {"x": ("-0.01", "0.01")}), (Ball(Fraction(0)),))
+    claim = replace(honest, solutions=(forged,), undecided=(), complete=True)
+    assert list_equilibria(case, claim) == ()
+    assert "uniqueness box of solution 1 is not confirmed" in unproved(case, claim)["unique"]
 
 
 # Single steps.
