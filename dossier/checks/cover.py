@@ -70,6 +70,7 @@ def check_cover(case: Case, equilibrium: Equilibrium, claim: SetClaim, boxes: in
 def _premises(case: Case, equilibrium: Equilibrium, claim: SetClaim, boxes: int) -> Iterator[Premise]:
     ident = claim.identifier
     meant = claim.model_hash == model_hash(case) and claim.equilibrium == equilibrium.identifier
+    meant = meant and (claim.over == NOMINAL or not isinstance(claim, CoverClaim))
     shape = ellipsoid(claim, len(case.model.states)) if meant else None
     yield Premise(
         "d", "V = y'Py with P positive definite and a positive level, for this closed loop",

@@ -5,8 +5,8 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass
 
-from dossier.model.case import NOMINAL, Case, Scope
-from dossier.model.claim import Claim, CoverClaim, LyapunovClaim
+from dossier.model.case import NOMINAL, TOLERANCES, Case, Scope
+from dossier.model.claim import Claim, CoverClaim, LyapunovClaim, RootsClaim
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.finding import Enclosure, Finding, Premise
 from dossier.model.outcome import LoopMargins
@@ -36,16 +36,33 @@ class Knowledge:
         """The equilibrium the operating point stands for."""
         return next((e for e in self.equilibria if e.chosen), None)
 
-    def proved(self, identifier: str) -> Finding | None:
-        """The rigorous finding that proves claim `identifier`, exact before interval."""
+    def proved(self, identifier: str, scopes: tuple[Scope, ...] = (NOMINAL, TOLERANCES)) -> Finding | None:
+        """The rigorous finding that proves claim `identifier` for one of `scopes`, exact before interval."""
         ranked = sorted(self.findings, key=lambda f: f.check)
-        return next((f for f in ranked if f.subject == identifier and f.result == "proved" and f.is_rigorous), None)
+        return next(
+            (
+                f
+                for f in ranked
+                if f.subject == identifier and f.result == "proved" and f.is_rigorous and f.over in scopes
+            ),
+            None,
+        )
+
+    def listing(self) -> Finding | None:
+        """The finding that proves the list of equilibria; it is about a list, whatever other claims are called."""
+        lists = [c.identifier for c in self.claims if isinstance(c, RootsClaim)]
+        return self.proved(lists[0]) if lists else None
 
     def sets(self, over: Scope) -> Iterator[tuple[LyapunovClaim | CoverClaim, Finding]]:
-        """Proved attractive sets that serve `over`; one proved over tolerances also serves the nominal scope."""
+        """Proved attractive sets that serve `over`; one proved over tolerances also serves the nominal scope.
+
+        What counts is the scope a check has proved, not the one the claim names: the interval witness of a
+        claim over tolerances speaks of the nominal combination only.
+        """
+        scopes = (over, *_wider(over))
         for claim in self.claims:
-            if isinstance(claim, LyapunovClaim | CoverClaim) and claim.over in (over, *_wider(over)):
-                finding = self.proved(claim.identifier)
+            if isinstance(claim, LyapunovClaim | CoverClaim) and claim.over in scopes:
+                finding = self.proved(claim.identifier, scopes)
                 if finding is not None:
                     yield claim, finding
 

@@ -34,7 +34,7 @@ def establish_existence(knowledge: Knowledge, criterion: Criterion) -> tuple[Fin
 
 
 def _listing_premises(knowledge: Knowledge) -> tuple[Premise, ...]:
-    finding = knowledge.proved(roots_claim_id(knowledge))
+    finding = knowledge.listing()
     if finding is not None:
         return finding.premises
     why = knowledge.unavailable.get("equilibria", "the cover of the search box is not complete")
@@ -63,7 +63,7 @@ def _listed(knowledge: Knowledge, criterion: Criterion) -> Finding:
 def _existence(knowledge: Knowledge, criterion: Criterion) -> Finding:
     evidence = (roots_claim_id(knowledge),)
     if not knowledge.equilibria:
-        listing = knowledge.proved(roots_claim_id(knowledge))
+        listing = knowledge.listing()
         if listing is None:
             why = knowledge.unavailable.get(
                 "equilibria", "no equilibrium was found, but the search box is not fully decided"
