@@ -11,7 +11,8 @@ import argparse
 import os
 import sys
 import traceback
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
 from pathlib import Path
 from typing import Final
 
@@ -19,6 +20,8 @@ from dossier import __version__
 from dossier.exits import FAULTY_INPUT, PROGRAM_FAULT, PROVED, REFUSED
 
 EFFORT_NAMES: Final = ("quick", "standard", "thorough")
+SEARCHING: Final = ("dossier.search", "cvxpy", "clarabel", "scs", "scipy", "sympy", "weasyprint")
+"""What a recheck must work without: searches, solvers and the PDF library."""
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
@@ -28,7 +31,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
     try:
         return options.run(options)
     except KeyboardInterrupt:
-        print("\ninterrupted; nothing was written", file=sys.stderr)
+        print("\ninterrupted; no half-written output is left", file=sys.stderr)
         return PROGRAM_FAULT
     except Exception as error:  # a bug of the program: say so plainly, keep the trace for the report
         traceback.print_exc()
@@ -111,10 +114,27 @@ def _inspect(options: argparse.Namespace) -> int:
 
 
 def _recheck(options: argparse.Namespace) -> int:
-    from dossier.recheck import recheck
-    from dossier.terminal import Terminal
+    with out_of_reach(SEARCHING):
+        from dossier.recheck import recheck
+        from dossier.terminal import Terminal
 
-    terminal = Terminal()
-    result = recheck(options.folder)
+        terminal = Terminal()
+        result = recheck(options.folder)
     terminal.recheck(result)
     return REFUSED if result.refusals else PROVED
+
+
+@contextmanager
+def out_of_reach(names: Sequence[str]) -> Iterator[None]:
+    """Inside, an import of `names` fails, even by a library that would use them if it could (pint would load scipy).
+
+    What is loaded already stays.
+    """
+    blocked = [n for n in names if n not in sys.modules]
+    sys.modules.update(dict.fromkeys(blocked))  # None: Python raises ModuleNotFoundError
+    try:
+        yield
+    finally:
+        for name in blocked:
+            if sys.modules.get(name) is None:
+                sys.modules.pop(name, None)

@@ -91,7 +91,7 @@ class Terminal:
         for warning in build.warnings:
             self.out.print(Text(f"warning: {warning}"))
         for outcome in outcomes:
-            if outcome.verdict != "proved":
+            if outcome.verdict != "proved" or outcome.contradiction:
                 self.out.print(Text(f"{outcome.identifier}: {outcome.because}"))
         self._written(build)
         return self._exit_code(build, outcomes)
@@ -145,6 +145,8 @@ class Terminal:
             self.out.print(Text(f"verified  {line}"))
         for line in result.refusals:
             self.out.print(Text(f"refused   {line}", style="bold"))
+        for line in result.remarks:
+            self.out.print(Text(f"remark    {line}"))
         closing = (
             "Recheck refused this dossier." if result.refusals else "Every certificate and verdict was verified again."
         )

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import hashlib
 from collections import Counter
 from collections.abc import Mapping, Sequence
 from decimal import ROUND_CEILING, ROUND_FLOOR, Context, Decimal
@@ -14,7 +15,7 @@ from dossier.model.dossier import Evidence, PointEvidence
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.finding import Enclosure, Finding
 from dossier.model.outcome import VERDICTS, LoopMargins, Outcome
-from dossier.model.text import claim_to_data, encode
+from dossier.model.text import canonical, claim_to_data, encode
 
 RECORD_FORMAT: Final = 1
 CERTIFICATE_FORMAT: Final = 1
@@ -165,6 +166,7 @@ def _certificate_data(claim: Claim, point: PointEvidence) -> dict[str, Any]:
         "statement": next((f.statement for f in findings), ""),
         "checked": {f.check: f.result for f in findings},
         "file": f"certificates/{claim.identifier}.json",
+        "sha256": hashlib.sha256(canonical(certificate_file(claim, point.findings)).encode()).hexdigest(),
     }
     if isinstance(claim, LyapunovClaim | CoverClaim):
         data["method"] = claim.method if isinstance(claim, LyapunovClaim) else "interval"

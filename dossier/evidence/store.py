@@ -7,7 +7,7 @@ import json
 import os
 import shutil
 import tempfile
-from collections.abc import Iterable, Mapping
+from collections.abc import Mapping
 from pathlib import Path
 from typing import Final
 
@@ -27,13 +27,21 @@ def manifest_text(files: Mapping[str, bytes]) -> bytes:
 
 
 def refuse_foreign_folder(folder: Path) -> None:
-    """Raise NotADossierError unless `folder` is absent, empty, or holds a dossier's manifest."""
+    """Raise NotADossierError unless `folder` is absent, empty, or holds a dossier just as it was written.
+
+    What a person added or filled in since then (notes, a signed PDF) is not overwritten.
+    """
     if not folder.exists():
         return
     if not folder.is_dir():
         raise NotADossierError(f"{folder} is a file, not a folder")
-    if any(folder.iterdir()) and not (folder / MANIFEST).is_file():
+    if not any(folder.iterdir()):
+        return
+    if not (folder / MANIFEST).is_file():
         raise NotADossierError(f"{folder} holds files that are not a dossier's (no {MANIFEST}); choose another --out")
+    changed = [p for p in verify_manifest(folder) if not p.endswith(MISSING)]
+    if changed:
+        raise NotADossierError(f"{folder} has changed since it was written ({changed[0]}); choose another --out")
 
 
 def write_dossier(folder: Path, files: Mapping[str, bytes], run_log: Mapping[str, object]) -> tuple[Path, ...]:
@@ -64,40 +72,71 @@ def _fill(staging: Path, files: Mapping[str, bytes], run_log: Mapping[str, objec
 
 
 def _swap(staging: Path, folder: Path) -> None:
-    retired = None
-    if folder.exists():
-        retired = Path(tempfile.mkdtemp(prefix=f".{folder.name}.old.", dir=folder.parent)) / folder.name
+    if not folder.exists():
+        os.replace(staging, folder)
+        return
+    attic = Path(tempfile.mkdtemp(prefix=f".{folder.name}.old.", dir=folder.parent))
+    retired = attic / folder.name
+    try:
         os.replace(folder, retired)
-    os.replace(staging, folder)
-    if retired is not None:
-        shutil.rmtree(retired.parent, ignore_errors=True)
+        os.replace(staging, folder)
+    except BaseException:  # also an interruption: the previous dossier comes back
+        if retired.exists() and not folder.exists():
+            os.replace(retired, folder)
+        raise
+    finally:
+        shutil.rmtree(attic, ignore_errors=True)
 
 
-def read_files(folder: Path, names: Iterable[str]) -> dict[str, bytes]:
-    """Contents of the named files of `folder`."""
-    return {name: (folder / name).read_bytes() for name in names}
+MISSING: Final = "listed in the manifest but missing"
+LINK: Final = "is a link or no plain file"
 
 
 def verify_manifest(folder: Path) -> tuple[str, ...]:
-    """What is wrong with the manifest of `folder`: missing, altered or unlisted files.  Empty when all agree."""
+    """What is wrong with the manifest of `folder`: missing, altered, unlisted or irregular files; empty when all agree.
+
+    Nothing is read through a link.
+    """
+    irregular = irregular_files(folder)
+    if irregular:
+        return tuple(f"{name}: {LINK}" for name in irregular)
     try:
         text = (folder / MANIFEST).read_text(encoding="utf-8")
     except (OSError, UnicodeDecodeError) as error:
         return (f"{MANIFEST}: cannot be read ({error.__class__.__name__})",)
-    listed = dict(_manifest_lines(text))
-    present = {
-        p.relative_to(folder).as_posix() for p in folder.rglob("*") if p.is_file() and p.name not in (MANIFEST, RUN_LOG)
-    }
+    listed = {name: digest for digest, _, name in (line.partition("  ") for line in text.splitlines())}
+    present = present_files(folder)
     problems = [f"{name}: not listed in the manifest" for name in sorted(present - listed.keys())]
     for name in sorted(listed):
         if name not in present:
-            problems.append(f"{name}: listed in the manifest but missing")
-        elif hashlib.sha256((folder / name).read_bytes()).hexdigest() != listed[name]:
+            problems.append(f"{name}: {MISSING}")
+        elif _digest(folder / name) != listed[name]:
             problems.append(f"{name}: content differs from the manifest")
+    if not problems and text != "".join(f"{listed[name]}  {name}\n" for name in sorted(present)):
+        problems.append(f"{MANIFEST}: not one line per file in the order of their names")
     return tuple(problems)
 
 
-def _manifest_lines(text: str) -> Iterable[tuple[str, str]]:
-    for line in text.splitlines():
-        digest, _, name = line.partition("  ")
-        yield name, digest
+def _digest(path: Path) -> str:
+    """SHA-256 of a file; the empty text where it cannot be read, which no manifest says."""
+    try:
+        return hashlib.sha256(path.read_bytes()).hexdigest()
+    except OSError:
+        return ""
+
+
+def irregular_files(folder: Path) -> tuple[str, ...]:
+    """Relative names of links, pipes and devices below `folder`: a dossier holds plain files and folders only."""
+    return tuple(
+        sorted(
+            p.relative_to(folder).as_posix()
+            for p in folder.rglob("*")
+            if p.is_symlink() or not (p.is_file() or p.is_dir())
+        )
+    )
+
+
+def present_files(folder: Path) -> frozenset[str]:
+    """Relative names of the files below `folder` that a manifest must list."""
+    names = (p.relative_to(folder).as_posix() for p in folder.rglob("*") if p.is_file())
+    return frozenset(n for n in names if n not in (MANIFEST, RUN_LOG))

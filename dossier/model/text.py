@@ -7,18 +7,21 @@ exponents out of order are refused, so that one claim has one text.
 from __future__ import annotations
 
 import json
+import re
 import types
 import typing
 from collections.abc import Mapping
 from dataclasses import fields, is_dataclass
 from fractions import Fraction
-from typing import Any
+from typing import Any, Final
 
 from dossier.model.ball import Ball
 from dossier.model.claim import KINDS, Claim, kind_of
 from dossier.model.region import Box, Interval
 
 PAIR = 2
+FRACTION: Final = re.compile(r"-?[0-9]+(/[0-9]+)?")
+"""Digits only: an exponent could stand for a number too large to hold."""
 
 
 class MalformedClaimError(ValueError):
@@ -123,7 +126,7 @@ def _decode_mapping(parts: tuple[Any, ...], data: Any, place: str) -> dict[Any, 
 
 
 def _decode_fraction(data: Any, place: str) -> Fraction:
-    if not isinstance(data, str):
+    if not isinstance(data, str) or not FRACTION.fullmatch(data):
         raise MalformedClaimError(f"{place}: expected a fraction as text")
     try:
         value = Fraction(data)
