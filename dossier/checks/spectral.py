@@ -109,7 +109,8 @@ def _regular(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Premis
     return _shown(
         "smooth", "the right-hand side is continuously differentiable at the equilibrium for every combination, and no "
         "saturation or absolute value changes its branch", nominal_inside and all(p.holds for p in proofs), claim,
-        "enclosed" if proofs else "exact", f"{len(asked)} conditions, {len(kinks)} kinks" if proofs else "",
+        "exact" if all(p.exact for p in proofs) else "enclosed",
+        f"{len(asked)} conditions, {len(kinks)} kinks" if proofs else "",
     )  # fmt: skip
 
 
