@@ -17,11 +17,15 @@ from flint import acb, arb, fmpq, fmpq_poly
 from dossier.model.ball import exact_value, to_fmpq
 from dossier.model.linear_part import Number
 
-WIDENINGS: Final = 400
-"""Times a first radius is widened before a root is given up."""
+SMALLEST: Final = 256
+"""No radius below 2^-SMALLEST is tried: as fine as the working precision."""
 
+WIDENINGS: Final = 400
+"""Times a first radius is widened before a root is given up; from the smallest one that reaches beyond 1."""
+
+GENTLE: Final = 32
 GROWTH: Final = fmpq(9, 8)
-"""Factor of one widening: the radius found is at most this much larger than needed."""
+"""The first widenings are by this factor, as the start is usually near the radius needed; later ones double."""
 
 INSIDE: Final = fmpq(1, 2)
 OUTSIDE: Final = fmpq(2)
@@ -85,11 +89,11 @@ def _widened(k: int, roots: list[tuple[acb, int]], reaches: list[arb]) -> Disc |
     centre = acb(roots[k][0].mid())
     distances = [abs(z - centre) for z, _ in roots]
     radius = _first_radius(k, roots, distances, reaches, abs(centre))
-    for _ in range(WIDENINGS):
+    for step in range(WIDENINGS):
         members = _separated(distances, radius)
         if members is not None and _dominates(distances, roots, radius, reaches, abs(centre)):
             return Disc(centre, radius, sum(roots[j][1] for j in members), members)
-        radius = arb((GROWTH * radius).upper())
+        radius = arb(((GROWTH if step < GENTLE else fmpq(2)) * radius).upper())
     return None
 
 
@@ -99,7 +103,7 @@ def _first_radius(k: int, roots: list[tuple[acb, int]], distances: list[arb], re
     Only a place to start from: with q too small the quotient is too large, with q too large the root of it is.
     """
     perturbation = _perturbation(reaches, size)
-    least = arb(4 * distances[k].upper()) + arb(2) ** (-WIDENINGS)
+    least = arb(4 * distances[k].upper()) + arb(2) ** (-SMALLEST)
     order = sorted(range(len(roots)), key=lambda j: (j != k, float(distances[j].mid())))
     others, best = arb(1), None
     for q in range(len(order), 0, -1):

@@ -29,9 +29,11 @@ def uncertain(coefficients, radius):
 ROOTS = st.lists(st.sampled_from([F(-3), F(-1), F(-1, 2), F(1, 3), F(2)]), min_size=1, max_size=5)
 
 
-@given(ROOTS, st.lists(st.fractions(-1, 1), min_size=5, max_size=5))
-def test_every_polynomial_in_the_balls_has_the_stated_number_of_roots_in_each_disc(roots, shares):
-    radius = F(1, 10**12)
+RADII = st.sampled_from([F(1, 10**12), F(1, 1000), F(1, 40), F(1, 4)])
+
+
+@given(ROOTS, RADII, st.lists(st.fractions(-1, 1), min_size=5, max_size=5))
+def test_every_polynomial_in_the_balls_has_the_stated_number_of_roots_in_each_disc(roots, radius, shares):
     exact = expanded(roots)
     with precision(BITS):
         discs = root_discs(uncertain(exact, radius))
@@ -43,6 +45,22 @@ def test_every_polynomial_in_the_balls_has_the_stated_number_of_roots_in_each_di
             assert inside == disc.multiplicity
 
 
+def test_the_uncertainty_counts_on_the_whole_circle_not_at_its_centre():
+    # s^2 + [-1, 1] s: one of the polynomials has the root -1 though the uncertainty vanishes at the centre 0
+    with precision(BITS):
+        (disc,) = root_discs([fmpq(1), arb(0, 1), fmpq(0)])
+        assert disc.multiplicity == 2
+        assert disc.radius > 1
+
+
+def test_discs_never_meet():
+    with precision(BITS):
+        for distance in (F(k, 40) for k in range(1, 60)):
+            discs = root_discs(uncertain(expanded([-1, -1 - distance, -4]), F(1, 100)))
+            for i, a in enumerate(discs):
+                assert all(abs(a.centre - b.centre) > a.radius + b.radius for b in discs[:i])
+
+
 @given(st.sampled_from([F(-3), F(-1), F(5, 7)]), st.integers(1, 4))
 def test_a_root_of_multiplicity_m_moves_by_the_mth_root_of_the_uncertainty(root, count):
     with precision(BITS):
@@ -50,6 +68,12 @@ def test_a_root_of_multiplicity_m_moves_by_the_mth_root_of_the_uncertainty(root,
         assert disc.multiplicity == count
         assert abs(disc.centre - to_fmpq(root)) < disc.radius
         assert disc.radius < arb(10) ** (1 - fmpq(40, count))
+
+
+def test_a_cluster_of_two_may_be_a_complex_pair():
+    with precision(BITS):
+        (disc,) = root_discs([fmpq(1), fmpq(2), arb(1, 0.01)])
+        assert disc.enclosure.imag.contains(arb("0.0999")) and disc.enclosure.imag.contains(arb("-0.0999"))
 
 
 def test_a_simple_real_root_is_proved_real():

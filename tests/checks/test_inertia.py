@@ -88,6 +88,12 @@ def test_coefficients_that_vanish_by_structure_leave_balls_decidable():
     assert inertia([fmpq(1), w, fmpq(0)]) == Inertia(1, 1, 0)
 
 
+def test_a_double_root_on_the_axis_is_no_business_of_balls():
+    # (s^2 + 1)^2 with structural zeros: a second row of zeros appears
+    assert inertia([arb(1), fmpq(0), fmpq(2), fmpq(0), fmpq(1)]) is None
+    assert inertia([fmpq(1), fmpq(0), fmpq(2), fmpq(0), fmpq(1)]) == Inertia(0, 4, 0)
+
+
 def test_a_leading_zero_is_a_root_at_infinity():
     assert inertia([fmpq(0), fmpq(1), fmpq(2)]) == Inertia(1, 1, 0)
 

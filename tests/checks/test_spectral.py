@@ -200,6 +200,31 @@ def test_a_saturation_may_not_change_its_branch_over_the_box():
         assert proved(spread, equilibrium_at(0), claim) == expected
 
 
+def test_the_branch_of_the_nominal_point_counts_only_where_that_point_lies_in_the_box():
+    # nominally the command is free (stable); for p in [2, 3] it is saturated throughout and x' = x + const
+    case = loop_case({"x": "x + sat(p - 3*x, -1, 1) - sat(p, -1, 1)"}, {}, {"p": "0"})
+    spread = with_spread(case, p=(2, 3))
+    claim = claim_about(spread, "half-plane", 1, (box(p=(2, 3)), ((F(1),),)), over="tolerances")
+    assert not proved(spread, equilibrium_at(0), claim)
+
+
+def test_the_limits_of_a_saturation_may_not_cross_over_the_box():
+    # held at its lower limit -x - 2 while that lies below the upper limit p + x; beyond, the upper one counts
+    case = loop_case({"x": "sat(0*x - 10, -x - 2, p + x) + 2"}, {}, {"p": "1"})
+    for low, expected in (("-1", True), ("-3", False)):
+        spread = with_spread(case, p=(low, 2))
+        claim = claim_about(spread, "half-plane", "1/2", (box(p=(low, 2)), ((F(1),),)), over="tolerances")
+        assert proved(spread, equilibrium_at(0), claim) == expected
+
+
+@pytest.mark.parametrize(("low", "high"), [(2, 4), (-4, -2)])
+def test_a_sampled_loop_is_cleared_of_its_denominator(low, high):
+    case = with_spread(loop_case({"x": "x/p"}, {}, {"p": str(low)}, sample_interval="1"), p=(low, high))
+    claim = claim_about(case, "disc", "51/100", (box(p=(low, high)), ((F(1),),)), over="tolerances")
+    assert proved(case, equilibrium_at(0), claim)
+    assert not proved(case, equilibrium_at(0), replace(claim, level=F(1, 2)))
+
+
 def test_an_absolute_value_may_not_change_its_branch_over_the_box():
     case = loop_case({"x": "-abs(p)*x - abs(p + x) + abs(p)"}, {}, {"p": "1"})
     for low, expected in (("1/2", True), ("-1/2", False), ("0", False)):
