@@ -293,10 +293,17 @@ def build(
     files.update({f"figures/{name}": content for name, content in rendered.figures})
     with stopwatch.stage("writing"):
         progress("", "writing")
-        written = write_dossier(
-            target, files, run_log(stopwatch, {"effort": effort_name, "conic_seconds": round(meter.seconds, 3)})
-        )
+        written = write_dossier(target, files, run_log(stopwatch, {"effort": effort_name, "conic": conic_log()}))
     return Build(evidence, rendered, target, written, project.warnings, stopwatch)
+
+
+def conic_log() -> dict[str, float]:
+    """Programs solved by this process, seconds spent stating and solving them, and inside the solver alone."""
+    return {
+        "programs": meter.programs,
+        "seconds": round(meter.seconds, 3),
+        "seconds_inside_solver": round(meter.solver_seconds, 3),
+    }
 
 
 def _attachments(files: dict[str, bytes]) -> tuple[tuple[str, bytes, str], ...]:
