@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
-from typing import Final, Literal
+from typing import Final, Literal, get_args
 
 from dossier.model.case import Scope
 from dossier.model.finding import Enclosure, Strength
@@ -19,16 +19,8 @@ Verdict = Literal[
     "not applicable",
     "not attempted",
 ]
-VERDICTS: Final[tuple[Verdict, ...]] = (
-    "proved",
-    "refuted",
-    "contradicted",
-    "no operating point",
-    "supported",
-    "not established",
-    "not applicable",
-    "not attempted",
-)
+VERDICTS: Final[tuple[Verdict, ...]] = get_args(Verdict)
+"""In the order of a conclusion's counts."""
 
 WEAKEST_FIRST: Final[tuple[Verdict, ...]] = (
     "refuted",
