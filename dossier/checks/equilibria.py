@@ -172,6 +172,8 @@ def check_roots(case: Case, claim: RootsClaim, boxes: int) -> Finding:
     count = Fraction(len(claim.solutions))
     noun = "equilibrium" if count == 1 else "equilibria"
     statement = f"the search box holds exactly {count} {noun}, each in a proved enclosure"
+    if not count:
+        statement = "the search box holds no equilibrium"
     facts = {"equilibria found": Fact(count, count, "1")} if result == "proved" else {}
     return Finding(
         claim.identifier, "interval", result, strength, NOMINAL, "E", statement, premises, facts, (claim.identifier,)
