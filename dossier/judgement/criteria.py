@@ -132,8 +132,8 @@ def _open(blank: Outcome, criterion: Criterion, findings: list[Finding], attempt
         if p.result != "proved"
     ]
     why = missing[0] if missing else reasons[0] if reasons else "no check could decide it"
-    if not missing and not reasons and tried:
-        why = f"{tried[-1].method}: {tried[-1].remark}"
+    if not missing and tried:
+        why += f"; the last attempt, {tried[-1].method}, ended with: {tried[-1].remark}"
     outcome = replace(blank, because=f"Not shown: {_lower(why)}.".replace("..", "."), bound=stated_bound(criterion))
     best = max((s.lower for s in scales if s.lower is not None), default=None)
     if best is not None and best > 0:

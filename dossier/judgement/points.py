@@ -17,6 +17,6 @@ def judge_point(
     for criterion in case.criteria:
         subject = f"{case.name}.{criterion.name}"
         about = [f for f in findings if f.subject == subject]
-        tried = [a for a in attempts if a.subject == subject]
+        tried = [a for a in attempts if a.subject in (subject, f"{case.name}.P-{criterion.name}")]
         outcomes.append(judge(case, criterion, about, tried, missing))
     return tuple(outcomes)
