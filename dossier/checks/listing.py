@@ -63,7 +63,10 @@ def _distinct_states(case: Case, problem: RestProblem, claim: RootsClaim) -> lis
 
 def _state(case: Case, problem: RestProblem, solution: SolutionBox) -> Enclosure | None:
     """The solution's tightest enclosure, or None where it is not confirmed to be one in the search box."""
-    if solution.uniqueness.names != problem.states or not holds_one(problem, solution.uniqueness):
+    box = solution.uniqueness
+    if box.names != problem.states or not box.is_bounded or len(solution.enclosure) != len(problem.states):
+        return None
+    if not holds_one(problem, box):
         return None
     if case.fixed is not None:
         stated = tuple(Ball(v) for v in case.fixed)
