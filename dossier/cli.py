@@ -14,7 +14,8 @@ import traceback
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from pathlib import Path
-from typing import Final
+from types import ModuleType
+from typing import Final, cast
 
 from dossier import __version__
 from dossier.exits import FAULTY_INPUT, PROGRAM_FAULT, PROVED, REFUSED
@@ -131,10 +132,11 @@ def out_of_reach(names: Sequence[str]) -> Iterator[None]:
     What is loaded already stays.
     """
     blocked = [n for n in names if n not in sys.modules]
-    sys.modules.update(dict.fromkeys(blocked))  # None: Python raises ModuleNotFoundError
+    loaded = cast("dict[str, ModuleType | None]", sys.modules)  # None: Python raises ModuleNotFoundError
+    loaded.update(dict.fromkeys(blocked))
     try:
         yield
     finally:
         for name in blocked:
-            if sys.modules.get(name) is None:
-                sys.modules.pop(name, None)
+            if loaded.get(name) is None:
+                loaded.pop(name, None)
