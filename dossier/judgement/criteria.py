@@ -71,12 +71,21 @@ def _judge_findings(
         return _from(blank, criterion, "refuted", _strongest(refutations))
     if proofs:
         outcome = _from(blank, criterion, "proved", _best(proofs, criterion))
-        return replace(outcome, contradiction=bool(contradictions)) if contradictions else outcome
+        return dispute(outcome, contradictions[0]) if contradictions else outcome
     if contradictions:
         return _from(blank, criterion, "contradicted", contradictions[0])
     if unmet:
         return _set_aside(blank, criterion, unmet[0])
     return _open(blank, criterion, findings, attempts)
+
+
+def dispute(outcome: Outcome, against: Finding) -> Outcome:
+    """A proof that simulated evidence speaks against: one of the two is wrong, so nothing is called proved."""
+    return replace(
+        outcome, verdict="contradicted", contradiction=True,
+        because=f"Internal contradiction: {against.statement}; but also proved: {_lower(outcome.because)}",
+        counter_example=against.counter_example, evidence=(*outcome.evidence, *against.evidence), reserve=None,
+    )  # fmt: skip
 
 
 def _from(blank: Outcome, criterion: Criterion, verdict: Verdict, finding: Finding) -> Outcome:
