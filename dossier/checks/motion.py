@@ -86,6 +86,7 @@ class Ending(IntEnum):
     HORIZON = 5
     WORK = 6
     SINGULAR = 7
+    LOST = 8
 
 
 Observer = Callable[[Index, Columns, Columns], Codes]

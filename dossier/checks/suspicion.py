@@ -114,7 +114,7 @@ def _confirm_away(case: Case, trial: Trial, criterion: Criterion, column: int) -
         return None
     if away:
         last = trial.recorder.distance[column]
-        event = f"the motion goes away and does not come back: {seen.value:.3g} regions, last seen at {last:.1e}"
+        event = f"the motion escapes: {seen.value:.3g} regions away, faster and faster, last seen at {last:.1e}"
     else:
         event = f"the motion comes to rest elsewhere, at {_state_text(case, trial.motions.offsets[:, column])}"
     statement = f"a simulated motion violates it: {event}"

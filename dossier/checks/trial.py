@@ -108,7 +108,7 @@ class Trial:
 
     @property
     def diverged(self) -> NDArray[np.bool_]:
-        """Motions that went away beyond all measure, or were far away where no further step could be made."""
+        """Motions that escape faster and faster, or were far away where no further step could be made."""
         endings = self.motions.endings
         return (endings == Ending.DIVERGED) | ((endings == Ending.SINGULAR) & (self.recorder.distance > FAR))
 

@@ -26,12 +26,21 @@ NEIGHBOURHOOD: Final = 1e-3
 REST: Final = 1e-6
 """A motion that moves less than this share of the region, for long enough, rests."""
 
-DIVERGENCE: Final = 1e6
-"""A motion this many times the region away has diverged."""
-
-
 FAR: Final = 100.0
-"""A motion that once was this many regions away and never came back has diverged or escaped in finite time."""
+"""A motion this many regions away where no further step could be made has escaped."""
+
+MILESTONES: Final = (10.0, 1e4, 1e7, 1e10)
+"""Distances, in regions, at which a motion that goes away is timed; at the first one it is integrated again."""
+
+ACCELERATION: Final = 1.3
+"""Growth rates from milestone to milestone must rise by this factor for a motion to count as escaping.
+
+However far away, a motion may come back: x' = -x + xy, y' = -y carries starts a hundred million times away and
+attracts them all.  An escape in finite time accelerates without bound; exponential growth (ratio one) does not count.
+"""
+
+LARGEST: Final = 1e300
+"""Stands for an infinite distance where growth is measured."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -124,7 +133,8 @@ class Recorder:
         self.still_since = np.zeros(count)
         self.still_at = np.full((flow.centres.shape[0], count), np.inf)
         self.distance = np.zeros(count)
-        self.far_at = np.full(count, np.inf)
+        self.milestone_at = np.full((len(MILESTONES), count), np.inf)
+        self.milestone_distance = np.full((len(MILESTONES), count), np.nan)
         slack = ROUNDING * np.array([r.size for r in watched.rows])
         domain = np.array([r.kind == "domain" for r in watched.rows])
         self._lower = np.where(domain, np.array([r.lower for r in watched.rows]) - slack, -np.inf)[:, None]
@@ -138,12 +148,34 @@ class Recorder:
         with np.errstate(all="ignore"):
             distance = np.max(np.abs(offsets) / self.scale, axis=0)
         self.distance[index] = distance
-        self.far_at[index] = np.where(distance > FAR, np.minimum(self.far_at[index], times), self.far_at[index])
         codes[self._still(index, times, offsets, distance)] = Ending.RESTS
         codes[self._near(index, times, distance)] = Ending.CONVERGED
-        codes[~(distance <= DIVERGENCE)] = Ending.DIVERGED
+        gone = self._gone(index, times, distance)
+        codes[gone] = np.where(self._accelerates(index[gone]), Ending.DIVERGED, Ending.LOST)
         codes[((values < self._lower) | (values > self._upper)).any(axis=0)] = Ending.LEFT_DOMAIN
         return codes
+
+    @property
+    def far_at(self) -> Columns:
+        """When each motion was first seen beyond the nearest milestone, infinite where it never was."""
+        return self.milestone_at[0]
+
+    def _gone(self, index: Index, times: Columns, distance: Columns) -> NDArray[np.bool_]:
+        """Time at most one milestone per sight; true where the last one is passed, or the place is not finite."""
+        size = np.minimum(np.where(np.isnan(distance), 0.0, distance), LARGEST)
+        earlier = np.isfinite(self.milestone_at[:, index])
+        for k in reversed(range(len(MILESTONES))):
+            new = (size > MILESTONES[k]) & ~earlier[k] & (earlier[k - 1] if k else True)
+            self.milestone_at[k, index[new]] = times[new]
+            self.milestone_distance[k, index[new]] = size[new]
+        return np.isfinite(self.milestone_at[-1, index]) | np.isnan(distance)
+
+    def _accelerates(self, index: Index) -> NDArray[np.bool_]:
+        """The growth rate rises from each pair of milestones to the next."""
+        with np.errstate(all="ignore"):
+            growth = np.diff(np.log(self.milestone_distance[:, index]), axis=0)
+            rates = growth / np.diff(self.milestone_at[:, index], axis=0)
+            return (rates[1:] >= ACCELERATION * rates[:-1]).all(axis=0) & (rates[0] > 0)
 
     def _extremes(self, index: Index, times: Columns, values: Columns) -> None:
         for store, at, better in (

@@ -138,7 +138,22 @@ def test_finite_escape_without_a_domain_contradicts_attraction():
     case = stated(loop_case({"x": "x^3 - x"}, {}), {"x": 2}, criteria=[ATTRACTION])
     _, finding = only_finding(case, equilibrium_at(0))
     assert finding.result == "refuted"
-    assert "does not come back" in finding.counter_example["event"]
+    assert "escapes" in finding.counter_example["event"]
+
+
+def test_a_motion_that_is_carried_far_away_but_comes_back_contradicts_nothing():
+    """Globally attractive, yet starts at (50, 50) are carried to 1e21: A. A. Ahmadi, M. Krstic, P. A. Parrilo, 2011."""
+    case = stated(loop_case({"x": "x*y - x", "y": "-y"}, {}), {"x": 50, "y": 50}, criteria=[ATTRACTION])
+    _, finding = only_finding(case, equilibrium_at(0, 0))
+    assert finding.result == "undecided"
+    assert not finding.counter_example
+
+
+def test_exponential_growth_is_no_escape():
+    """x' = x y - x with y' = 0: growth without end, but a simulation cannot tell it from one that ends."""
+    case = stated(loop_case({"x": "x*y - x", "y": "-y/1000"}, {}), {"x": 1, "y": 3}, criteria=[ATTRACTION])
+    _, finding = only_finding(case, equilibrium_at(0, 0))
+    assert finding.result == "undecided"
 
 
 def test_motions_on_a_limit_cycle_are_inconclusive_and_support_nothing():
