@@ -40,6 +40,9 @@ STABLE: Final = 1e-9
 STEPS: Final = 4_000
 """Accepted and rejected steps one motion may take; a diverging or stiff model costs seconds at most."""
 
+DEADBEAT: Final = 1.0
+"""Decay per sample that is counted at most: a loop whose multipliers are all zero still needs samples to be seen."""
+
 SAMPLES: Final = 20_000
 """Sampling instants one motion may take."""
 
@@ -77,7 +80,7 @@ def pace_of(flow: Flow, scale: Columns) -> Pace:
     if flow.sampled:
         moduli = np.abs(values)
         with np.errstate(divide="ignore"):
-            rates = -np.log(moduli)
+            rates = np.minimum(-np.log(moduli), DEADBEAT)
         fastest = 1.0
     else:
         rates, fastest = -values.real, float(np.max(np.abs(values)))

@@ -322,3 +322,12 @@ def test_a_single_state_has_no_plane():
 def test_two_states_are_shown_as_they_come():
     data = figure_data(stated(OSCILLATOR, {"x": 1, "v": 1}), equilibrium_at(0, 0), ())
     assert data.plane == ("x", "v")
+
+
+@pytest.mark.parametrize(("reach", "result"), [(0.7, "sampled"), (0.71, "floating")])
+def test_a_loop_whose_multipliers_are_zero_is_followed_for_some_samples(reach, result):
+    """z+ = z^2 attracts exactly the unit disc; the corners of the square lie at 0.99 or 1.004."""
+    equations = {"x": "x^2 - y^2", "y": "2*x*y"}
+    case = stated(loop_case(equations, {}, sample_interval="1"), {"x": reach, "y": reach}, criteria=[ATTRACTION])
+    _, finding = only_finding(case, equilibrium_at(0, 0))
+    assert finding.strength == result
