@@ -68,7 +68,8 @@ def bernstein_coefficients(
         for place, side in zip(places, parameters.intervals, strict=True):
             images[place] = ring.constant(side.bounds[0]) + ring.constant(side.width) * ring.context.gen(place)
         scaled = polynomial.compose(*images, ctx=ring.context)
-    degrees = [int(scaled.degrees()[place]) for place in places]
+    # The zero polynomial has degree -1 in the library; it still has one coefficient, zero, which no strict sign passes.
+    degrees = [max(0, int(scaled.degrees()[place])) for place in places]
     power_form: dict[Exponents, dict[Exponents, fmpq]] = {}
     for exponents, coefficient in scaled.to_dict().items():
         k = tuple(int(exponents[place]) for place in places)
