@@ -1,0 +1,175 @@
+"""The examples: every verdict as expected, and every expectation backed by a calculation of its own.
+
+The calculations below start from the equations in the project files, written out here again, with numpy and scipy;
+nothing of the program is used in them.
+"""
+
+from itertools import product
+from pathlib import Path
+
+import numpy as np
+import pytest
+import yaml
+from scipy.integrate import solve_ivp
+from scipy.optimize import brentq
+
+from dossier.evidence.provenance import Stopwatch
+from dossier.model.dossier import Evidence
+from dossier.pipeline import build_evidence
+from dossier.project.reader import Project, read_project
+
+FOLDER = Path(__file__).parents[2] / "example_projects"
+FILES = [
+    ("press_slide", "project.yaml"),
+    ("dc_bus", "project.yaml"),
+    ("dc_bus", "widened_search.yaml"),
+]
+
+
+@pytest.fixture(scope="module")
+def examples() -> dict[tuple[str, str], Evidence]:
+    built = {}
+    for folder, name in FILES:
+        project = read_project(FOLDER / folder / name)
+        assert isinstance(project, Project), project
+        built[folder, name] = build_evidence(project, project.cases, "quick", "", lambda *_: None, Stopwatch())
+    return built
+
+
+def expected(folder: str, name: str) -> dict:
+    return yaml.safe_load((FOLDER / folder / "expected" / "verdicts.yaml").read_text(encoding="utf-8"))[name]
+
+
+def outcomes(evidence: Evidence) -> dict:
+    return {o.identifier: o for p in evidence.points for o in p.outcomes}
+
+
+@pytest.mark.parametrize(("folder", "name"), FILES)
+def test_every_verdict_is_the_expected_one_and_every_expectation_has_its_reason(folder, name, examples):
+    found, known = outcomes(examples[folder, name]), expected(folder, name)
+    assert {k: o.verdict for k, o in found.items()} == {k: e["verdict"] for k, e in known.items()}
+    assert all(len(e["reason"]) > 20 for e in known.values())
+
+
+@pytest.mark.parametrize(("folder", "name"), FILES)
+def test_every_value_agrees_with_the_expected_one(folder, name, examples):
+    found = outcomes(examples[folder, name])
+    for criterion, entry in expected(folder, name).items():
+        value = found[criterion].value
+        if "value" in entry:
+            assert float(value.lower) == pytest.approx(entry["value"], rel=1e-6)
+            assert float(value.upper) == pytest.approx(entry["value"], rel=1e-6)
+        if "at_least" in entry:
+            assert entry["at_least"] <= float(value.lower) <= float(value.upper) <= entry["at_most"]
+
+
+# --- press slide ------------------------------------------------------------------------------------
+
+NOMINAL = {"m": 1200.0, "c": 9000.0, "k1": 4.0e6, "k3": 2.0e12, "tau": 0.0015}
+SPREAD = {"m": 0.03, "c": 0.25, "k1": 0.2, "k3": 0.3, "tau": 0.15}
+KP, KD, KI = 1.6e7, 2.4e5, 2.0e8
+LIMIT = 1.6e-3
+
+
+def corners():
+    for signs in product((-1, 1), repeat=len(SPREAD)):
+        yield {n: NOMINAL[n] * (1 + s * SPREAD[n]) for n, s in zip(SPREAD, signs, strict=True)}
+
+
+def slowest(p: dict) -> float:
+    plant = np.polymul([p["tau"], 1, 0], [p["m"], p["c"], p["k1"]])
+    return -max(np.roots(np.polyadd(plant, [KD, KP, KI])).real)
+
+
+def loop(s):
+    plant = s * (NOMINAL["tau"] * s + 1) * (NOMINAL["m"] * s**2 + NOMINAL["c"] * s + NOMINAL["k1"])
+    return (KD * s**2 + KP * s + KI) / plant
+
+
+def test_the_slide_decays_as_expected_at_every_corner_and_inside():
+    random = np.random.default_rng(1)
+    inside = [{n: v * (1 + SPREAD[n] * random.uniform(-1, 1)) for n, v in NOMINAL.items()} for _ in range(2000)]
+    worst = min(slowest(p) for p in (*corners(), *inside))
+    assert 10.7 < worst < slowest(NOMINAL) == pytest.approx(11.631, abs=1e-3)
+
+
+def test_the_margins_of_the_slide_come_out_of_its_transfer_function():
+    crossover = brentq(lambda w: abs(loop(1j * w)) - 1, 100, 1000)
+    phase = np.pi + np.angle(loop(1j * crossover))
+    known = expected("press_slide", "project.yaml")
+    assert phase == pytest.approx(known["bottom_hold.C9"]["value"], rel=1e-5)
+    assert phase / crossover == pytest.approx(known["bottom_hold.C5"]["value"], rel=1e-6)
+    frequencies = np.logspace(-1, 5, 200_001)
+    response = loop(1j * frequencies)
+    assert np.max(np.abs(1 / (1 + response))) == pytest.approx(known["bottom_hold.C10"]["value"], rel=1e-5)
+    real_axis = np.flatnonzero(np.diff(np.sign(response.imag)))
+    assert not any(response.real[i] < 0 and response.real[i + 1] < 0 for i in real_axis)
+
+
+def test_the_slide_returns_from_every_corner_within_its_limits(examples):
+    starts = np.array(list(product((-1e-3, 1e-3), (-0.05, 0.05), (-1e-5, 1e-5), (-15e3, 15e3)))).T
+    bound = outcomes(examples["press_slide", "project.yaml"])["bottom_hold.C6"].value
+    for p in corners():
+
+        def flow(_, flat, p=p):
+            e, v, q, force = flat.reshape(4, -1)
+            command = -KP * e - KD * v - KI * q
+            push = force - p["c"] * v - p["k1"] * e - p["k3"] * e**3
+            return np.concatenate([v, push / p["m"], e, (command - force) / p["tau"]])
+
+        motion = solve_ivp(flow, (0, 1.0), starts.ravel(), method="LSODA", rtol=1e-8, atol=1e-10)
+        path = motion.y.reshape(4, starts.shape[1], -1)
+        assert np.abs(path[0]).max() < float(bound.upper) < LIMIT
+        assert np.abs(KP * path[0] + KD * path[1] + KI * path[2]).max() < 160e3
+        assert np.abs(path[:, :, -1] / starts).max() < 1e-2
+
+
+# --- direct-current bus -----------------------------------------------------------------------------
+
+VS, RS, LS, RB = 650.0, 0.15, 0.0009, 400.0
+POINTS = {"full_power": (45e3, 470e-6), "third_power": (15e3, 470e-6), "full_power_2mF": (45e3, 2.2e-3)}
+
+
+def at_rest(power: float) -> list[float]:
+    return sorted(np.roots([1 / RS + 1 / RB, -VS / RS, power]).real)
+
+
+def linear(power: float, capacitance: float, v: float):
+    return np.array([[-RS / LS, -1 / LS], [1 / capacitance, (power / v**2 - 1 / RB) / capacitance]])
+
+
+def test_the_listed_voltages_are_the_roots_of_the_quadratic(examples):
+    for point in examples["dc_bus", "project.yaml"].points:
+        power, _ = POINTS[point.case.name]
+        assert [float(e.state[1].middle) for e in point.equilibria] == pytest.approx(at_rest(power)[1:], rel=1e-12)
+    for point in examples["dc_bus", "widened_search.yaml"].points:
+        found = sorted(float(e.state[1].middle) for e in point.equilibria)
+        assert found == pytest.approx(at_rest(45e3), rel=1e-12)
+        assert found[0] == pytest.approx(10.556, abs=1e-3)
+        currents = sorted(float(e.state[0].middle) for e in point.equilibria)
+        assert currents[1] == pytest.approx(4263, abs=0.1)
+
+
+def test_full_power_is_unstable_and_the_other_points_are_not():
+    real = {n: max(np.linalg.eigvals(linear(p, c, at_rest(p)[1])).real) for n, (p, c) in POINTS.items()}
+    assert real["full_power"] == pytest.approx(31.18, abs=0.01)
+    assert real["third_power"] == pytest.approx(-47.79, abs=0.01)
+    assert real["full_power_2mF"] == pytest.approx(-58.87, abs=0.01)
+    assert np.linalg.det(linear(45e3, 470e-6, at_rest(45e3)[0])) < 0
+
+
+@pytest.mark.parametrize("name", ["third_power", "full_power_2mF"])
+def test_the_bus_returns_from_the_corners_of_its_region(name, examples):
+    power, capacitance = POINTS[name]
+    v0 = at_rest(power)[1]
+    i0 = (VS - v0) / RS
+    bound = outcomes(examples["dc_bus", "project.yaml"])["full_power_2mF.C3"].value
+
+    def flow(_, x):
+        return [(VS - RS * x[0] - x[1]) / LS, (x[0] - power / x[1] - x[1] / RB) / capacitance]
+
+    for di, dv in product((-15, 15), (-20, 20)):
+        motion = solve_ivp(flow, (0, 0.3), [i0 + di, v0 + dv], rtol=1e-9, atol=1e-9)
+        assert motion.y[:, -1] == pytest.approx([i0, v0], abs=0.05)
+        if name == "full_power_2mF":
+            assert 500 < float(bound.lower) < motion.y[1].min() and motion.y[1].max() < float(bound.upper) < 760
