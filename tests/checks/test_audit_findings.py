@@ -1,15 +1,18 @@
 """Cases found by a review of the proving side, each with an answer known in closed form (constructed)."""
 
+from dataclasses import replace
 from fractions import Fraction
 
 import pytest
 from builders import make_case
 from loop_cases import equilibrium_at, formula
 
+from dossier.checks.assess import assess
+from dossier.checks.equilibria import enclose_equilibria
 from dossier.checks.spectral import check_matrix
 from dossier.model.affine import offset_forms, spread_box
-from dossier.model.case import TOLERANCES
-from dossier.model.claim import MatrixCell, MatrixClaim
+from dossier.model.case import NOMINAL, TOLERANCES, Criterion
+from dossier.model.claim import MatrixCell, MatrixClaim, RootsClaim
 from dossier.model.decrease import bernstein_coefficients, bernstein_count
 from dossier.model.loop import model_hash
 from dossier.model.polynomial import Ring
@@ -60,3 +63,22 @@ def test_the_zero_polynomial_has_one_bernstein_coefficient():
 def test_a_quantity_that_is_zero_has_one_form_over_tolerances():
     case = spread_case({"x": "-p*x"})
     assert offset_forms(case, equilibrium_at(0), formula("p*x - x*p"), TOLERANCES) == ({},)
+
+
+@pytest.mark.parametrize(
+    ("claim", "over"), [("existence", NOMINAL), ("existence", TOLERANCES), ("equilibria_listed", NOMINAL)]
+)
+def test_a_stated_point_outside_the_search_box_is_not_counted_in_it(claim, over):
+    """x' = -p (x - 5) rests at 5 only, so the box [-1, 1] holds no equilibrium."""
+    case = make_case(
+        {"x": "-p*(x - 5)"}, {"p": 2}, search={"x": (-1, 1)}, region={"x": (-1, 1)}, fixed=[5], spread={"p": (1, 3)}
+    )
+    case = replace(case, criteria=(Criterion("C1", claim, over),))
+    listed = enclose_equilibria(case, (), 1_000)
+    assert isinstance(listed, RootsClaim)
+    assessment = assess(case, (listed,), 1_000)
+    (finding,) = assessment.about_criteria
+    if claim == "existence":
+        assert finding.result != "proved"
+    else:
+        assert "exactly 0 equilibria" in finding.statement

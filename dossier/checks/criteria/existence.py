@@ -10,7 +10,9 @@ from dossier.checks.criteria.common import conclude, open_question, refute, with
 from dossier.checks.criteria.region import quantity_of
 from dossier.checks.knowledge import Knowledge
 from dossier.checks.lyapunov import parameter_box
+from dossier.checks.solutions import lies_in
 from dossier.model.case import NOMINAL, Criterion
+from dossier.model.equilibrium import Equilibrium
 from dossier.model.figures import span
 from dossier.model.finding import Enclosure, Finding, Premise
 from dossier.model.region import Box, Interval
@@ -41,20 +43,26 @@ def _listing_premises(knowledge: Knowledge) -> tuple[Premise, ...]:
     return (Premise("cover", "every part of the search box is decided", "undecided", "enclosed", why),)
 
 
+def _in_search(knowledge: Knowledge) -> tuple[Equilibrium, ...]:
+    """The proved equilibria in the search box; a point stated with ``at`` may lie outside it."""
+    return tuple(e for e in knowledge.equilibria if lies_in(e.state, knowledge.case.search))
+
+
 def _found(knowledge: Knowledge) -> dict[str, Enclosure]:
-    count = Fraction(len(knowledge.equilibria))
+    count = Fraction(len(_in_search(knowledge)))
     return {"equilibria found": Enclosure(count, count, "1")}
 
 
 def _listed(knowledge: Knowledge, criterion: Criterion) -> Finding:
     if criterion.over != NOMINAL:
         return open_question(knowledge, criterion, "the list is proved at the nominal combination only")
-    unclear = [e.identifier for e in knowledge.equilibria if e.stability == "undecided"]
+    listed = _in_search(knowledge)
+    unclear = [e.identifier for e in listed if e.stability == "undecided"]
     classified = Premise(
         "class", "every listed equilibrium is classified by its linear part", "undecided" if unclear else "proved",
         "enclosed", f"not decided: {', '.join(unclear)}" if unclear else "",
     )  # fmt: skip
-    count = len(knowledge.equilibria)
+    count = len(listed)
     statement = f"the search box holds exactly {count} equilibri{'um' if count == 1 else 'a'}, each classified"
     premises = (*_listing_premises(knowledge), classified)
     return conclude(knowledge, criterion, "E", statement, premises, (roots_claim_id(knowledge),), _found(knowledge))
@@ -62,7 +70,8 @@ def _listed(knowledge: Knowledge, criterion: Criterion) -> Finding:
 
 def _existence(knowledge: Knowledge, criterion: Criterion) -> Finding:
     evidence = (roots_claim_id(knowledge),)
-    if not knowledge.equilibria:
+    found = _in_search(knowledge)
+    if not found:
         listing = knowledge.listing()
         if listing is None:
             why = knowledge.unavailable.get(
@@ -79,20 +88,20 @@ def _existence(knowledge: Knowledge, criterion: Criterion) -> Finding:
     if knowledge.case.none_expected:
         return refute(
             knowledge, criterion, "E", "an equilibrium exists where none is expected", "enclosed", evidence,
-            {"combination": "nominal", "equilibrium": knowledge.equilibria[0].identifier}, _found(knowledge),
+            {"combination": "nominal", "equilibrium": found[0].identifier}, _found(knowledge),
         )  # fmt: skip
     if criterion.over != NOMINAL:
         return _existence_over_tolerances(knowledge, criterion)
     premise = Premise(
         "unique", "at least one box is proved to hold exactly one equilibrium", "proved", "enclosed",
-        knowledge.equilibria[0].identifier, evidence[0],
+        found[0].identifier, evidence[0],
     )  # fmt: skip
     statement = "an equilibrium exists in the search box"
     return conclude(knowledge, criterion, "E", statement, (premise,), evidence, _found(knowledge))
 
 
 def _existence_over_tolerances(knowledge: Knowledge, criterion: Criterion) -> Finding:
-    fixed = next((e for e in knowledge.equilibria if e.fixed_for_all), None)
+    fixed = next((e for e in _in_search(knowledge) if e.fixed_for_all), None)
     if fixed is None:
         return open_question(knowledge, criterion, "the equilibrium moves with the parameters; only nominal is proved")
     premise = Premise(
