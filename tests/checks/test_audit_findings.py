@@ -9,10 +9,11 @@ from loop_cases import equilibrium_at, formula
 
 from dossier.checks.assess import assess
 from dossier.checks.equilibria import enclose_equilibria
+from dossier.checks.linear import routh_claim
 from dossier.checks.spectral import check_matrix
 from dossier.model.affine import offset_forms, spread_box
-from dossier.model.case import NOMINAL, TOLERANCES, Criterion
-from dossier.model.claim import MatrixCell, MatrixClaim, RootsClaim
+from dossier.model.case import NOMINAL, TOLERANCES, Criterion, Quantity
+from dossier.model.claim import MatrixCell, MatrixClaim, RootsClaim, RouthClaim
 from dossier.model.decrease import bernstein_coefficients, bernstein_count
 from dossier.model.loop import model_hash
 from dossier.model.polynomial import Ring
@@ -82,3 +83,14 @@ def test_a_stated_point_outside_the_search_box_is_not_counted_in_it(claim, over)
         assert finding.result != "proved"
     else:
         assert "exactly 0 equilibria" in finding.statement
+
+
+def test_an_eigenvalue_on_the_boundary_is_not_exponentially_stable_at_rate_zero():
+    """x' = -x^3 has the eigenvalue 0: its rate 0 meets `at_least: 0`, but exponential stability asks for strictness."""
+    case = make_case({"x": "-x^3"}, search={"x": (-1, 1)}, region={"x": (-1, 1)}, fixed=[0])
+    rate = Quantity(Fraction(0), 0, "1/s", "0 1/s")
+    case = replace(case, criteria=(Criterion("C1", "exponential_stability", NOMINAL, at_least=rate),))
+    count = routh_claim(case, equilibrium_at(0))
+    assert isinstance(count, RouthClaim)
+    results = {f.result for f in assess(case, (count,), 1_000).about_criteria}
+    assert results == {"refuted"}

@@ -176,7 +176,8 @@ def _by_value(knowledge: Knowledge, criterion: Criterion) -> Iterator[Finding]:
         return
     count = _count(knowledge, chosen)
     finding = None if count is None else knowledge.proved(count.identifier)
-    if count is None or finding is None or count.outside:
+    strict = criterion.claim == "exponential_stability"
+    if count is None or finding is None or count.outside or (strict and count.boundary):
         return
     yield conclude(
         knowledge, criterion, "T1", f"the {QUANTITY[criterion.claim]} of the linear part is enclosed within its bound",
