@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import argparse
 import os
+import signal
 import sys
 import traceback
 from collections.abc import Iterator, Sequence
@@ -29,6 +30,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
     """Entry point of the ``dossier`` command; returns the exit code."""
     one_thread()
     options = _parser().parse_args(arguments)
+    signal.signal(signal.SIGTERM, _interrupted)
     try:
         return options.run(options)
     except KeyboardInterrupt:
@@ -41,6 +43,11 @@ def main(arguments: Sequence[str] | None = None) -> int:
             file=sys.stderr,
         )
         return PROGRAM_FAULT
+
+
+def _interrupted(number: int, frame: object) -> None:
+    """A request to end, from a scheduler or a terminal that closes, is met like one from the keyboard."""
+    raise KeyboardInterrupt
 
 
 def one_thread() -> None:

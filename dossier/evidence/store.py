@@ -32,6 +32,7 @@ def refuse_foreign_folder(folder: Path) -> None:
     What a person added or filled in since then (notes, a signed PDF) is not overwritten.
     """
     if not folder.exists():
+        _refuse_place(folder)
         return
     if not folder.is_dir():
         raise NotADossierError(f"{folder} is a file, not a folder")
@@ -42,6 +43,15 @@ def refuse_foreign_folder(folder: Path) -> None:
     changed = [p for p in verify_manifest(folder) if not p.endswith(MISSING)]
     if changed:
         raise NotADossierError(f"{folder} has changed since it was written ({changed[0]}); choose another --out")
+
+
+def _refuse_place(folder: Path) -> None:
+    """Raise NotADossierError where no folder can be made at `folder`: better known before the work than after."""
+    above = next(p for p in folder.absolute().parents if p.exists() or p.is_symlink())
+    if not above.is_dir():
+        raise NotADossierError(f"{folder} cannot be made: {above} is a file, not a folder")
+    if not os.access(above, os.W_OK | os.X_OK):
+        raise NotADossierError(f"{folder} cannot be made: no permission to write in {above}")
 
 
 def write_dossier(folder: Path, files: Mapping[str, bytes], run_log: Mapping[str, object]) -> tuple[Path, ...]:

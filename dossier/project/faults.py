@@ -19,6 +19,10 @@ LONGEST_LIST: Final = 12
 """Names told when one of several is expected."""
 
 
+GENERAL_HINT: Final = "write here what is expected"
+"""What to do where the fault says it all."""
+
+
 @dataclass(frozen=True, slots=True)
 class Fault:
     """One fault: where (line and column count from 1), what, the offending text, what was expected, what to do."""
@@ -65,7 +69,7 @@ class Ledger:
         shown = " ".join(text.split())
         if len(shown) > LONGEST_EXCERPT:
             shown = shown[: LONGEST_EXCERPT - 1] + "…"
-        found = Fault(self.file, line, column, message, shown, expected, hint)
+        found = Fault(self.file, line, column, message, shown, expected, hint or GENERAL_HINT)
         if found not in self.faults:
             self.faults.append(found)
 
@@ -83,14 +87,17 @@ class Ledger:
         return tuple(sorted(self.faults, key=lambda f: (f.line, f.column, f.message)))
 
 
-def suggestion(name: str, known: Iterable[str]) -> str:
-    """A hint that names the known name most like `name`, or nothing."""
+NOTHING_CLOSE: Final = "no known name is close: check the spelling, or declare it"
+
+
+def suggestion(name: str, known: Iterable[str], otherwise: str = NOTHING_CLOSE) -> str:
+    """A hint that names the known name most like `name`, or `otherwise`."""
     candidates = sorted(known)
     for candidate in candidates:
         if candidate.lower() == name.lower():
             return f"did you mean {candidate}?"
     close = difflib.get_close_matches(name, candidates, n=1, cutoff=CLOSE_ENOUGH)
-    return f"did you mean {close[0]}?" if close else ""
+    return f"did you mean {close[0]}?" if close else otherwise
 
 
 def listed(names: Iterable[str]) -> str:

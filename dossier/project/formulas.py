@@ -55,6 +55,9 @@ _STRANGE: Final = {
 }
 
 
+USE_SIGNALS: Final = "use signals for parts"
+
+
 class FormulaError(ValueError):
     """A formula outside the grammar: `offset` and `length` mark the offending text, counted from 0."""
 
@@ -90,7 +93,9 @@ class _Token(NamedTuple):
 def parse(text: str) -> Formula:
     """The formula in `text`; raises FormulaError where it leaves the grammar or a limit."""
     if len(text) > LONGEST_FORMULA:
-        raise FormulaError(f"a formula has at most {LONGEST_FORMULA} characters", 0, 1, hint="use signals for parts")
+        raise FormulaError(
+            f"a formula has at most {LONGEST_FORMULA} characters", 0, 1, "a shorter one", "use signals for parts"
+        )
     parser = _Parser(text, _tokens(text))
     expression, _ = parser.sum()
     rest = parser.token
@@ -117,7 +122,9 @@ def _tokens(text: str) -> list[_Token]:
         if kind == "end":
             return tokens
         if len(tokens) > MOST_TOKENS:
-            raise FormulaError(f"a formula has at most {MOST_TOKENS} parts", 0, 1, hint="use signals for parts")
+            raise FormulaError(
+                f"a formula has at most {MOST_TOKENS} parts", 0, 1, "a shorter one", "use signals for parts"
+            )
 
 
 class _Parser:
@@ -144,7 +151,9 @@ class _Parser:
     def keep(self, node: Expression, start: int) -> Expression:
         height = 1 + max((self.heights.get(id(a), 0) for a in node.args), default=0)
         if height > TALLEST_TREE:
-            raise FormulaError(f"a formula has at most {TALLEST_TREE} levels", start, 1, hint="use signals for parts")
+            raise FormulaError(
+                f"a formula has at most {TALLEST_TREE} levels", start, 1, "a flatter one", "use signals for parts"
+            )
         self.heights[id(node)] = height
         self.alive.append(node)
         self.spans.setdefault(node, (start, self.tokens[self.position - 1].end))
@@ -168,7 +177,7 @@ class _Parser:
         self.depth += 1
         if self.depth > DEEPEST_NESTING:
             message = f"a formula is nested at most {DEEPEST_NESTING} deep"
-            raise FormulaError(message, token.start, len(token.text), hint="use signals for parts")
+            raise FormulaError(message, token.start, len(token.text), "fewer levels", USE_SIGNALS)
 
     def sum(self) -> tuple[Expression, int]:
         first, start = self.term()
@@ -279,7 +288,7 @@ class _Parser:
         if token.text not in FUNCTIONS:
             raise FormulaError(
                 f"{token.text} is not a function", token.start, len(token.text),
-                "one of " + ", ".join(FUNCTIONS), suggestion(token.text, FUNCTIONS) or "write * between two factors",
+                "one of " + ", ".join(FUNCTIONS), suggestion(token.text, FUNCTIONS, "write * between two factors"),
             )  # fmt: skip
         opened = self.take()
         self.enter(opened)

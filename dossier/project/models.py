@@ -228,7 +228,7 @@ class _ModelReader:
                 if name not in used:
                     self.ledger.fault(
                         name, f"the {kind} {name} is not used", expected="a formula that uses it",
-                        hint=suggestion(name, used - set(self.units)) or "remove it",
+                        hint=suggestion(name, used - set(self.units), "remove it"),
                     )  # fmt: skip
 
     def _scale(self, name: str) -> Quantity:

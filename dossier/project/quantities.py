@@ -50,7 +50,7 @@ def read_unit(text: Text, ledger: Ledger) -> Unit | None:
 
 def _report_unit(where: Text, unit: str, start: int, error: UnitError, ledger: Ledger) -> None:
     word = str(error).removeprefix("unknown unit ")
-    hint = error.hint or suggestion(word, known_names()) or "units are those of the SI, such as m, kN/mm or 1/s"
+    hint = error.hint or suggestion(word, known_names(), "units are those of the SI, such as m, kN/mm or 1/s")
     ledger.fault(where, str(error), text=unit, expected="a known unit", hint=hint, offset=start + error.offset)
 
 

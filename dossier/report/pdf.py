@@ -32,10 +32,10 @@ def pdf_of(paper: Paper, attachments: tuple[Attachment, ...] = ()) -> bytes | Pd
     try:
         import weasyprint  # noqa: PLC0415 - without its native library the HTML must still be written
         from weasyprint.pdf.stream import Stream  # noqa: PLC0415
-    except OSError as error:
+    except (OSError, ImportError) as error:
         missing = str(error).splitlines()[0]
         return PdfUnavailable(
-            f"The PDF was not written: a native library is missing ({missing}). "
+            f"The PDF was not written: its library or a part of it is missing ({missing}). "
             f"On Debian and Ubuntu install it with: {APT_LINE}"
         )
     raw = _written(weasyprint, paper, attachments, shared_glyphs=glyphs.is_supported(Stream))

@@ -1,0 +1,269 @@
+"""The commands as a user meets them: exit codes, messages, files written or left alone."""
+
+import os
+import re
+import shutil
+import signal
+import subprocess
+import sys
+import time
+from pathlib import Path
+
+import pytest
+
+ROOT = Path(__file__).parents[2]
+FAULTS = ROOT / "tests" / "faults"
+
+TINY = """\
+dossier: 1
+document: {number: SD-1, title: "One lag", revision: A, date: 2026-12-01, machine: bench,
+           organisation: Tarn Lane Automation, scope: "the model as written"}
+models:
+  lag:
+    title: "One lag"
+    basis: "Invented"
+    time: continuous
+    states: {x: {unit: m, meaning: "position"}}
+    parameters: {r: {value: 2, unit: 1/s, meaning: "rate"}}
+    equations: {x: "-r*x"}
+operating_points:
+  rest:
+    model: lag
+    equilibrium: {at: {x: 0}}
+    search: {x: [-1, 1]}
+    region: {x: [-0.1, 0.1]}
+    criteria:
+      C1: {claim: asymptotic_stability}
+"""
+UNSTABLE = TINY.replace("-r*x", "r*x")
+ESCAPE = "\x1b"
+
+
+def dossier(*arguments, code=None, environment=None, cwd=None) -> subprocess.CompletedProcess:
+    """Run the command in a process of its own, its output no terminal."""
+    command = [sys.executable, "-c", code, *arguments] if code else [sys.executable, "-m", "dossier", *arguments]
+    return subprocess.run(
+        [str(c) for c in command], capture_output=True, text=True, check=False, cwd=cwd or ROOT,
+        env={**os.environ, "PYTHONPATH": str(ROOT), **(environment or {})},
+    )  # fmt: skip
+
+
+def without(module: str) -> str:
+    """A program that runs the command where `module` cannot be imported."""
+    return f"import sys; sys.modules[{module!r}] = None; from dossier.cli import main; sys.exit(main(sys.argv[1:]))"
+
+
+@pytest.fixture
+def project(tmp_path):
+    path = tmp_path / "project.yaml"
+    path.write_text(TINY, encoding="utf-8")
+    return path
+
+
+@pytest.fixture(scope="module")
+def built(tmp_path_factory):
+    """A finished dossier of the tiny project, and what the build said."""
+    folder = tmp_path_factory.mktemp("built")
+    (folder / "project.yaml").write_text(TINY, encoding="utf-8")
+    return folder / "out", dossier("build", folder)
+
+
+def contents(folder: Path) -> dict[str, bytes]:
+    return {p.relative_to(folder).as_posix(): p.read_bytes() for p in sorted(folder.rglob("*")) if p.is_file()}
+
+
+def test_everything_proved_is_exit_code_zero_with_plain_lines(built):
+    folder, done = built
+    assert done.returncode == 0, done.stderr
+    assert ESCAPE not in done.stdout + done.stderr
+    assert re.search(r"rest\.C1 +asymptotic_stability +nominal +proved +exact", done.stdout)
+    assert "1 proved" in done.stdout and str(folder / "dossier.pdf") in done.stdout
+    assert {"dossier.html", "dossier.pdf", "record.json", "model.json", "MANIFEST.sha256"} <= contents(folder).keys()
+    assert "rest: search" in done.stderr and "Traceback" not in done.stderr
+
+
+def test_something_refuted_is_exit_code_one_and_is_named(project):
+    project.write_text(UNSTABLE, encoding="utf-8")
+    done = dossier("build", project)
+    assert done.returncode == 1
+    assert "rest.C1: " in done.stdout and "1 refuted" in done.stdout
+
+
+@pytest.mark.parametrize("name", sorted(p.name for p in FAULTS.glob("*.yaml") if p.name != "sound.yaml"))
+def test_a_faulty_file_is_exit_code_two_and_nothing_is_written(name, tmp_path):
+    shutil.copy(FAULTS / name, tmp_path / "project.yaml")
+    done = dossier("build", tmp_path / "project.yaml")
+    assert done.returncode == 2
+    assert "Traceback" not in done.stderr and done.stdout == ""
+    places = re.findall(r"^project\.yaml:[0-9]+:[0-9]+: .+$", done.stderr, re.MULTILINE)
+    count = int(re.search(r"([0-9]+) faults?; nothing was written", done.stderr).group(1))
+    assert len(places) == count >= (10 if name == "ten_faults.yaml" else 1)
+    assert done.stderr.count("    expected  ") == done.stderr.count("    hint      ") == count
+    assert [p.name for p in tmp_path.iterdir()] == ["project.yaml"]
+
+
+@pytest.mark.parametrize("content", [None, b"", b"\x00\xff\xfe binary", b"[" * 100_000])
+def test_what_is_no_project_file_is_exit_code_two(content, tmp_path):
+    path = tmp_path / "project.yaml"
+    if content is not None:
+        path.write_bytes(content)
+    done = dossier("build", path)
+    assert done.returncode == 2
+    assert "Traceback" not in done.stderr and "hint" in done.stderr
+    assert not (tmp_path / "out").exists()
+
+
+def test_unknown_operating_points_are_all_named_with_those_that_exist(project):
+    done = dossier("build", project, "--only", "rset", "hold")
+    assert done.returncode == 2
+    assert all(word in done.stderr for word in ("rset", "hold", "rest"))
+    assert not (project.parent / "out").exists()
+
+
+def test_one_operating_point_goes_to_a_folder_of_its_own(project):
+    done = dossier("build", project, "--only", "rest")
+    assert done.returncode == 0
+    assert (project.parent / "out-rest" / "dossier.html").is_file() and not (project.parent / "out").exists()
+    again = dossier("build", project, "--only", "rest")
+    assert again.returncode == 2 and "--out" in again.stderr
+
+
+@pytest.mark.parametrize(
+    ("prepare", "said"),
+    [
+        (lambda out: (out.mkdir(), (out / "thesis.txt").write_text("mine")), "choose another --out"),
+        (lambda out: out.write_text("mine"), "is a file"),
+        (lambda out: (out.parent / "block").write_text("mine"), "is a file"),
+    ],
+    ids=["a foreign folder", "a file", "below a file"],
+)
+def test_an_output_that_belongs_to_somebody_else_is_left_alone(prepare, said, project):
+    out = project.parent / "place"
+    prepare(out)
+    target = project.parent / "block" / "out" if (project.parent / "block").exists() else out
+    before = contents(project.parent)
+    done = dossier("build", project, "--out", target)
+    assert done.returncode == 2 and said in done.stderr
+    assert "search" not in done.stderr, "refused before the work, not after"
+    assert contents(project.parent) == before
+
+
+def test_a_dossier_that_a_person_has_added_to_is_not_overwritten(built, tmp_path):
+    folder = Path(shutil.copytree(built[0], tmp_path / "out"))
+    (tmp_path / "project.yaml").write_text(TINY, encoding="utf-8")
+    (folder / "reviewer-notes.txt").write_text("mine")
+    before = contents(folder)
+    done = dossier("build", tmp_path / "project.yaml")
+    assert done.returncode == 2 and "reviewer-notes.txt" in done.stderr
+    assert contents(folder) == before
+
+
+def test_without_the_pdf_library_the_page_is_written_and_the_packages_are_named(project):
+    done = dossier("build", project, code=without("weasyprint"))
+    assert done.returncode == 3
+    assert "libpangoft2-1.0-0" in done.stderr and "Traceback" not in done.stderr
+    assert (project.parent / "out" / "dossier.html").is_file()
+    assert not (project.parent / "out" / "dossier.pdf").exists()
+    assert dossier("recheck", project.parent / "out").returncode == 0
+
+
+@pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
+def test_an_interruption_leaves_the_earlier_dossier_and_nothing_half_written(number, built, tmp_path):
+    folder = Path(shutil.copytree(built[0], tmp_path / "out"))
+    project = tmp_path / "project.yaml"
+    project.write_text(TINY, encoding="utf-8")
+    before = contents(folder)
+    slow = (
+        "import sys, time, dossier.pipeline as p; q = p.write_dossier\n"
+        "p.render = lambda *a: (print('now', flush=True), time.sleep(60))\n"
+        "from dossier.cli import main; sys.exit(main(sys.argv[1:]))"
+    )
+    running = subprocess.Popen(
+        [sys.executable, "-c", slow, "build", str(project)], stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True,
+        env={**os.environ, "PYTHONPATH": str(ROOT)}, cwd=ROOT,
+    )  # fmt: skip
+    assert running.stdout is not None and running.stdout.readline() == "now\n"
+    began = time.monotonic()
+    running.send_signal(number)
+    _, said = running.communicate(timeout=30)
+    assert running.returncode == 3 and "interrupted" in said and "Traceback" not in said
+    assert time.monotonic() - began < 20
+    assert contents(folder) == before
+    assert sorted(p.name for p in tmp_path.iterdir()) == ["out", "project.yaml"]
+
+
+def test_a_bug_of_the_program_is_told_from_a_fault_of_the_project(project):
+    broken = (
+        "import sys, dossier.pipeline as p\n"
+        "p.assess = lambda *a: 1/0\n"
+        "from dossier.cli import main; sys.exit(main(sys.argv[1:]))"
+    )
+    done = dossier("build", project, code=broken)
+    assert done.returncode == 3
+    assert "a fault of the program, not of your project" in done.stderr and "Nothing was concluded" in done.stderr
+    assert not (project.parent / "out").exists()
+
+
+def test_a_full_disk_leaves_the_earlier_dossier(built, tmp_path):
+    folder = Path(shutil.copytree(built[0], tmp_path / "out"))
+    (tmp_path / "project.yaml").write_text(TINY, encoding="utf-8")
+    before = contents(folder)
+    full = (
+        "import sys, pathlib\n"
+        "def refuse(self, data): raise OSError(28, 'No space left on device')\n"
+        "pathlib.Path.write_bytes = refuse\n"
+        "from dossier.cli import main; sys.exit(main(sys.argv[1:]))"
+    )
+    done = dossier("build", tmp_path / "project.yaml", code=full)
+    assert done.returncode == 2 and "No space left" in done.stderr and "Traceback" not in done.stderr
+    assert contents(folder) == before
+    assert sorted(p.name for p in tmp_path.iterdir()) == ["out", "project.yaml"]
+
+
+def test_a_second_build_elsewhere_under_another_hash_seed_gives_the_same_bytes(built, tmp_path):
+    (tmp_path / "deep" / "er").mkdir(parents=True)
+    (tmp_path / "deep" / "er" / "project.yaml").write_text(TINY, encoding="utf-8")
+    done = dossier(
+        "build", tmp_path / "deep" / "er", cwd=tmp_path, environment={"PYTHONHASHSEED": "4711", "COLUMNS": "43"}
+    )
+    assert done.returncode == 0
+    first, second = contents(built[0]), contents(tmp_path / "deep" / "er" / "out")
+    assert first.keys() == second.keys()
+    assert [n for n in first if first[n] != second[n]] == ["run.json"]
+
+
+def test_inspect_shows_the_model_in_si_and_writes_nothing(project):
+    done = dossier("inspect", project)
+    assert done.returncode == 0
+    assert "operating point rest" in done.stdout and "dx/dt = " in done.stdout and "r = 2" in done.stdout
+    assert [p.name for p in project.parent.iterdir()] == ["project.yaml"]
+
+
+def test_inspect_of_a_faulty_file_is_exit_code_two():
+    done = dossier("inspect", FAULTS / "ten_faults.yaml")
+    assert done.returncode == 2 and done.stdout == ""
+
+
+def test_recheck_verifies_what_was_built(built):
+    done = dossier("recheck", built[0])
+    assert done.returncode == 0
+    assert "verified  rest" in done.stdout and "was verified again" in done.stdout
+
+
+@pytest.mark.parametrize("damage", ["record.json", "project/project.yaml", "MANIFEST.sha256", None])
+def test_recheck_of_what_is_no_whole_dossier_is_exit_code_four(damage, built, tmp_path):
+    folder = tmp_path / "out"
+    if damage is not None:
+        shutil.copytree(built[0], folder)
+        (folder / damage).unlink()
+    done = dossier("recheck", folder)
+    assert done.returncode == 4
+    assert "refused" in done.stdout and "Traceback" not in done.stderr
+
+
+def test_help_and_version_say_what_the_program_is():
+    said = dossier("--help")
+    assert said.returncode == 0
+    assert all(word in said.stdout for word in ("build", "inspect", "recheck", "does not certify a machine"))
+    assert re.fullmatch(r"dossier [0-9]+\.[0-9]+\S*\n", dossier("--version").stdout)
+    assert dossier().returncode == dossier("prove").returncode == 2
