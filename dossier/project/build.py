@@ -20,6 +20,7 @@ def build_project(entry: ProjectEntry, ledger: Ledger) -> tuple[Document, tuple[
     document = _document(entry.document, ledger)
     check_names([(n, "model") for n in entry.models], ledger, in_formulas=False)
     check_names([(n, "operating point") for n in entry.operating_points], ledger, in_formulas=False)
+    check_names([(n, "assumption") for n in entry.assumptions or {}], ledger, in_formulas=False)
     _check_used(entry, ledger)
     models = Table({n: read_model(n, m, ledger) for n, m in entry.models.items()})
     models.is_absent = isinstance(entry.models, Table) and entry.models.is_absent
@@ -37,6 +38,8 @@ def _document(entry: DocumentEntry, ledger: Ledger) -> Document:
             datetime.date.fromisoformat(entry.date)
     except ValueError:
         ledger.fault(entry.date, "this is not a date", expected="year-month-day", hint="such as 2026-11-30")
+    if not entry.scope:
+        ledger.warn(entry.number, "the document has no scope: say what the dossier covers, and what it does not")
     roles = []
     for name in SIGNATURES:
         row = None if entry.sign_off is None else getattr(entry.sign_off, name)

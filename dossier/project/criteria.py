@@ -166,6 +166,11 @@ class _CriterionReader:
                 "claim", "contraction is a claim about sampled models", "a claim about continuous models",
                 "ask for decay_rate",
             )  # fmt: skip
+        if claim == "global_attraction" and self.reading.entry.domain:
+            self._report(
+                "claim", "global_attraction is about the whole state space, but the model has a domain",
+                "attraction of a region, or a model without a domain", "ask for attraction",
+            )  # fmt: skip
         acted = claim == "invariance" or self.entry.under is not None
         if acted and not self.reading.entry.disturbances:
             self._report(

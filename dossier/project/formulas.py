@@ -19,8 +19,8 @@ from fractions import Fraction
 from typing import Final, NamedTuple
 
 from dossier.model.expression import FUNCTIONS, PI, SATURATION, Expression
+from dossier.project.decimals import NumberError, exact
 from dossier.project.faults import suggestion
-from dossier.project.numbers import NumberError, exact
 
 LONGEST_FORMULA: Final = 20_000
 """Characters of one formula; above every formula a person can review."""

@@ -94,6 +94,7 @@ class _ModelReader:
         """Everything, in the order of the file; the model is whole only if nothing was reported."""
         before = len(self.ledger.faults)
         self._check_names()
+        self._check_meanings()
         parameters = {str(n): read_parameter(n, e, self.units[n], self.ledger) for n, e in self.parameters.items()}
         signals = {str(n): self._formula(e.is_, _dimension(self.units[n]), f"the unit of {n}") for n, e in
                    self.signals.items()}  # fmt: skip
@@ -135,6 +136,12 @@ class _ModelReader:
             self.ledger.fault(self.name, f"the model has {count} states", expected=f"at most {MOST_STATES} states")
         if not self.entry.states and not _is_absent(self.entry.states):
             self.ledger.fault(self.name, "the model has no states", expected="at least one state")
+
+    def _check_meanings(self) -> None:
+        """One warning for all states and parameters that the tables of the dossier could not explain."""
+        unsaid = [n for table in (self.entry.states, self.parameters) for n, e in table.items() if not e.meaning]
+        if unsaid:
+            self.ledger.warn(unsaid[0], f"no meaning is given for {listed(unsaid)} of {self.name}")
 
     def _formula(self, text: Text, wanted: Dimension | None, why: str) -> Checked | None:
         checked = check_formula(text, self.scope, self.ledger)

@@ -8,9 +8,9 @@ from fractions import Fraction
 from dossier.model.ball import Ball
 from dossier.model.case import Parameter, Quantity, value_of
 from dossier.model.region import Interval
+from dossier.project.decimals import NumberError, split
 from dossier.project.faults import Ledger
 from dossier.project.located import Items, Text
-from dossier.project.numbers import NumberError, split
 from dossier.project.quantities import Meaning, end, read_interval, read_quantity, scale_of
 from dossier.project.schema import ParameterEntry, SetEntry
 from dossier.project.units import PERCENT, Unit

@@ -15,7 +15,7 @@ from dossier.project.faults import Ledger, listed, suggestion
 from dossier.project.formulas import parse
 from dossier.project.located import Table, Text
 from dossier.project.models import ModelReading
-from dossier.project.names import check_names
+from dossier.project.names import check_criterion_names, check_names
 from dossier.project.parameters import ParameterReading, set_parameter
 from dossier.project.quantities import Meaning, read_quantity, read_sides
 from dossier.project.schema import PointEntry
@@ -55,10 +55,15 @@ class _PointReader:
         limits = Box.from_mapping(states, self._offsets(entry.limits, "limits"))
         search = self._search(at or near, region, limits)
         check_names([(n, "criterion") for n in entry.criteria], self.ledger, in_formulas=False)
+        check_criterion_names(entry.criteria, self.ledger)
         if not entry.criteria and not (isinstance(entry.criteria, Table) and entry.criteria.is_absent):
             self.ledger.fault(self.name, "no criterion is asked for", expected="at least one criterion")
         criteria = read_criteria(PointContext(self.reading, parameters, entry, self.ledger))
         model = self.reading.model
+        if not entry.meaning:
+            self.ledger.warn(
+                self.name, f"the operating point {self.name} has no meaning: say what it is on the machine"
+            )
         if model is None or len(self.ledger.faults) > before:
             return None
         known = {n: p.parameter for n, p in parameters.items() if p is not None}

@@ -9,9 +9,9 @@ from typing import Final, Literal
 
 from dossier.model.case import Quantity, value_of
 from dossier.model.region import Interval
+from dossier.project.decimals import NumberError, Written, split
 from dossier.project.faults import Ledger, suggestion
 from dossier.project.located import Text
-from dossier.project.numbers import NumberError, Written, split
 from dossier.project.units import DECIBEL, Dimension, Unit, UnitError, known_names, parse_unit
 
 END_BITS: Final = 110
@@ -90,6 +90,12 @@ def _unit_of(text: Text, written: Written, meaning: Meaning, ledger: Ledger) -> 
         return None
     if unit.is_decibel != declared.is_decibel or unit.dimension != declared.dimension:
         _report_dimension(text, written, unit, declared, ledger)
+        return None
+    if unit.is_percent and not (declared.is_percent or declared.text == "1"):
+        ledger.fault(
+            text, "a percentage is a ratio", text=written.unit, expected=f"a quantity in {declared.text}",
+            hint=f"write it in {declared.text}, or give a reserve a criterion of its own", offset=written.offset,
+        )  # fmt: skip
         return None
     return unit
 
