@@ -227,7 +227,7 @@ def build_evidence(
         tuple((name, str(known), str(found), passed) for name, known, found, passed in tests),
     )
     files = tuple((name, _sha256(content)) for name, content in project.files)
-    return Evidence(project.document, project.assumptions, points, provenance, files)
+    return Evidence(project.document, project.assumptions, points, provenance, files, project.warnings)
 
 
 def _sha256(content: bytes) -> str:

@@ -95,6 +95,7 @@ def _document(project: Project, opened: Opened) -> Iterator[str]:
     fields = ("number", "title", "revision", "date", "machine", "organisation")
     document = {f: getattr(project.document, f) for f in fields}
     yield from differences(record.get("document"), document, "record.json: document")
+    yield from differences(record.get("warnings"), list(project.warnings), "record.json: warnings")
     counts = Counter(str(c.get("verdict")) for p in opened.points.values() for c in p["criteria"].values())
     yield from differences(record.get("conclusion"), {v: counts.get(v, 0) for v in VERDICTS}, "record.json: conclusion")
     if str(record.get("effort")) not in BOXES:

@@ -75,6 +75,7 @@ def record_data(evidence: Evidence) -> dict[str, Any]:
             "number": document.number, "title": document.title, "revision": document.revision,
             "date": document.date, "machine": document.machine, "organisation": document.organisation,
         },
+        "warnings": list(evidence.warnings),
         "conclusion": {v: counts.get(v, 0) for v in VERDICTS},
         "operating_points": {p.case.name: point_data(p) for p in evidence.points},
         "components": [encode(c) for c in evidence.provenance.components],

@@ -137,3 +137,5 @@ class Evidence:
     provenance: Provenance
     project_files: tuple[tuple[str, str], ...] = ()
     """Relative name and SHA-256 of the project file and its includes."""
+    warnings: tuple[str, ...] = ()
+    """What the reading of the project file remarked, with file, line and column."""

@@ -20,7 +20,7 @@ EXCLUSIONS = (
 def scope_section(context: Context, number: str) -> Section:
     """What the dossier covers, and what it does not."""
     document = context.evidence.document
-    blocks: list[Block] = [Paragraph((document.scope,))]
+    blocks: list[Block] = [Paragraph((document.scope or "The project states no scope.",))]
     rows = tuple(
         Row(
             (
@@ -46,6 +46,9 @@ def scope_section(context: Context, number: str) -> Section:
         blocks.append(
             Facts((("Named as applicable", standards), ("Standing", ("named by the project, not assessed here",))))
         )
+    if context.evidence.warnings:
+        blocks.append(Subheading(("Remarked while reading the project file",)))
+        blocks.append(Bullets(tuple((text,) for text in context.evidence.warnings)))
     blocks.append(Subheading(("Not covered",)))
     blocks.append(Bullets(tuple((text,) for text in EXCLUSIONS)))
     return Section("scope", number, "Scope and exclusions", tuple(blocks), new_page=True)
