@@ -2,6 +2,7 @@
 
 import ast
 import re
+import shutil
 import subprocess
 from pathlib import Path
 
@@ -30,9 +31,10 @@ ALLOWED = 'scope="sess' + 'ion"'
 
 def tracked() -> list[Path]:
     """The files under version control; without one, all that is not generated."""
-    done = subprocess.run(["git", "ls-files", "-z"], cwd=ROOT, capture_output=True, check=False)
-    if done.returncode == 0 and done.stdout:
-        return [ROOT / name for name in done.stdout.decode().split("\0") if name and (ROOT / name).is_file()]
+    if git := shutil.which("git"):
+        done = subprocess.run([git, "ls-files", "-z"], cwd=ROOT, capture_output=True, check=False)
+        if done.returncode == 0 and done.stdout:
+            return [ROOT / name for name in done.stdout.decode().split("\0") if name and (ROOT / name).is_file()]
     generated = {".git", ".venv", "__pycache__", "out", "build", "dist", ".hypothesis", ".pytest_cache", ".ruff_cache"}
     return [p for p in ROOT.rglob("*") if p.is_file() and not generated & set(p.relative_to(ROOT).parts)]
 
