@@ -7,7 +7,7 @@ Search finds, checks prove; what a search returns reaches a verdict only through
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, replace
 from fractions import Fraction
 from pathlib import Path
@@ -17,8 +17,9 @@ import dossier
 from dossier.checks.assess import Assessment, assess, locate
 from dossier.checks.cover import check_cover
 from dossier.checks.criteria.linear import region_and_level
-from dossier.checks.equilibria import enclose_equilibria
+from dossier.checks.equilibria import Unbounded, enclose_equilibria
 from dossier.checks.linear import classify, routh_claim
+from dossier.checks.listing import list_equilibria, nearest
 from dossier.checks.lyapunov import check_lyapunov, ellipsoid
 from dossier.checks.self_test import self_test
 from dossier.checks.sets import covers
@@ -34,10 +35,12 @@ from dossier.model.case import NOMINAL, Case, Criterion
 from dossier.model.claim import Claim, CoverClaim, LyapunovClaim, RootsClaim, SpectralRegion
 from dossier.model.dossier import Campaign, Evidence, PointEvidence, Provenance
 from dossier.model.equilibrium import Equilibrium
+from dossier.model.figures import figure
 from dossier.model.finding import Finding
 from dossier.model.loop import model_data, model_hash
 from dossier.model.region import Box
 from dossier.model.text import canonical
+from dossier.project.faults import Fault
 from dossier.project.reader import Faults, Project, read_project
 from dossier.report.render import Rendered, render
 from dossier.search.conic import meter
@@ -59,14 +62,20 @@ Progress = Callable[[str, str], None]
 """Called with the operating point and the stage that begins."""
 
 Sets = tuple[LyapunovClaim | CoverClaim, ...]
+Roots = RootsClaim | Unbounded
 Found = tuple[tuple[Claim, ...], tuple[Attempt, ...]]
 
 
-def build_point(case: Case, effort: Effort, progress: Progress, stopwatch: Stopwatch) -> PointEvidence:
-    """Everything about one operating point; a plain function of its arguments."""
+def build_point(
+    case: Case, effort: Effort, progress: Progress, stopwatch: Stopwatch, roots: Roots | None = None
+) -> PointEvidence:
+    """Everything about one operating point; a plain function of its arguments.
+
+    `roots` is what `find_roots` gives; it is sought here where it is not handed in.
+    """
     with stopwatch.stage("search"):
         progress(case.name, "search")
-        claims, attempts = find_claims(case, effort, progress)
+        claims, attempts = find_claims(case, effort, progress, roots or find_roots(case, effort))
     with stopwatch.stage("proof"):
         progress(case.name, "proof")
         assessment = assess(case, claims, effort.boxes)
@@ -83,9 +92,13 @@ def build_point(case: Case, effort: Effort, progress: Progress, stopwatch: Stopw
     )  # fmt: skip
 
 
-def find_claims(case: Case, effort: Effort, progress: Progress) -> Found:
+def find_roots(case: Case, effort: Effort) -> Roots:
+    """Boxes around every equilibrium in the search box of `case`, or why there are none."""
+    return enclose_equilibria(case, seed_equilibria(case, effort), effort.boxes)
+
+
+def find_claims(case: Case, effort: Effort, progress: Progress, roots: Roots) -> Found:
     """Every claim the searches can offer for `case`, none of them believed, and what was tried."""
-    roots = enclose_equilibria(case, seed_equilibria(case, effort), effort.boxes)
     listed = roots if isinstance(roots, RootsClaim) else None
     equilibria, _, _ = locate(case, listed)
     claims: list[Claim] = [] if listed is None else [listed]
@@ -207,16 +220,45 @@ class Build:
     stopwatch: Stopwatch
 
 
+def ambiguous_guesses(project: Project, cases: tuple[Case, ...], roots: Mapping[str, Roots]) -> tuple[Fault, ...]:
+    """A fault for every operating point whose guess is about equally far from several equilibria.
+
+    Only the list of equilibria can tell; whichever was taken, its verdicts might not be about the point meant.
+    """
+    faults = []
+    for case in cases:
+        listed = roots[case.name]
+        rivals = nearest(case, list_equilibria(case, listed)) if isinstance(listed, RootsClaim) else ()
+        if len(rivals) > 1 and case.name in project.guesses:
+            guess = project.guesses[case.name]
+            places = "; ".join(_place(case, e) for e in rivals)
+            faults.append(
+                Fault(
+                    project.files[0][0], guess.line, guess.column,
+                    f"near of {case.name} is about equally far from {len(rivals)} equilibria", guess.text,
+                    "a guess much nearer to one of them (distances in half widths of the region)", f"in SI: {places}",
+                )
+            )  # fmt: skip
+    return tuple(faults)
+
+
+def _place(case: Case, equilibrium: Equilibrium) -> str:
+    pairs = zip(case.model.state_names, equilibrium.state, strict=True)
+    return ", ".join(f"{name} = {figure(ball.middle)}" for name, ball in pairs)
+
+
 def build_evidence(
-    project: Project, cases: tuple[Case, ...], effort_name: str, command: str, progress: Progress, stopwatch: Stopwatch
-) -> Evidence:
-    """All operating points of `cases`, in order."""
+    project: Project, cases: tuple[Case, ...], effort_name: str, command: str, progress: Progress,
+    stopwatch: Stopwatch, roots: Mapping[str, Roots] | None = None,
+) -> Evidence:  # fmt: skip
+    """All operating points of `cases`, in order; `roots` as for `build_point`, by operating point."""
     tests = self_test()
     failed = [name for name, _, _, passed in tests if not passed]
     if failed:
         raise ArithmeticError(f"this machine does not compute as the proofs assume: {', '.join(failed)}")
     effort = EFFORTS[effort_name]
-    points = tuple(build_point(case, effort, progress, stopwatch) for case in cases)
+    known = roots or {}
+    points = tuple(build_point(case, effort, progress, stopwatch, known.get(case.name)) for case in cases)
     package = Path(dossier.__file__).parent
     provenance = Provenance(
         dossier.__version__,
@@ -282,7 +324,13 @@ def build(
         return f"--only writes to a new folder, but {target} exists; name another with --out"
     refuse_foreign_folder(target)
     command = f"dossier build {path.name} --effort {effort_name}" + "".join(f" --only {n}" for n in only)
-    evidence = build_evidence(project, cases, effort_name, command, progress, stopwatch)
+    with stopwatch.stage("search"):
+        progress("", "equilibria")
+        roots = {case.name: find_roots(case, EFFORTS[effort_name]) for case in cases}
+    ambiguous = ambiguous_guesses(project, cases, roots)
+    if ambiguous:
+        return Faults(ambiguous)
+    evidence = build_evidence(project, cases, effort_name, command, progress, stopwatch, roots)
     files = evidence_files(project, evidence)
     with stopwatch.stage("rendering"):
         progress("", "rendering")

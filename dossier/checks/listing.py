@@ -88,16 +88,23 @@ def _equilibrium(case: Case, state: Enclosure, count: int) -> Equilibrium:
 
 def _nearest_chosen(case: Case, listed: Sequence[Equilibrium]) -> tuple[Equilibrium, ...]:
     """The equilibrium nearest to the guess, with a remark where the next one is hardly further."""
-    if case.near is None:
+    if case.near is None or not listed:
         return tuple(listed)
+    best, *rivals = nearest(case, listed)
+    remarks = best.remarks
+    if rivals:
+        names = ", ".join(r.identifier for r in rivals)
+        remarks = (*remarks, f"{names} is as near to the guess within 10 %")
+    return tuple(replace(e, chosen=True, remarks=remarks) if e is best else e for e in listed)
+
+
+def nearest(case: Case, listed: Sequence[Equilibrium]) -> tuple[Equilibrium, ...]:
+    """The equilibrium nearest to the guess of `case`, then all that are as near within `TIE`; none without a guess."""
+    if case.near is None:
+        return ()
     distances = [region_distance(case, e.state, case.near) for e in listed]
     order = sorted(range(len(listed)), key=distances.__getitem__)
-    best = order[0]
-    remarks = listed[best].remarks
-    rivals = [listed[k].identifier for k in order[1:] if distances[k] <= TIE * distances[best]]
-    if rivals:
-        remarks = (*remarks, f"{', '.join(rivals)} is as near to the guess within 10 %")
-    return tuple(replace(e, chosen=True, remarks=remarks) if k == best else e for k, e in enumerate(listed))
+    return tuple(listed[k] for k in order if distances[k] <= TIE * distances[order[0]])
 
 
 def region_distance(case: Case, state: Enclosure, guess: Sequence[Fraction]) -> float:

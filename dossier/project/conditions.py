@@ -13,7 +13,8 @@ from typing import Final, Literal
 from flint import arb
 
 from dossier.model.ball import WORKING_BITS, Ball, enclose, evaluate, precision
-from dossier.model.expression import SATURATION, Condition, Expression, conditions, nodes, sub, substitute
+from dossier.model.case import Parameter
+from dossier.model.expression import SATURATION, Condition, Expression, conditions, names, nodes, sub, substitute
 from dossier.model.loop import ordered_signals
 from dossier.model.region import Box, Interval
 from dossier.project.dimensions import Checked
@@ -37,19 +38,21 @@ def check_conditions(
     reading: ModelReading,
     asked: Sequence[tuple[Text, Checked]],
     box: Box,
-    spreads: Mapping[str, Interval],
+    parameters: Mapping[str, Parameter],
     ledger: Ledger,
 ) -> None:
     """Report what is proved to be undefined somewhere in `box`; warn of what is not excluded.
 
     `asked` are the formulas of criteria, looked at like those of the model.
     """
-    sides = dict(box.items()) | dict(spreads)
-    sides |= {str(n): Interval.point(Fraction(0)) for n in reading.entry.disturbances or {}}
+    rest = {str(n): Interval.point(Fraction(0)) for n in reading.entry.disturbances or {}}
+    sides = {**dict(box.items()), **{n: p.spread for n, p in parameters.items()}, **rest}
+    nominal = {n: Interval(p.nominal.lower, p.nominal.upper) for n, p in parameters.items()}
     place = Box(tuple(sides), tuple(sides.values()))
+    at_nominal = Box(place.names, tuple(nominal.get(n, i) for n, i in sides.items()))
     formulas = _inlined(reading)
     for text, checked in (*reading.formulas, *asked):
-        for node in _inverted_limits(checked.expression, formulas, place):
+        for node in _inverted_limits(checked.expression, formulas, at_nominal):
             offset, source = checked.formula.excerpt(node)
             ledger.fault(
                 text, "the lower limit lies above the upper one", text=source, expected="sat(value, lower, upper)",
@@ -92,6 +95,8 @@ def _answer(condition: Condition, expression: Expression, place: Box) -> Answer:
 
     A denominator that has either sign somewhere is zero in between, as it is continuous where it is defined.
     """
+    used = [(n, i) for n, i in place.items() if n in names(expression)]
+    place = Box(tuple(n for n, _ in used), tuple(i for _, i in used))
     waiting, signs, looked, left_open = [place], set(), 0, False
     with precision(WORKING_BITS):
         while waiting:
@@ -145,7 +150,7 @@ def _halved(piece: Box, whole: Box) -> tuple[Box, Box] | None:
 
 
 def _inverted_limits(expression: Expression, formulas: Mapping[str, Expression], place: Box) -> Iterator[Expression]:
-    """Saturations whose lower limit is proved to lie above the upper one everywhere in `place`."""
+    """Saturations whose lower limit is proved to lie above the upper one all over `place`."""
     for node in nodes(expression):
         if node.op == SATURATION:
             _, lower, upper = node.args

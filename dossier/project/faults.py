@@ -43,6 +43,7 @@ class Ledger:
     file: str
     faults: list[Fault] = field(default_factory=list)
     warnings: list[str] = field(default_factory=list)
+    _told: set[Fault] = field(default_factory=set)
 
     def fault(
         self,
@@ -70,7 +71,8 @@ class Ledger:
         if len(shown) > LONGEST_EXCERPT:
             shown = shown[: LONGEST_EXCERPT - 1] + "…"
         found = Fault(self.file, line, column, message, shown, expected, hint or GENERAL_HINT)
-        if found not in self.faults:
+        if found not in self._told:
+            self._told.add(found)
             self.faults.append(found)
 
     def warn(self, where: Text, message: str, offset: int = 0) -> None:

@@ -71,7 +71,9 @@ class _PointReader:
         box = Box(
             states, tuple(d if d.is_bounded else s for d, s in zip(domain.intervals, search.intervals, strict=True))
         )
-        check_conditions(self.reading, self._asked(), box, {n: p.spread for n, p in known.items()}, self.ledger)
+        if len(known) < len(parameters):
+            return None
+        check_conditions(self.reading, self._asked(), box, known, self.ledger)
         if len(self.ledger.faults) > before:
             return None
         return Case(

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import hashlib
+from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Final
@@ -11,11 +12,20 @@ from dossier.model.case import Assumption, Case
 from dossier.model.dossier import Document
 from dossier.project.build import build_project
 from dossier.project.faults import Fault, Ledger
-from dossier.project.located import compose
+from dossier.project.located import Text, compose
 from dossier.project.shape import shape
 
 LARGEST_FILE: Final = 500_000
 """Bytes of a project file; a large one has a tenth of this."""
+
+
+@dataclass(frozen=True, slots=True)
+class Guess:
+    """The place of a ``near`` in the file, and its text."""
+
+    line: int
+    column: int
+    text: str
 
 
 @dataclass(frozen=True, slots=True)
@@ -28,6 +38,8 @@ class Project:
     warnings: tuple[str, ...]
     files: tuple[tuple[str, bytes], ...]
     sha256: str
+    guesses: Mapping[str, Guess]
+    """Where the file guesses an equilibrium, by operating point."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -55,8 +67,14 @@ def read_project(path: Path) -> Project | Faults:
         return Faults(ledger.in_order())
     files = ((path.name, content),)
     return Project(
-        document, assumptions, cases, tuple(ledger.warnings), files, hashlib.sha256(content).hexdigest()
+        document, assumptions, cases, tuple(ledger.warnings), files, hashlib.sha256(content).hexdigest(),
+        {str(n): _guess(p.equilibrium.near) for n, p in entry.operating_points.items() if p.equilibrium.near},
     )  # fmt: skip
+
+
+def _guess(near: Mapping[Text, Text]) -> Guess:
+    first = next(iter(near))
+    return Guess(first.line, first.column, ", ".join(f"{n}: {v}" for n, v in near.items()))
 
 
 def _content(path: Path, ledger: Ledger) -> bytes | None:

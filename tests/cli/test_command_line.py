@@ -113,6 +113,20 @@ def test_what_is_no_project_file_is_exit_code_two(content, tmp_path):
     assert not (tmp_path / "out").exists()
 
 
+def test_a_guess_halfway_between_two_equilibria_is_a_fault_of_the_file(project):
+    """x' = r x (x - 1)(x + 1) has the equilibria -1, 0 and 1."""
+    text = TINY.replace("-r*x", "r*(x - x^3/L^2)").replace('rate"}', 'rate"}, L: {value: 1, unit: m, meaning: size}')
+    text = text.replace("{at: {x: 0}}", "{near: {x: 0.5}}").replace("search: {x: [-1, 1]}", "search: {x: [-2, 2]}")
+    project.write_text(text, encoding="utf-8")
+    done = dossier("build", project)
+    assert done.returncode == 2, done.stderr
+    assert re.search(r"project\.yaml:[0-9]+:[0-9]+: near of rest is about equally far from 2 equilibria", done.stderr)
+    assert "x: 0.5" in done.stderr and "x = 0; x = 1" in done.stderr and "1 fault; nothing was written" in done.stderr
+    assert [p.name for p in project.parent.iterdir()] == ["project.yaml"]
+    project.write_text(text.replace("{x: 0.5}", "{x: 0.6}"), encoding="utf-8")
+    assert dossier("build", project).returncode == 0
+
+
 def test_unknown_operating_points_are_all_named_with_those_that_exist(project):
     done = dossier("build", project, "--only", "rset", "hold")
     assert done.returncode == 2

@@ -331,6 +331,28 @@ def test_a_denominator_that_intervals_exclude_piece_by_piece_is_no_warning(tmp_p
     assert not any("away from 0" in w for w in result.warnings)
 
 
+def test_only_the_sides_a_condition_depends_on_are_cut(tmp_path: Path) -> None:
+    changes = (("m: {value: 2, unit: kg, tolerance: 5 %}", "m: {value: 1, unit: kg, range: [-1, 3]}"),)
+    result = variant(tmp_path, *changes)
+    assert isinstance(result, Faults)
+    assert ["m becomes 0" in f.message for f in result.faults] == [True]
+
+
+@pytest.mark.parametrize(("value", "count"), [("[1, 2]", 1), ("{a: 1}", 2)])
+def test_a_set_value_of_the_wrong_shape_is_told_and_nothing_breaks_off(tmp_path: Path, value: str, count: int) -> None:
+    result = variant(tmp_path, ("    model: cart\n", f"    model: cart\n    set: {{m: {value}}}\n"))
+    assert isinstance(result, Faults)
+    assert len(result.faults) == count
+
+
+def test_thousands_of_faults_are_told_in_seconds(tmp_path: Path) -> None:
+    many = "".join(f"      p{i}: {{value: 1, unit: m}}\n" for i in range(5_000))
+    began = time.monotonic()
+    result = variant(tmp_path, ("      b: {value: 40", many + "      b: {value: 40"))
+    assert isinstance(result, Faults) and len(result.faults) == 5_000
+    assert time.monotonic() - began < 20
+
+
 def test_global_attraction_is_for_models_without_a_domain(tmp_path: Path) -> None:
     changes = (("    domain: {x: [-1, 1]}\n", ""), ("C1: {claim: attraction}", "C1: {claim: global_attraction}"))
     assert isinstance(variant(tmp_path, *changes), Project)
