@@ -15,6 +15,7 @@ from typing import Final
 
 import dossier
 from dossier.checks.assess import Assessment, assess, locate
+from dossier.checks.combination import check_combination
 from dossier.checks.cover import check_cover
 from dossier.checks.criteria.linear import region_and_level
 from dossier.checks.equilibria import Unbounded, enclose_equilibria
@@ -36,7 +37,7 @@ from dossier.model.claim import Claim, CoverClaim, LyapunovClaim, RootsClaim, Sp
 from dossier.model.dossier import Campaign, Evidence, PointEvidence, Provenance
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.figures import figure
-from dossier.model.finding import Finding
+from dossier.model.finding import Enclosure, Finding
 from dossier.model.loop import model_data, model_hash
 from dossier.model.region import Box
 from dossier.model.text import canonical
@@ -51,6 +52,7 @@ from dossier.search.frequency import seek_crossings
 from dossier.search.goals import ABOUT_SPECTRUM, SetTask, loops, set_tasks, spectral_tasks, stronger_levels
 from dossier.search.linearisation import seek_matrix
 from dossier.search.quadratic import seek_quadratic
+from dossier.search.worst import seek_worst
 
 SEED: Final = 20_140
 """Seed of the simulated campaigns, so that a build can be repeated."""
@@ -136,8 +138,15 @@ def _spectral_claims(case: Case, chosen: Equilibrium, effort: Effort) -> Found:
     """A Lyapunov inequality per task, then the same for more than was asked, so that the reserve shows."""
     claims: list[Claim] = []
     attempts: list[Attempt] = []
-    values = spectral_values(case, chosen)
+    nominal = spectral_values(case, chosen)
+    at_worst: dict[SpectralRegion, Mapping[str, Enclosure]] = {}
     for task in spectral_tasks(case, _wanted(case)):
+        if task.over != NOMINAL and task.region not in at_worst:
+            tried, worst = seek_worst(case, chosen, task.region, effort, task.worst_suffix)
+            attempts += tried
+            claims += [] if worst is None else [worst]
+            at_worst[task.region] = nominal if worst is None else check_combination(case, chosen, worst).facts
+        values = nominal if task.over == NOMINAL else at_worst[task.region]
         tried, claim = seek_matrix(case, chosen, task.over, task.region, task.level, effort, task.suffix, cell_holds)
         attempts += tried
         if claim is None:

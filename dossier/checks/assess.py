@@ -9,6 +9,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
 from typing import Final
 
+from dossier.checks.combination import check_combination
 from dossier.checks.cover import check_cover
 from dossier.checks.criteria.existence import establish_existence
 from dossier.checks.criteria.linear import establish_linear
@@ -22,7 +23,16 @@ from dossier.checks.lyapunov import check_lyapunov
 from dossier.checks.spectral import check_matrix
 from dossier.checks.spectrum import eigenvalue_discs, spectral_values
 from dossier.model.case import Case, Criterion
-from dossier.model.claim import Claim, CoverClaim, LyapunovClaim, MatrixClaim, RootsClaim, RouthClaim, SturmClaim
+from dossier.model.claim import (
+    Claim,
+    CombinationClaim,
+    CoverClaim,
+    LyapunovClaim,
+    MatrixClaim,
+    RootsClaim,
+    RouthClaim,
+    SturmClaim,
+)
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.finding import Finding, Premise
 from dossier.model.outcome import LoopMargins
@@ -154,6 +164,8 @@ def _verify(
             continue
         if isinstance(claim, MatrixClaim):
             findings.append(check_matrix(case, chosen, claim))
+        elif isinstance(claim, CombinationClaim):
+            findings.append(check_combination(case, chosen, claim))
         elif isinstance(claim, LyapunovClaim):
             findings.append(check_lyapunov(case, chosen, claim))
             findings.append(check_cover(case, chosen, claim, min(boxes, SECOND_WITNESS_BOXES)))

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Final, Literal
 
@@ -168,6 +169,15 @@ class Case:
     def identifier(self) -> str:
         """The operating point's id, the prefix of the ids of its criteria and evidence."""
         return self.name
+
+
+def at_combination(case: Case, values: Mapping[str, Fraction]) -> Case:
+    """`case` built with exactly these values of the named parameters: they are its nominal ones and have no spread."""
+    parameters = tuple(
+        replace(p, nominal=Ball(values[p.name]), spread=Interval.point(values[p.name])) if p.name in values else p
+        for p in case.model.parameters
+    )
+    return replace(case, model=replace(case.model, parameters=parameters))
 
 
 def value_of(quantity: Quantity) -> Ball:

@@ -93,6 +93,18 @@ class RouthClaim(Claim):
 
 
 @dataclass(frozen=True, slots=True)
+class CombinationClaim(Claim):
+    """Kind ``combination``: the linear part at one exact combination of the parameters' spreads.
+
+    The worst one a search could find: it bounds from the other side what is proved over the whole box, or
+    refutes it.  `values` names every parameter with a spread, in SI.
+    """
+
+    equilibrium: str
+    values: Mapping[str, Fraction]
+
+
+@dataclass(frozen=True, slots=True)
 class Gram:
     """The polynomial z' `matrix` z over the monomials `basis` of the offsets."""
 
@@ -168,6 +180,7 @@ KINDS: Mapping[str, type[Claim]] = {
     "roots": RootsClaim,
     "matrix": MatrixClaim,
     "routh": RouthClaim,
+    "combination": CombinationClaim,
     "gram": LyapunovClaim,
     "cover": CoverClaim,
     "sturm": SturmClaim,

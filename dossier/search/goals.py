@@ -43,6 +43,11 @@ class SpectralTask:
     level: Fraction
     suffix: str
 
+    @property
+    def worst_suffix(self) -> str:
+        """Certificate suffix of the worst combination found: ``P-C2`` has ``W-C2`` on the other side."""
+        return f"W{self.suffix[1:]}"
+
 
 def set_tasks(case: Case, equilibrium: Equilibrium) -> Iterator[SetTask]:
     """One task per scope and region: all criteria about it in one program, then attraction by itself."""

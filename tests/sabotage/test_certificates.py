@@ -20,14 +20,19 @@ KINDS = {
     "roots": ("rest", "R1"),
     "routh": ("rest", "L1"),
     "matrix": ("rest", "P-C1"),
+    "combination": ("rest", "W-C1"),
     "gram": ("hold", "V2"),
     "sturm": ("rest", "M-u"),
     "cover": ("lean", "V2-nominal"),
 }
 """One certificate of every kind: its operating point and its own name there."""
 
-NOT_APPLICABLE = {("widened_region", "routh"), ("widened_region", "cover")}
-"""Certificates that state no region of their own."""
+NOT_APPLICABLE = {
+    *(("widened_region", k) for k in ("routh", "cover", "combination")),
+    ("level", "combination"),
+    ("reordered_monomials", "combination"),
+}
+"""Certificates that state no region of their own; a combination has no level and no monomials either."""
 
 
 def file_of(kind: str) -> tuple[str, str]:
@@ -55,6 +60,7 @@ WITNESSES = {
     "roots": {"solutions", "boxes"},
     "routh": set(),
     "matrix": {"cells"},
+    "combination": set(),
     "gram": {"decrease"},
     "sturm": {"gain_crossings", "phase_crossings", "peak_candidates"},
     "cover": {"boxes"},
@@ -99,6 +105,12 @@ FORGERIES = {
     "a faster decay than the loop has": ("rest", "P-C1", scaled("level", 2), "C1"),
     "a set far larger than the proved one": ("hold", "V2 V2-tight", scaled("level", 100), "C1"),
     "a set beyond the next equilibrium": ("lean", "V2-nominal", scaled("level", 50), "C1"),
+    "a combination within every bound": (
+        "rest", "W-C1", lambda c: c.update(values={"k1": "1000", "m": "10"}), "C4",
+    ),
+    "a combination outside of the tolerances": (
+        "rest", "W-C1", lambda c: c.update(values={"k1": "1000", "m": "1"}), "C4",
+    ),
     "a list of no equilibria": ("rest", "R1", lambda c: c.update(solutions=[]), "C3"),
     "a list that hides an undecided box": ("rest", "R1", lambda c: c.update(undecided=[c["search"]]), "C3"),
     "an unstable point called stable": (

@@ -101,7 +101,7 @@ def changed(data: dict, *keys, to) -> None:
 
 WHOLE = {
     "a number of the document": (("document", "number"), "SD-9999", "record.json: document.number: says"),
-    "counts that flatter": (("conclusion", "not established"), 0, "record.json: conclusion.not established: says"),
+    "counts that flatter": (("conclusion", "refuted"), 0, "record.json: conclusion.refuted: says"),
     "another project": (("project_sha256",), "0" * 64, "record.json: project_sha256: made from another file"),
     "another format": (("record",), 2, "record.json: format 2"),
     "another effort": (("effort",), "heroic", "record.json: effort: expected one of quick"),
@@ -200,7 +200,7 @@ def test_repeated_keys_are_refused_whichever_of_them_is_true(damaged, capsys):
     """Readers of JSON differ in which of two equal keys they take."""
     folder = damaged("rest")
     text = (folder / "record.json").read_text(encoding="utf-8")
-    honest = '"verdict": "not established"'
+    honest = '"verdict": "refuted"'
     assert honest in text
     (folder / "record.json").write_text(
         text.replace(honest, f'"verdict": "proved",\n     {honest}', 1), encoding="utf-8"

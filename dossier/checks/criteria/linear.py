@@ -6,6 +6,7 @@ from collections.abc import Iterator
 from fractions import Fraction
 from typing import Final
 
+from dossier.checks.combination import BOUNDARY, OUTSIDE, count_of, words_of
 from dossier.checks.criteria.common import conclude, open_question, refute, set_aside, stated_bounds, within
 from dossier.checks.knowledge import Knowledge
 from dossier.checks.linear import routh_claim_id
@@ -47,6 +48,7 @@ def establish_linear(knowledge: Knowledge, criterion: Criterion) -> tuple[Findin
         return (set_aside(knowledge, criterion, "not applicable", "contraction per sample needs a sampled model"),)
     found = [
         *_refutations(knowledge, criterion, equilibrium),
+        *_at_combinations(knowledge, criterion),
         *_by_matrix(knowledge, criterion),
         *_by_count(knowledge, criterion, equilibrium),
         *_by_value(knowledge, criterion),
@@ -75,8 +77,7 @@ def _refutations(knowledge: Knowledge, criterion: Criterion, equilibrium: Equili
     count = _count(knowledge, equilibrium)
     at = {"combination": "nominal", "equilibrium": equilibrium.identifier}
     if count is not None and _contradicts_stability(knowledge, criterion, equilibrium, count):
-        where = "outside" if count.outside else "on"
-        what = f"{count.outside or count.boundary} eigenvalues lie {where} the stability boundary"
+        what = _lying(count.outside or count.boundary, "outside" if count.outside else "on")
         yield refute(
             knowledge, criterion, "T8", what,
             "exact" if all(b.is_exact for b in count.polynomial) else "enclosed", (count.identifier,), at,
@@ -88,6 +89,33 @@ def _refutations(knowledge: Knowledge, criterion: Criterion, equilibrium: Equili
             knowledge, criterion, "T1", f"the {QUANTITY[criterion.claim]} violates its bound at nominal",
             "enclosed", (routh_claim_id(equilibrium),), at, {"value": value},
         )  # fmt: skip
+
+
+def _lying(number: int, where: str) -> str:
+    who = "1 eigenvalue lies" if number == 1 else f"{number} eigenvalues lie"
+    return f"{who} {where} the stability boundary"
+
+
+def _at_combinations(knowledge: Knowledge, criterion: Criterion) -> Iterator[Finding]:
+    """A verified combination of the spreads that violates the criterion refutes it over tolerances."""
+    if criterion.over == NOMINAL or knowledge.place.result != "proved":
+        return
+    for claim, finding in knowledge.combinations():
+        at = {"combination": words_of(knowledge.case, claim), "equilibrium": claim.equilibrium}
+        outside, boundary = count_of(finding, OUTSIDE), count_of(finding, BOUNDARY)
+        stability = criterion.claim in ("asymptotic_stability", "exponential_stability")
+        if stability and (outside or (boundary and criterion.claim == "exponential_stability")):
+            what = _lying(outside or boundary, "outside" if outside else "on")
+            yield refute(
+                knowledge, criterion, "T8", f"at {at['combination']}, {what}", finding.strength, (claim.identifier,), at
+            )
+        value = finding.facts.get(QUANTITY.get(criterion.claim, ""))
+        if value is not None and within(value, criterion) is False:
+            yield refute(
+                knowledge, criterion, "T1",
+                f"the {QUANTITY[criterion.claim]} violates its bound at {at['combination']}", "enclosed",
+                (claim.identifier,), at, {"value": value},
+            )  # fmt: skip
 
 
 def _contradicts_stability(
@@ -135,7 +163,7 @@ def _by_matrix(knowledge: Knowledge, criterion: Criterion) -> Iterator[Finding]:
 
 
 def _value_over(knowledge: Knowledge, criterion: Criterion, claim: MatrixClaim) -> dict[str, Enclosure]:
-    """Nominal: the enclosed value.  Over tolerances: between the proved level and the nominal value."""
+    """Nominal: the enclosed value.  Over tolerances: between the proved level and the worst combination's value."""
     name = QUANTITY.get(criterion.claim)
     if name is None or (criterion.claim == "exponential_stability" and criterion.at_least is None):
         return {}
@@ -143,9 +171,13 @@ def _value_over(knowledge: Knowledge, criterion: Criterion, claim: MatrixClaim) 
     unit = "1/s" if name == "decay rate" else "1"
     if criterion.over == NOMINAL:
         return {} if nominal is None else {"value": nominal}
+    seen = [f.facts[name] for _, f in knowledge.combinations() if name in f.facts]
+    seen += [] if nominal is None else [nominal]
     if claim.region == "disc":
-        return {"value": Enclosure(None if nominal is None else nominal.lower, claim.level, unit)}
-    return {"value": Enclosure(claim.level, None if nominal is None else nominal.upper, unit)}
+        least = max((s.lower for s in seen if s.lower is not None), default=None)
+        return {"value": Enclosure(least, claim.level, unit)}
+    most = min((s.upper for s in seen if s.upper is not None), default=None)
+    return {"value": Enclosure(claim.level, most, unit)}
 
 
 def _by_count(knowledge: Knowledge, criterion: Criterion, equilibrium: Equilibrium) -> Iterator[Finding]:

@@ -6,6 +6,7 @@ from collections.abc import Iterator
 from fractions import Fraction
 
 from dossier.checks.boxes import range_over
+from dossier.checks.combination import OUTSIDE, count_of, words_of
 from dossier.checks.criteria.common import conclude, open_question, refute, stated_bounds, tightest_bounds
 from dossier.checks.knowledge import Knowledge
 from dossier.checks.linear import routh_claim_id
@@ -160,6 +161,14 @@ def _not_attractive(
             knowledge, criterion, "T8", "the point is unstable: an eigenvalue lies outside the stability region",
             _strength(equilibrium), (unstable,), {"combination": "nominal", "equilibrium": equilibrium.identifier},
         )  # fmt: skip
+    if criterion.over != NOMINAL:
+        for claim, finding in knowledge.combinations():
+            if count_of(finding, OUTSIDE):
+                where = words_of(knowledge.case, claim)
+                yield refute(
+                    knowledge, criterion, "T8", f"the point is unstable at {where}", finding.strength,
+                    (claim.identifier,), {"combination": where, "equilibrium": equilibrium.identifier},
+                )  # fmt: skip
     for other in knowledge.equilibria:
         if other is not equilibrium and _lies_in(other, equilibrium, region):
             yield refute(

@@ -5,9 +5,11 @@ from __future__ import annotations
 from collections.abc import Iterator
 from fractions import Fraction
 
-from dossier.model.claim import MatrixClaim, RouthClaim
+from dossier.model.case import Case
+from dossier.model.claim import CombinationClaim, MatrixClaim, RouthClaim
 from dossier.model.dossier import PointEvidence
 from dossier.model.equilibrium import Eigenvalue, Equilibrium
+from dossier.model.finding import Finding
 from dossier.report import formulas, numbers, wording
 from dossier.report.blocks import Block, Column, Equations, Paragraph, Row, Table
 from dossier.report.content.context import Context
@@ -24,7 +26,7 @@ LARGEST_POLYNOMIAL = 8
 def linear_blocks(context: Context, point: PointEvidence) -> Iterator[Block]:
     """Eigenvalues of every equilibrium, and the claims about the linear part."""
     shown = [e for e in point.equilibria if e.eigenvalues]
-    claims = [c for c in point.claims if isinstance(c, MatrixClaim | RouthClaim)]
+    claims = [c for c in point.claims if isinstance(c, CombinationClaim | MatrixClaim | RouthClaim)]
     if not shown and not claims:
         return
     yield Paragraph((wording.LINEAR_CAUTION,), "caution")
@@ -77,11 +79,11 @@ def _centre(value: Fraction) -> str:
 def _claim_table(context: Context, point: PointEvidence) -> Table:
     rows = []
     for claim in point.claims:
-        if not isinstance(claim, MatrixClaim | RouthClaim):
+        if not isinstance(claim, CombinationClaim | MatrixClaim | RouthClaim):
             continue
         finding = next((f for f in point.findings if f.subject == claim.identifier), None)
         result = "not checked" if finding is None else f"{finding.result}, {finding.strength}"
-        statement, method = _matrix_words(claim) if isinstance(claim, MatrixClaim) else _routh_words(claim)
+        statement, method = _words(point.case, claim, finding)
         cells = ((Mono(claim.identifier),), statement, (method,), (wording.scope_short(claim.over),), (result,))
         rows.append(Row(cells, claim.identifier))
     columns = (
@@ -92,6 +94,19 @@ def _claim_table(context: Context, point: PointEvidence) -> Table:
         Column("Check", "short", 13),
     )
     return Table("What was proved of the linear part", columns, tuple(rows))
+
+
+def _words(case: Case, claim: CombinationClaim | MatrixClaim | RouthClaim, finding: Finding | None) -> tuple[Rich, str]:
+    if isinstance(claim, MatrixClaim):
+        return _matrix_words(claim)
+    return _routh_words(claim) if isinstance(claim, RouthClaim) else _combination_words(case, claim, finding)
+
+
+def _combination_words(case: Case, claim: CombinationClaim, finding: Finding | None) -> tuple[Rich, str]:
+    order = [p.name for p in case.model.parameters if p.name in claim.values]
+    at = ", ".join(f"{name} = {numbers.number(claim.values[name])}" for name in order)
+    premise = next((p.statement for p in finding.premises if p.label == "spectrum"), "") if finding else ""
+    return (f"{premise}; the worst combination found is {at} (SI)",), "root count and discs at one combination"
 
 
 def _matrix_words(claim: MatrixClaim) -> tuple[Rich, str]:

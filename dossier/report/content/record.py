@@ -27,6 +27,7 @@ KIND_WORDS = {
     "roots": "boxes that hold every equilibrium",
     "matrix": "Lyapunov matrices of the linear part",
     "routh": "characteristic polynomial and Routh array",
+    "combination": "linear part at one parameter combination",
     "gram": "function V with its Gram matrices",
     "cover": "interval cover of the decrease of V",
     "sturm": "isolated crossings in frequency",
