@@ -158,27 +158,49 @@ def _sides(box: Box) -> str:
     return ", ".join(f"{n} in {span(*i.bounds)}" for n, i in box.items())
 
 
-def certified_field(case: Case, equilibrium: Equilibrium, over: Scope) -> OffsetField | NotRational:
-    """The closed loop in offsets from `equilibrium` over the scope's symbolic parameters."""
+def certified_field(
+    case: Case, equilibrium: Equilibrium, over: Scope, place: Box | None = None, order: int = 0
+) -> OffsetField | NotRational:
+    """The closed loop in offsets from `equilibrium` over the scope's symbolic parameters.
+
+    With a `place`, elementary functions are expanded to `order` there.
+    """
     symbolic = () if over == NOMINAL else spread_box(case).names
     loop = vector_field(case)
     return offset_field(
         loop.equations, loop.states, equilibrium.state,
-        {p.name: p.nominal for p in case.model.parameters}, symbolic, sampled=loop.sampled,
+        {p.name: p.nominal for p in case.model.parameters}, symbolic, sampled=loop.sampled, place=place, order=order,
     )  # fmt: skip
+
+
+def _field_on_set(
+    case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, shape: Ellipsoid
+) -> OffsetField | NotRational:
+    """As certified; where there are elementary functions, expanded on the bounding box of the set."""
+    field = certified_field(case, equilibrium, claim.over)
+    if not isinstance(field, NotRational):
+        return field
+    place = absolute_box(equilibrium, case.model.state_names, shape.half_widths)
+    whole = Box((*place.names, *claim.parameters.names), (*place.intervals, *claim.parameters.intervals))
+    return certified_field(case, equilibrium, claim.over, whole, claim.expansion)
 
 
 def _decrease(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, shape: Ellipsoid) -> Iterator[Premise]:
     """T2 (e) and the conditions of T7."""
     ident = claim.identifier
     try:
-        field = certified_field(case, equilibrium, claim.over)
+        field = _field_on_set(case, equilibrium, claim, shape)
     except ArithmeticError as error:
         yield _premise("polynomial", "the equations have finite constants", False, ident, detail=str(error))
         return
     if isinstance(field, NotRational):
         yield _premise("polynomial", "the equations are quotients of polynomials", False, ident, detail=field.reason)
         return
+    if field.factors.names:
+        yield _premise(
+            "remainders", "elementary functions of the states lie between the polynomials used, on the bounding box "
+            "of the set", True, ident, "enclosed", f"{len(field.factors.names)} functions, order {claim.expansion}",
+        )  # fmt: skip
     if claim.over != NOMINAL:
         yield _premise(
             "fixed", "the equilibrium is the same for every parameter combination",
@@ -194,21 +216,22 @@ def _decrease(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, shape:
     if sign == 0:
         return
     numerator = form.numerator * field.ring.constant(Fraction(sign))
-    expected = bernstein_count(numerator, field.ring, claim.parameters)
+    box = Box((*claim.parameters.names, *field.factors.names), (*claim.parameters.intervals, *field.factors.intervals))
+    expected = bernstein_count(numerator, field.ring, box)
     complete = expected == len(claim.decrease)
     shown = 0
     if complete:
-        pairs = zip(bernstein_coefficients(numerator, field.ring, claim.parameters), claim.decrease, strict=True)
+        pairs = zip(bernstein_coefficients(numerator, field.ring, box), claim.decrease, strict=True)
         for (index, coefficient), witness in pairs:
             target = collapse(-coefficient, field.ring, len(field.states), field.balls)
             if witness.index != index or not _decreases(target, witness, claim, len(field.states)):
                 break
             shown += 1
-    strength: Strength = "exact" if not field.balls else "enclosed"
+    strength: Strength = "enclosed" if field.balls or field.factors.names else "exact"
     yield _premise(
         "e", "V decreases everywhere in the set but at the equilibrium", complete and shown == expected, ident,
         strength, f"{shown} of {expected} "
-        + ("identities" if claim.over == NOMINAL else "Bernstein coefficients over the parameter box")
+        + ("Bernstein coefficients over the parameter box" if box.names else "identities")
         + " shown by positive definite Gram matrices",
     )  # fmt: skip
 
@@ -217,7 +240,7 @@ def _denominator_sign(field: OffsetField, claim: LyapunovClaim, shape: Ellipsoid
     """The sign of D on the set times the parameter box."""
     ring = field.ring
     sides = [Interval(-w, w) for w in shape.half_widths]
-    sides += list(claim.parameters.intervals)
+    sides += [*claim.parameters.intervals, *field.factors.intervals]
     sides += [Interval(field.balls[n].lower, field.balls[n].upper) for n in ring.names[len(sides) :]]
     return polynomial_sign(terms(field.denominator), Box(ring.names, tuple(sides)))
 

@@ -129,7 +129,9 @@ class DecreaseWitness:
 class LyapunovClaim(Claim):
     """Kind ``gram``: {V <= level} is compact, inside the domain, invariant and attracted to the equilibrium.
 
-    `function` is V over the offsets; `method` is ``quadratic``, ``sum of squares`` or ``given``.
+    `function` is V over the offsets; `method` is ``quadratic``, ``sum of squares`` or ``given``.  `parameters` is
+    the part of the box of spreads that it is about.  `expansion` is the order to which elementary functions of the
+    states are expanded (`dossier.model.remainders`); 0 where there are none.
     """
 
     equilibrium: str
@@ -137,6 +139,7 @@ class LyapunovClaim(Claim):
     function: Mapping[Exponents, Fraction]
     level: Fraction
     parameters: Box
+    expansion: int
     decrease: tuple[DecreaseWitness, ...]
 
 

@@ -10,8 +10,8 @@ dropped, as they are zero at the true equilibrium (THEOREM note "an equilibrium 
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
-from dataclasses import dataclass
+from collections.abc import Callable, Iterable, Mapping
+from dataclasses import dataclass, field
 from fractions import Fraction
 from functools import reduce
 
@@ -19,6 +19,8 @@ from flint import Ordering, fmpq_mpoly, fmpq_mpoly_ctx
 
 from dossier.model.ball import WORKING_BITS, Ball, enclose, evaluate, from_arb, precision, to_fmpq, to_fraction
 from dossier.model.expression import Expression, fold, names, number, rebuild, substitute, symbol
+from dossier.model.region import Box
+from dossier.model.remainders import Expansion, Refusal, expansions, is_function, valid_box
 
 Exponents = tuple[int, ...]
 
@@ -77,16 +79,24 @@ def _reduced(numerator: fmpq_mpoly, denominator: fmpq_mpoly) -> Quotient:
     return Quotient(numerator / lead, denominator / lead)
 
 
-def quotient_of(expression: Expression, ring: Ring, values: Mapping[str, Quotient]) -> Quotient | NotRational:
-    """`expression` as a quotient over `ring`; `values` gives each symbol.
+Functions = Callable[[Expression, Quotient], Quotient | NotRational]
+"""A function node and its first argument to what stands for it."""
 
-    Fails with a `NotRational` value for elementary functions, roots and kinks of anything.
+
+def quotient_of(
+    expression: Expression, ring: Ring, values: Mapping[str, Quotient], functions: Functions | None = None
+) -> Quotient | NotRational:
+    """`expression` as a quotient over `ring`; `values` gives each symbol, `functions` what is no arithmetic.
+
+    Fails with a `NotRational` value for elementary functions, roots and kinks where there are no `functions`.
     """
 
     def visit(node: Expression, args: tuple[Quotient | NotRational, ...]) -> Quotient | NotRational:
         quotients = [a for a in args if isinstance(a, Quotient)]
         if len(quotients) < len(args):
             return next(a for a in args if isinstance(a, NotRational))
+        if functions is not None and is_function(node):
+            return functions(node, quotients[0])
         return _combine(node, quotients, ring, values)
 
     return fold(expression, visit)
@@ -186,9 +196,11 @@ def _whole_power(node: Expression) -> bool:
 class OffsetField:
     """f(x* + y) = numerators / denominator, equation by equation, without the terms that vanish at y = 0.
 
-    `ring.names` = offsets (the state names), then symbolic parameters, then uncertain constants.
+    `ring.names` = offsets (the state names), then symbolic parameters, factors and uncertain constants.
     For a sampled model f is the offset of the next sample, x+ - x*.
     `denominator` carries no sign: a user must prove it non-zero where it needs it.
+    `factors` (`dossier.model.remainders`) may take any value of their interval at every point; the field is then
+    valid on the box it was expanded for only.
     """
 
     ring: Ring
@@ -200,6 +212,7 @@ class OffsetField:
     sampled: bool
     constant_terms_vanish: bool
     """The dropped terms were identically zero, so the equilibrium is exact for every parameter value."""
+    factors: Box = field(default_factory=lambda: Box((), ()))
 
 
 def offset_field(
@@ -210,27 +223,40 @@ def offset_field(
     symbolic: tuple[str, ...],
     *,
     sampled: bool,
+    place: Box | None = None,
+    order: int = 0,
 ) -> OffsetField | NotRational:
     """The field in offsets from `equilibrium`, with the parameters `symbolic` kept as variables.
 
     `parameters` encloses all others.  Returns `NotRational` where the equations are not quotients of
-    polynomials in states and symbolic parameters.
+    polynomials in states and symbolic parameters; with a `place` (bounds of the states, absolute, and of the
+    symbolic parameters) elementary functions are expanded to `order` there first.
     """
     variable = frozenset(states) | frozenset(symbolic)
     fixed = {n: b for n, b in parameters.items() if n not in symbolic}
     converted, balls = split_constants(equations, variable, fixed)
     shift = {f"shift of {s}": Ball(Fraction(0), b.radius) for s, b in zip(states, equilibrium, strict=True) if b.radius}
-    ring = Ring((*states, *symbolic, *balls, *shift))
+    plans: dict[Expression, Expansion] = {}
+    if place is not None:
+        bounds = balls | valid_box((*states, *symbolic), place)
+        found = expansions(converted, dict(zip(states, equilibrium, strict=True)), bounds, order)
+        if isinstance(found, Refusal):
+            return NotRational(found.reason, converted[0])
+        plans = found
+    terms_of = _Terms(plans, len(states))
+    balls |= terms_of.balls
+    ring = Ring((*states, *symbolic, *terms_of.factors.names, *balls, *shift))
+    terms_of.ring = ring
     one = ring.constant(Fraction(1))
     values = {n: Quotient(ring.gen(n), one) for n in (*symbolic, *balls)}
     for name, ball in zip(states, equilibrium, strict=True):
-        place = ring.constant(ball.middle) + ring.gen(name)
+        here = ring.constant(ball.middle) + ring.gen(name)
         if ball.radius:
-            place = place + ring.gen(f"shift of {name}")
-        values[name] = Quotient(place, one)
+            here = here + ring.gen(f"shift of {name}")
+        values[name] = Quotient(here, one)
     quotients: list[Quotient] = []
     for expression in converted:
-        quotient = quotient_of(expression, ring, values)
+        quotient = quotient_of(expression, ring, values, terms_of if plans else None)
         if isinstance(quotient, NotRational):
             return quotient
         quotients.append(quotient)
@@ -244,7 +270,67 @@ def offset_field(
         denominator = denominator * (q.denominator / denominator.gcd(q.denominator))
     cleared = [q.numerator * (denominator / q.denominator) for q in quotients]
     numerators, vanish = zip(*(_without_offset_free_terms(p, ring, len(states)) for p in cleared), strict=True)
-    return OffsetField(ring, states, tuple(symbolic), {**balls, **shift}, numerators, denominator, sampled, all(vanish))
+    factors = range(len(states) + len(symbolic), len(states) + len(symbolic) + len(terms_of.factors.names))
+    for p in cleared:
+        if any(not any(e[: len(states)]) and any(e[i] for i in factors) for e in p.to_dict()):
+            return NotRational("a remainder does not vanish at the equilibrium", converted[0])
+    return OffsetField(
+        ring, states, tuple(symbolic), {**balls, **shift}, numerators, denominator, sampled, all(vanish),
+        terms_of.factors,
+    )  # fmt: skip
+
+
+class _Terms:
+    """Function nodes as polynomials in d = u - u*; `factors` and `balls` are the variables they bring with them."""
+
+    ring: Ring
+
+    def __init__(self, plans: Mapping[Expression, Expansion], states: int) -> None:
+        self._plans, self._states = plans, states
+        self._labels = {node: f"{i}" for i, node in enumerate(plans)}
+        sides = {f"factor {self._labels[n]}": p.factor for n, p in plans.items() if not p.branch}
+        self.factors = Box(tuple(sides), tuple(sides.values()))
+        self.balls = {
+            self._value_name(n, k): b for n, p in plans.items() for k, b in enumerate(p.coefficients) if not b.is_exact
+        }
+
+    def _value_name(self, node: Expression, power: int) -> str:
+        return f"value {self._labels[node]} {power}"
+
+    def __call__(self, node: Expression, argument: Quotient) -> Quotient | NotRational:
+        plan = self._plans[node]
+        one = self.ring.constant(Fraction(1))
+        if plan.branch:
+            return Quotient(argument.numerator * plan.branch, argument.denominator)
+        change = self._change(node, argument)
+        if isinstance(change, NotRational):
+            return change
+        total, power = Quotient(one - one, one), Quotient(one, one)
+        for k, ball in enumerate(plan.coefficients):
+            value = self.ring.constant(ball.middle) if ball.is_exact else self.ring.gen(self._value_name(node, k))
+            total = _sum(total, _product(Quotient(value, one), power))
+            power = _product(power, change)
+        rest = Quotient(self.ring.gen(f"factor {self._labels[node]}"), one)
+        return _sum(total, _product(rest, power))
+
+    def _change(self, node: Expression, argument: Quotient) -> Quotient | NotRational:
+        """d = u - u*, where u* are the terms free of the offsets."""
+        top, bottom = (self._at_rest(p) for p in (argument.numerator, argument.denominator))
+        if argument.denominator.is_constant():
+            if any(self._has_factor(e) for e in top.to_dict()):
+                return NotRational("the argument of a function has a remainder at the equilibrium", node)
+            return Quotient(argument.numerator - top, argument.denominator)
+        if not (top.is_constant() and bottom.is_constant()) or bottom.is_zero():
+            return NotRational("the argument of a function is a quotient that depends on parameters at rest", node)
+        here = Quotient(-top / bottom.leading_coefficient(), self.ring.constant(Fraction(1)))
+        return _sum(argument, here)
+
+    def _at_rest(self, polynomial: fmpq_mpoly) -> fmpq_mpoly:
+        kept = {e: c for e, c in polynomial.to_dict().items() if not any(e[: self._states])}
+        return self.ring.context.from_dict(kept)
+
+    def _has_factor(self, exponents: Exponents) -> bool:
+        return any(exponents[self.ring.names.index(n)] for n in self.factors.names)
 
 
 def _without_offset_free_terms(polynomial: fmpq_mpoly, ring: Ring, count: int) -> tuple[fmpq_mpoly, bool]:

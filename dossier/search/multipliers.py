@@ -39,6 +39,9 @@ LEAST_MARGIN: Final = 1e-9
 """Margin t below which the residual of the solver would eat it: no witness."""
 LARGEST_BASIS: Final = 130
 """Largest Gram basis tried; beyond it one program takes minutes."""
+LARGEST_BASIS_OF_MANY: Final = 60
+"""The same where there are more than a few programs of the kind, each of seconds."""
+FEW: Final = 4
 MOST_WITNESSES: Final = 4_096
 """Bernstein coefficients looked at; more belong to a smaller parameter box."""
 TRACE_WEIGHT: Final = 1e-5
@@ -230,7 +233,8 @@ def seek_witnesses(target: Target, level: Fraction, hardest: Exponents = ()) -> 
         return NoWitness("the derivative of V vanishes identically")
     main, multiplier = bases(support, target.function.keys(), size)
     pure = {i for e in main for i, k in enumerate(e) if k and sum(e) == k}
-    if len(pure) < size or len(main) > LARGEST_BASIS:
+    largest = LARGEST_BASIS if len(pairs) <= FEW else LARGEST_BASIS_OF_MANY
+    if len(pure) < size or len(main) > largest:
         return NoWitness("the decrease is zero along a line" if len(pure) < size else "the Gram basis is too large")
     function = {e: float(c * _scale_of(e, target.scales)) for e, c in target.function.items()}
     program = MultiplierProgram(

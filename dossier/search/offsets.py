@@ -17,6 +17,7 @@ import numpy as np
 from flint import fmpq_mpoly
 from numpy.typing import NDArray
 
+from dossier.model.affine import spread_box
 from dossier.model.case import NOMINAL, Case, Scope
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.loop import VectorField, vector_field
@@ -46,7 +47,8 @@ class ScaledLoop:
     """y = S z with S = diag(`scales`), and time in units of 1/`rate` where it is continuous.
 
     `vertices` are parameter rows (V x k) over `spread`; `linear` the scaled linear parts there
-    (V x n x n).  `field` is the exact form where the equations are quotients of polynomials, else why not.
+    (V x n x n).  `field` is the exact form where the equations are quotients of polynomials, or where their
+    elementary functions were expanded, else why not; the factors of an expansion count as parameters in `spread`.
     """
 
     case: Case
@@ -63,6 +65,18 @@ class ScaledLoop:
     def size(self) -> int:
         """Number of states n."""
         return len(self.scales)
+
+    @property
+    def is_expanded(self) -> bool:
+        """Elementary functions were replaced by polynomials with factors."""
+        return isinstance(self.field, OffsetField) and bool(self.field.factors.names)
+
+    @property
+    def parameters(self) -> Box:
+        """The true parameters of `spread`."""
+        factors = self.field.factors.names if isinstance(self.field, OffsetField) else ()
+        count = len(self.spread.names) - len(factors)
+        return Box(self.spread.names[:count], self.spread.intervals[:count])
 
     @cached_property
     def decay(self) -> float:
@@ -110,26 +124,47 @@ class ScaledLoop:
         return lower + inside * (upper - lower)
 
 
-def scaled_loop(case: Case, equilibrium: Equilibrium, over: Scope, region: Box) -> ScaledLoop:
+def scaled_loop(
+    case: Case, equilibrium: Equilibrium, over: Scope, region: Box, expanded: tuple[Box, int] | None = None,
+    cell: Box | None = None,
+) -> ScaledLoop:  # fmt: skip
     """The scaled loop around `equilibrium`, with the spread parameters symbolic over tolerances.
 
+    `cell` is a part of the box of spreads, by default the whole; `expanded` gives half widths of a box (absolute
+    bounds of the states) on which elementary functions are expanded, and the order.
     Raises ArithmeticError where a constant of the equations has no finite enclosure.
     """
-    free = () if over == NOMINAL else tuple(p for p in case.model.parameters if p.has_spread)
-    spread = Box(tuple(p.name for p in free), tuple(p.spread for p in free))
+    spread = Box((), ()) if over == NOMINAL else cell or spread_box(case)
     loop = vector_field(case)
-    known = {p.name: p.nominal for p in case.model.parameters}
-    field = offset_field(loop.equations, loop.states, equilibrium.state, known, spread.names, sampled=loop.sampled)
+    field = field_of(case, equilibrium, spread, expanded)
     scales = tuple(power_of_two_near(half_width(case, region, n)) for n in loop.states)
-    vertices = _vertices(spread)
     if isinstance(field, NotRational):
+        vertices = _vertices(spread)
         evaluate = _from_expressions(case, loop, equilibrium, spread)
         linear = _differences(evaluate, vertices, scales)
     else:
+        spread = Box((*spread.names, *field.factors.names), (*spread.intervals, *field.factors.intervals))
+        vertices = _vertices(spread)
         evaluate = _from_polynomials(field)
         linear = _linear_parts(field, vertices, scales)
     rate = 1.0 if loop.sampled else float(np.max(np.abs(np.linalg.eigvals(linear)), initial=0.0)) or 1.0
     return ScaledLoop(case, field, loop.sampled, spread, scales, rate, vertices, linear / rate, evaluate)
+
+
+def field_of(
+    case: Case, equilibrium: Equilibrium, parameters: Box, expanded: tuple[Box, int] | None = None
+) -> OffsetField | NotRational:
+    """The exact field over `parameters`; `expanded` as for `scaled_loop`."""
+    loop = vector_field(case)
+    known = {p.name: p.nominal for p in case.model.parameters}
+    place, order = None, 0
+    if expanded is not None:
+        around, order = expanded
+        place = Box((*around.names, *parameters.names), (*around.intervals, *parameters.intervals))
+    return offset_field(
+        loop.equations, loop.states, equilibrium.state, known, parameters.names, sampled=loop.sampled, place=place,
+        order=order,
+    )  # fmt: skip
 
 
 def half_width(case: Case, region: Box, name: str) -> float:
@@ -169,7 +204,7 @@ class Evaluator:
 
 def constants_of(field: OffsetField) -> list[float]:
     """Middle values of the uncertain constants, in the order of the ring."""
-    return [float(field.balls[n].middle) for n in field.ring.names[len(field.states) + len(field.parameters) :]]
+    return [float(field.balls[n].middle) for n in field.ring.names if n in field.balls]
 
 
 def _from_polynomials(field: OffsetField) -> Evaluate:

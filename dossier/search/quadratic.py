@@ -6,7 +6,7 @@ that a candidate lost to rounding is replaced by a more modest one instead of fa
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Final, Literal
@@ -18,13 +18,16 @@ from dossier.model.case import Case, Scope
 from dossier.model.claim import LyapunovClaim
 from dossier.model.decrease import decrease_form
 from dossier.model.equilibrium import Equilibrium
-from dossier.model.loop import model_hash
+from dossier.model.expression import ZERO, names, nodes
+from dossier.model.loop import model_hash, vector_field
 from dossier.model.polynomial import Exponents, NotRational, OffsetField
+from dossier.model.region import Box, Interval
+from dossier.model.remainders import HIGHEST_ORDER, is_function
 from dossier.search.effort import Effort
 from dossier.search.ellipsoid import Candidate, from_lyapunov_equation
-from dossier.search.goal import Goal
+from dossier.search.goal import Goal, Slab
 from dossier.search.multipliers import NoWitness, Target, seek_witnesses
-from dossier.search.offsets import ScaledLoop, denominator_sign, scaled_loop
+from dossier.search.offsets import ScaledLoop, denominator_sign, field_of, scaled_loop
 from dossier.search.programs import (
     UNBOUNDED_LEVEL,
     Function,
@@ -42,6 +45,10 @@ LEVEL_SHARES: Final = tuple(Fraction(s) for s in ("1", "0.9998", "0.999", "0.99"
 """Shares of the promising level tried before bisection: mostly the first or second is proved."""
 LEAST_SHARE: Final = 1e-5
 """Share of the promising level at which bisection begins where nothing is proved yet."""
+ROOM: Final = Fraction(5, 2)
+"""Size of the box on which elementary functions are expanded first, in half widths of the region."""
+BEYOND: Final = Fraction(1, 10**9)
+"""Share by which the box of an expansion is taken wider than computed in floating point."""
 CLOSE_ENOUGH: Final = 1.01
 """Ratio of a refused to a proved level at which bisection ends."""
 
@@ -51,7 +58,6 @@ class Task:
     """One search: the loop, what is wanted of it, and who is asked before a claim is returned."""
 
     loop: ScaledLoop
-    field: OffsetField
     equilibrium: Equilibrium
     over: Scope
     goal: Goal
@@ -97,7 +103,7 @@ def seek_quadratic(
         return (task,), ()
     attempts: list[Attempt] = []
     prospects: list[Prospect] = []
-    for attempt, candidate in covering_candidates(task.loop, goal, effort, task.subject):
+    for attempt, candidate in covering_candidates(task.loop, task.goal, effort, task.subject):
         attempts.append(attempt)
         if candidate is None:
             continue
@@ -155,14 +161,70 @@ def _task(
     subject = goal.serves[0] if goal.serves else case.name
     try:
         loop = scaled_loop(case, equilibrium, over, goal.region)
+        goal, loop = _expanded(case, equilibrium, over, goal, loop)
     except ArithmeticError as error:
         return Attempt(subject, "quadratic, Gram matrices", "out of reach", str(error))
-    if isinstance(loop.field, NotRational):
-        return Attempt(subject, "quadratic, Gram matrices", "out of reach", loop.field.reason)
-    if loop.spread.names and not (loop.field.constant_terms_vanish and all(b.is_exact for b in equilibrium.state)):
+    field = loop.field
+    if isinstance(field, NotRational):
+        return Attempt(subject, "quadratic, Gram matrices", "out of reach", field.reason)
+    if loop.parameters.names and not (field.constant_terms_vanish and all(b.is_exact for b in equilibrium.state)):
         why = "the equilibrium moves with the parameters"
         return Attempt(subject, "quadratic over tolerances", "out of reach", why)
-    return Task(loop, loop.field, equilibrium, over, goal, effort, suffix, verify)
+    return Task(loop, equilibrium, over, goal, effort, suffix, verify)
+
+
+def _expanded(
+    case: Case, equilibrium: Equilibrium, over: Scope, goal: Goal, loop: ScaledLoop
+) -> tuple[Goal, ScaledLoop]:
+    """Elementary functions expanded as coarsely as possible, on a box that becomes part of the goal."""
+    if not (isinstance(loop.field, NotRational) and goal.region.is_bounded):
+        return goal, loop
+    states = case.model.state_names
+    met = _states_in_functions(case)
+    widths: list[Fraction] = []
+    for place, side in enumerate(goal.region.intervals):
+        wanted = ROOM * max(abs(b) for b in side.bounds)
+        reaches = [s.reach for s in goal.slabs if s.reach and _is_along(s, place)]
+        widths.append(min([*([wanted] if wanted else []), *reaches], default=Fraction(1)))
+    sides = tuple(Interval(b.lower - w, b.upper + w) for b, w in zip(equilibrium.state, widths, strict=True))
+    for order in range(HIGHEST_ORDER + 1):
+        found = scaled_loop(case, equilibrium, over, goal.region, (Box(states, sides), order))
+        if not isinstance(found.field, NotRational):
+            slabs = tuple(
+                Slab(tuple(Fraction(int(i == j)) for j in range(len(states))), -w, w, f"the box of expansion in {n}")
+                for i, (w, n) in enumerate(zip(widths, states, strict=True))
+                if n in met
+            )
+            return replace(goal, slabs=(*goal.slabs, *slabs)), found
+        loop = found
+    return goal, loop
+
+
+def _states_in_functions(case: Case) -> frozenset[str]:
+    """The states that elementary functions, saturations and absolute values depend on."""
+    functions = {n for e in vector_field(case).equations for n in nodes(e) if is_function(n)}
+    return frozenset(name for n in functions for name in names(n)) & set(case.model.state_names)
+
+
+def _is_along(slab: Slab, place: int) -> bool:
+    """It bounds one state, the one at `place`, directly."""
+    return all((w == 1) if i == place else (w == 0) for i, w in enumerate(slab.weights))
+
+
+def _fields(task: Task, widths: tuple[float, ...]) -> Iterator[tuple[int, OffsetField | NotRational]]:
+    """The field and its order of expansion on a set with these half widths; the coarsest expansion first."""
+    if not task.loop.is_expanded and not isinstance(task.loop.field, NotRational):
+        yield 0, task.loop.field
+        return
+    case = task.loop.case
+    reach = [Fraction(w) * (1 + BEYOND) for w in widths]
+    sides = tuple(Interval(b.lower - w, b.upper + w) for b, w in zip(task.equilibrium.state, reach, strict=True))
+    around = Box(case.model.state_names, sides)
+    for order in range(HIGHEST_ORDER + 1):
+        try:
+            yield order, field_of(case, task.equilibrium, task.loop.parameters, (around, order))
+        except ArithmeticError as error:
+            yield order, NotRational(str(error), ZERO)
 
 
 def _prospect(task: Task, candidate: Candidate) -> Prospect:
@@ -241,23 +303,37 @@ def prove(
     task: Task, function: Function, level: Fraction, method: str, mark: str = "", hardest: Exponents = ()
 ) -> LyapunovClaim | NoWitness:
     """A verified claim at this level, or why there is none."""
-    form = decrease_form(task.field, function)
-    sign = denominator_sign(task.field, task.loop.vertices) ** form.denominator_power
     matrix = scaled_matrix(function, task.loop.scales)
     widths = np.sqrt(float(level) * np.diag(np.linalg.inv(matrix)))
     scales = tuple(s * power_of_two_near(float(w)) for s, w in zip(task.loop.scales, widths, strict=True))
-    numerator = form.numerator * task.field.ring.constant(Fraction(sign))
-    target = Target(numerator, task.field.ring, task.field.balls, task.loop.spread, function, scales)
-    witnesses = seek_witnesses(target, level, hardest)
-    if isinstance(witnesses, NoWitness):
-        return witnesses
-    kind: Literal["given", "quadratic"] = "given" if method == "given" else "quadratic"
-    theorem = "T3" if task.loop.sampled else "T2"
-    claim = LyapunovClaim(
-        _identifier(task) + mark, model_hash(task.loop.case), task.over, theorem, task.equilibrium.identifier, kind,
-        function, level, task.loop.spread, witnesses,
-    )  # fmt: skip
-    return claim if task.verify(claim) else NoWitness("the exact check did not accept the rounded certificate")
+    half_widths = tuple(float(w) * float(s) for w, s in zip(widths, task.loop.scales, strict=True))
+    refusal = NoWitness("no expansion")
+    for order, field in _fields(task, half_widths):
+        if isinstance(field, NotRational):
+            refusal = NoWitness(field.reason)
+            continue
+        witnesses = seek_witnesses(_target(task, field, function, scales), level, hardest)
+        if isinstance(witnesses, NoWitness):
+            refusal = witnesses
+            continue
+        kind: Literal["given", "quadratic"] = "given" if method == "given" else "quadratic"
+        theorem = "T3" if task.loop.sampled else "T2"
+        claim = LyapunovClaim(
+            _identifier(task) + mark, model_hash(task.loop.case), task.over, theorem, task.equilibrium.identifier,
+            kind, function, level, task.loop.parameters, order, witnesses,
+        )  # fmt: skip
+        if task.verify(claim):
+            return claim
+        refusal = NoWitness("the exact check did not accept the rounded certificate")
+    return refusal
+
+
+def _target(task: Task, field: OffsetField, function: Function, scales: tuple[Fraction, ...]) -> Target:
+    form = decrease_form(field, function)
+    parameters, factors = task.loop.parameters, field.factors
+    sign = denominator_sign(field, task.loop.vertices) ** form.denominator_power
+    box = Box((*parameters.names, *factors.names), (*parameters.intervals, *factors.intervals))
+    return Target(form.numerator * field.ring.constant(Fraction(sign)), field.ring, field.balls, box, function, scales)
 
 
 def _identifier(task: Task) -> str:
