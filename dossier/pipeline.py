@@ -21,7 +21,7 @@ from dossier.checks.criteria.linear import region_and_level
 from dossier.checks.equilibria import Unbounded, enclose_equilibria
 from dossier.checks.linear import classify, routh_claim
 from dossier.checks.listing import list_equilibria, nearest
-from dossier.checks.lyapunov import check_lyapunov, ellipsoid
+from dossier.checks.lyapunov import check_lyapunov, ellipsoid, set_premises
 from dossier.checks.self_test import self_test
 from dossier.checks.sets import covers
 from dossier.checks.simulation import figure_data, run_campaign
@@ -33,7 +33,7 @@ from dossier.evidence.store import refuse_foreign_folder, write_dossier
 from dossier.judgement.points import judge_point
 from dossier.model.attempt import Attempt
 from dossier.model.case import NOMINAL, Case, Criterion
-from dossier.model.claim import Claim, CoverClaim, LyapunovClaim, RootsClaim, SpectralRegion
+from dossier.model.claim import CellsClaim, Claim, CoverClaim, LyapunovClaim, RootsClaim, SpectralRegion
 from dossier.model.dossier import Campaign, Evidence, PointEvidence, Provenance
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.figures import figure
@@ -44,6 +44,7 @@ from dossier.model.text import canonical
 from dossier.project.faults import Fault
 from dossier.project.reader import Faults, Project, read_project
 from dossier.report.render import Rendered, render
+from dossier.search.cells import seek_cells
 from dossier.search.conic import meter
 from dossier.search.cover import seek_cover_candidate
 from dossier.search.effort import EFFORTS, Effort
@@ -63,7 +64,7 @@ TIGHT: Final = "-tight"
 Progress = Callable[[str, str], None]
 """Called with the operating point and the stage that begins."""
 
-Sets = tuple[LyapunovClaim | CoverClaim, ...]
+Sets = tuple[LyapunovClaim | CoverClaim | CellsClaim, ...]
 Roots = RootsClaim | Unbounded
 Found = tuple[tuple[Claim, ...], tuple[Attempt, ...]]
 
@@ -182,25 +183,38 @@ def _set_claims(case: Case, chosen: Equilibrium, effort: Effort) -> Found:
         if task.suffix.endswith("-free") and not missed:
             continue
         tried, found = _seek_set(case, chosen, task, effort)
-        missed = not found or not _covers(case, found[0], task.goal.region)
+        missed = not any(_serves(case, c, task.goal.region) for c in found)
         attempts += tried
         claims += found
     return tuple(claims), tuple(attempts)
 
 
 def _seek_set(case: Case, chosen: Equilibrium, task: SetTask, effort: Effort) -> tuple[tuple[Attempt, ...], Sets]:
-    """A set by exact Gram matrices; where the equations are no quotients of polynomials, by intervals."""
+    """A set by exact Gram matrices; where it misses the region, then cell by cell, or by intervals."""
     tried, found = seek_quadratic(
         case, chosen, task.over, task.goal, effort, task.suffix,
         lambda claim: check_lyapunov(case, chosen, claim).result == "proved",
     )  # fmt: skip
-    if found or task.over != NOMINAL:
+    if any(_serves(case, c, task.goal.region) for c in found):
         return tried, found
+    if task.over != NOMINAL:
+        more, cells = seek_cells(
+            case, chosen, task.goal, effort, f"{task.suffix}-cells",
+            lambda claim: all(p.result == "proved" for p in set_premises(case, chosen, claim, of_cell=True)),
+        )  # fmt: skip
+        return (*tried, *more), (*found, *(() if cells is None else (cells,)))
+    suffix = f"{task.suffix}-boxes" if found else task.suffix
     more, cover = seek_cover_candidate(
-        case, chosen, task.goal, effort, task.suffix,
+        case, chosen, task.goal, effort, suffix,
         lambda claim: check_cover(case, chosen, claim, effort.boxes).result == "proved",
     )  # fmt: skip
-    return (*tried, *more), () if cover is None else (cover,)
+    return (*tried, *more), (*found, *(() if cover is None else (cover,)))
+
+
+def _serves(case: Case, claim: LyapunovClaim | CoverClaim | CellsClaim, region: Box) -> bool:
+    """Its set, or that of each of its cells, covers `region`."""
+    sets = claim.cells if isinstance(claim, CellsClaim) else (claim,)
+    return all(_covers(case, c, region) for c in sets)
 
 
 def _covers(case: Case, claim: LyapunovClaim | CoverClaim, region: Box) -> bool:

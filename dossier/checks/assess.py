@@ -9,6 +9,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
 from typing import Final
 
+from dossier.checks.cells import check_cells
 from dossier.checks.combination import check_combination
 from dossier.checks.cover import check_cover
 from dossier.checks.criteria.existence import establish_existence
@@ -24,6 +25,7 @@ from dossier.checks.spectral import check_matrix
 from dossier.checks.spectrum import eigenvalue_discs, spectral_values
 from dossier.model.case import Case, Criterion
 from dossier.model.claim import (
+    CellsClaim,
     Claim,
     CombinationClaim,
     CoverClaim,
@@ -166,6 +168,8 @@ def _verify(
             findings.append(check_matrix(case, chosen, claim))
         elif isinstance(claim, CombinationClaim):
             findings.append(check_combination(case, chosen, claim))
+        elif isinstance(claim, CellsClaim):
+            findings.append(check_cells(case, chosen, claim))
         elif isinstance(claim, LyapunovClaim):
             findings.append(check_lyapunov(case, chosen, claim))
             findings.append(check_cover(case, chosen, claim, min(boxes, SECOND_WITNESS_BOXES)))

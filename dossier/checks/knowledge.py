@@ -6,7 +6,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 
 from dossier.model.case import NOMINAL, TOLERANCES, Case, Scope
-from dossier.model.claim import Claim, CombinationClaim, CoverClaim, LyapunovClaim, RootsClaim
+from dossier.model.claim import CellsClaim, Claim, CombinationClaim, CoverClaim, LyapunovClaim, RootsClaim
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.finding import Enclosure, Finding, Premise
 from dossier.model.outcome import LoopMargins
@@ -65,6 +65,13 @@ class Knowledge:
                 finding = self.proved(claim.identifier, scopes)
                 if finding is not None:
                     yield claim, finding
+
+    def cells(self) -> Iterator[tuple[CellsClaim, Finding]]:
+        """Proved attractive sets cell by cell; they serve every scope, as each combination lies in a cell."""
+        for claim in self.claims:
+            finding = self.proved(claim.identifier, (TOLERANCES,)) if isinstance(claim, CellsClaim) else None
+            if isinstance(claim, CellsClaim) and finding is not None:
+                yield claim, finding
 
     def combinations(self) -> Iterator[tuple[CombinationClaim, Finding]]:
         """Combinations of the spreads at which the eigenvalues were enclosed."""

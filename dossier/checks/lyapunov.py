@@ -96,7 +96,7 @@ def check_lyapunov(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim) -
     Undecided, never proved, where anything is missing or another model was meant.
     """
     theorem = "T3" if case.model.time == "sampled" else "T2"
-    premises = tuple(_premises(case, equilibrium, claim))
+    premises = tuple(set_premises(case, equilibrium, claim))
     result, strength = weakest(premises)
     return Finding(
         claim.identifier, "exact", result, strength, claim.over, theorem, _statement(case, claim), premises,
@@ -110,7 +110,10 @@ def _statement(case: Case, claim: LyapunovClaim) -> str:
     return f"V is positive and {verb} in the set V ≤ {figure(claim.level)} around {claim.equilibrium}, {scope}"
 
 
-def _premises(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim) -> Iterator[Premise]:
+def set_premises(
+    case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, *, of_cell: bool = False
+) -> Iterator[Premise]:
+    """Every premise about the set of `claim`; with `of_cell` it may be about a part of the box of spreads only."""
     ident = claim.identifier
     if claim.model_hash != model_hash(case) or claim.equilibrium != equilibrium.identifier:
         yield _premise("model", "the certificate is about this closed loop and equilibrium", False, ident)
@@ -119,8 +122,11 @@ def _premises(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim) -> Ite
     shape = ellipsoid(claim, len(names))
     yield _premise("d", "V = y'Py with P positive definite and a positive level", shape is not None, ident)
     expected = Box((), ()) if claim.over == NOMINAL else spread_box(case)
-    yield _premise("scope", "the parameter box is the one asked for", claim.parameters == expected, ident)
-    if shape is None or claim.parameters != expected:
+    fits = claim.parameters == expected
+    if of_cell and claim.over != NOMINAL:
+        fits = claim.parameters.names == expected.names and expected.contains(claim.parameters)
+    yield _premise("scope", "the parameter box is the one asked for", fits, ident)
+    if shape is None or not fits:
         return
     yield from _place(case, equilibrium, claim, shape)
     yield from _decrease(case, equilibrium, claim, shape)
@@ -142,8 +148,8 @@ def _place(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, shape: El
         "b", "the set is compact and lies in the interior of the domain", inside, claim.identifier,
         detail=f"bounding box of the set {_sides(place)}",
     )  # fmt: skip
-    parameters = parameter_box(case, claim.over)
-    whole = Box((*place.names, *parameters.names), (*place.intervals, *parameters.intervals))
+    sides = dict(parameter_box(case, claim.over).items()) | dict(claim.parameters.items())
+    whole = Box((*place.names, *sides), (*place.intervals, *sides.values()))
     asked = list(dict.fromkeys(c for e in vector_field(case).equations for c in conditions(e)))
     proofs = [condition_holds(c, whole) for c in asked]
     yield _premise(

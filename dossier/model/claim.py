@@ -144,6 +144,17 @@ class LyapunovClaim(Claim):
 
 
 @dataclass(frozen=True, slots=True)
+class CellsClaim(Claim):
+    """Kind ``cells``: the box of the spreads is cut into cells, each with a V and a set of its own.
+
+    A motion keeps its parameters, so it keeps its cell and its V.  Cells are numbered from 1 behind the identifier.
+    """
+
+    equilibrium: str
+    cells: tuple[LyapunovClaim, ...]
+
+
+@dataclass(frozen=True, slots=True)
 class CoverClaim(Claim):
     """Kind ``cover``: the decrease of V on {0 < V <= level}, closed by interval branch and bound."""
 
@@ -185,6 +196,7 @@ KINDS: Mapping[str, type[Claim]] = {
     "routh": RouthClaim,
     "combination": CombinationClaim,
     "gram": LyapunovClaim,
+    "cells": CellsClaim,
     "cover": CoverClaim,
     "sturm": SturmClaim,
 }

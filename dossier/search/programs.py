@@ -40,9 +40,9 @@ UNBOUNDED_LEVEL: Final = Fraction(10**6)
 
 
 def covering_candidates(
-    loop: ScaledLoop, goal: Goal, effort: Effort, subject: str
+    loop: ScaledLoop, goal: Goal, effort: Effort, subject: str, *, partial: bool = True
 ) -> Iterator[tuple[Attempt, Candidate | None]]:
-    """Programs for the whole region, then, where none of them has an answer, for parts of it.
+    """Programs for the whole region, then, where none of them has an answer and `partial`, for parts of it.
 
     The caller stops when it has proved what it wants: asking on means that the last candidate failed.
     """
@@ -66,7 +66,7 @@ def covering_candidates(
             if candidate is None:
                 break
             found = True
-    if not found:
+    if not found and partial:
         yield from _partial_candidates(loop, goal, effort, subject)
 
 

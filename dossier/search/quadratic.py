@@ -14,7 +14,7 @@ from typing import Final, Literal
 import numpy as np
 
 from dossier.model.attempt import Attempt
-from dossier.model.case import Case, Scope
+from dossier.model.case import TOLERANCES, Case, Scope
 from dossier.model.claim import LyapunovClaim
 from dossier.model.decrease import decrease_form
 from dossier.model.equilibrium import Equilibrium
@@ -116,6 +116,28 @@ def seek_quadratic(
     return (*attempts, *more), () if best is None else (best,)
 
 
+def seek_on_cell(
+    case: Case, equilibrium: Equilibrium, cell: Box, goal: Goal, effort: Effort, suffix: str, verify: Verify
+) -> tuple[tuple[Attempt, ...], LyapunovClaim | None, ScaledLoop | None]:
+    """For the combinations in `cell`: a set that just covers the whole region inside all slabs, or None.
+
+    The loop is handed back too, so that a cell without an answer can be cut where it matters.
+    """
+    task = _task(case, equilibrium, TOLERANCES, goal, effort, suffix, verify, cell)
+    if isinstance(task, Attempt):
+        return (task,), None, None
+    attempts: list[Attempt] = []
+    for attempt, candidate in covering_candidates(task.loop, task.goal, effort, task.subject, partial=False):
+        attempts.append(attempt)
+        prospect = None if candidate is None else _prospect(task, candidate)
+        if prospect is not None and prospect.bound >= 1:
+            claim = prove(task, prospect.function, Fraction(1), "quadratic")
+            if isinstance(claim, LyapunovClaim):
+                return tuple(attempts), claim, task.loop
+            attempts[-1] = replace(attempt, ending="no candidate", remark=claim.text)
+    return tuple(attempts), None, task.loop
+
+
 def _largest_of(task: Task, prospects: list[Prospect]) -> tuple[list[Attempt], LyapunovClaim | None]:
     """The largest set provable with any of the prospects, the most promising first."""
     attempts: list[Attempt] = []
@@ -156,12 +178,13 @@ def largest_level(
 
 
 def _task(
-    case: Case, equilibrium: Equilibrium, over: Scope, goal: Goal, effort: Effort, suffix: str, verify: Verify
-) -> Task | Attempt:
+    case: Case, equilibrium: Equilibrium, over: Scope, goal: Goal, effort: Effort, suffix: str, verify: Verify,
+    cell: Box | None = None,
+) -> Task | Attempt:  # fmt: skip
     subject = goal.serves[0] if goal.serves else case.name
     try:
-        loop = scaled_loop(case, equilibrium, over, goal.region)
-        goal, loop = _expanded(case, equilibrium, over, goal, loop)
+        loop = scaled_loop(case, equilibrium, over, goal.region, cell=cell)
+        goal, loop = _expanded(case, equilibrium, over, goal, loop, cell)
     except ArithmeticError as error:
         return Attempt(subject, "quadratic, Gram matrices", "out of reach", str(error))
     field = loop.field
@@ -174,7 +197,7 @@ def _task(
 
 
 def _expanded(
-    case: Case, equilibrium: Equilibrium, over: Scope, goal: Goal, loop: ScaledLoop
+    case: Case, equilibrium: Equilibrium, over: Scope, goal: Goal, loop: ScaledLoop, cell: Box | None
 ) -> tuple[Goal, ScaledLoop]:
     """Elementary functions expanded as coarsely as possible, on a box that becomes part of the goal."""
     if not (isinstance(loop.field, NotRational) and goal.region.is_bounded):
@@ -184,11 +207,12 @@ def _expanded(
     widths: list[Fraction] = []
     for place, side in enumerate(goal.region.intervals):
         wanted = ROOM * max(abs(b) for b in side.bounds)
-        reaches = [s.reach for s in goal.slabs if s.reach and _is_along(s, place)]
-        widths.append(min([*([wanted] if wanted else []), *reaches], default=Fraction(1)))
+        reaches = [s.reach for s in goal.slabs if s.reach is not None and s.reach > 0 and _is_along(s, place)]
+        known: list[Fraction] = [*([wanted] if wanted else []), *reaches]
+        widths.append(min(known) if known else Fraction(1))
     sides = tuple(Interval(b.lower - w, b.upper + w) for b, w in zip(equilibrium.state, widths, strict=True))
     for order in range(HIGHEST_ORDER + 1):
-        found = scaled_loop(case, equilibrium, over, goal.region, (Box(states, sides), order))
+        found = scaled_loop(case, equilibrium, over, goal.region, (Box(states, sides), order), cell)
         if not isinstance(found.field, NotRational):
             slabs = tuple(
                 Slab(tuple(Fraction(int(i == j)) for j in range(len(states))), -w, w, f"the box of expansion in {n}")

@@ -221,7 +221,7 @@ def _by_set(knowledge: Knowledge, criterion: Criterion) -> Iterator[Finding]:
     """A proved attractive set shows asymptotic stability, also where the linear part does not decide."""
     if criterion.claim != "asymptotic_stability":
         return
-    for claim, finding in knowledge.sets(criterion.over):
+    for claim, finding in (*knowledge.sets(criterion.over), *knowledge.cells()):
         statement = "the equilibrium attracts a whole neighbourhood and is stable"
         premises = (knowledge.place, *finding.premises)
         yield conclude(knowledge, criterion, finding.theorem, statement, premises, (claim.identifier,))

@@ -6,6 +6,7 @@ from collections.abc import Iterator
 from fractions import Fraction
 
 from dossier.checks.boxes import range_over
+from dossier.checks.cells import merged
 from dossier.checks.combination import OUTSIDE, count_of, words_of
 from dossier.checks.criteria.common import conclude, open_question, refute, stated_bounds, tightest_bounds
 from dossier.checks.knowledge import Knowledge
@@ -13,7 +14,7 @@ from dossier.checks.linear import routh_claim_id
 from dossier.checks.lyapunov import Ellipsoid, ellipsoid, parameter_box
 from dossier.checks.sets import bound_over_set, covered_scale, covers
 from dossier.model.case import NOMINAL, Criterion
-from dossier.model.claim import CoverClaim, LyapunovClaim
+from dossier.model.claim import CellsClaim, CoverClaim, LyapunovClaim
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.expression import Expression, symbol
 from dossier.model.figures import figure, span
@@ -43,6 +44,9 @@ def establish_region(knowledge: Knowledge, criterion: Criterion) -> tuple[Findin
         shape = ellipsoid(claim, len(knowledge.case.model.states))
         if shape is not None:
             found.append(_by_set(knowledge, criterion, equilibrium, region, claim, finding, shape))
+    found += [
+        _by_cells(knowledge, criterion, equilibrium, region, claim, finding) for claim, finding in knowledge.cells()
+    ]
     return tuple(found) or (
         open_question(knowledge, criterion, "no set was proved attractive for the scope asked for"),
     )
@@ -79,6 +83,29 @@ def _by_set(
         premises.append(premise)
         facts.update(more)
     return conclude(knowledge, criterion, theorem, statement, tuple(premises), (claim.identifier,), facts)
+
+
+def _by_cells(
+    knowledge: Knowledge, criterion: Criterion, equilibrium: Equilibrium, region: Box, claim: CellsClaim,
+    finding: Finding,
+) -> Finding:  # fmt: skip
+    """The same criterion on every cell; what holds on each holds for every combination."""
+    size = len(knowledge.case.model.states)
+    shapes = [(cell, shape) for cell in claim.cells if (shape := ellipsoid(cell, size)) is not None]
+    parts = [_by_set(knowledge, criterion, equilibrium, region, cell, finding, shape) for cell, shape in shapes]
+    own = len(finding.premises)
+    premises = [knowledge.place, *finding.premises]
+    premises += merged([(p.premises[1], *p.premises[2 + own :]) for p in parts], claim.identifier)
+    facts: dict[str, Enclosure] = {}
+    for name in parts[0].facts:
+        known = [p.facts[name] for p in parts if name in p.facts]
+        lowers = [e.lower for e in known if e.lower is not None]
+        uppers = [e.upper for e in known if e.upper is not None]
+        scale = name == "proved scale of the region"
+        facts[name] = Enclosure(min(lowers), min(uppers) if scale else max(uppers), known[0].unit)
+    return conclude(
+        knowledge, criterion, parts[0].theorem, parts[0].statement, tuple(premises), (claim.identifier,), facts
+    )
 
 
 def _excursion(

@@ -1,0 +1,92 @@
+"""Cut the box of the spreads into cells until each has a quadratic certificate of its own.
+
+Only parameters that stay constant during a motion may be cut: there each motion has one V for all time.
+"""
+
+from __future__ import annotations
+
+from fractions import Fraction
+from typing import Final
+
+import numpy as np
+
+from dossier.model.affine import spread_box
+from dossier.model.attempt import Attempt
+from dossier.model.case import TOLERANCES, Case
+from dossier.model.claim import CellsClaim, LyapunovClaim
+from dossier.model.equilibrium import Equilibrium
+from dossier.model.loop import model_hash
+from dossier.model.region import Box, Interval
+from dossier.search.effort import Effort
+from dossier.search.goal import Goal
+from dossier.search.offsets import ScaledLoop
+from dossier.search.quadratic import Verify, seek_on_cell
+
+SMALLEST: Final = Fraction(1, 64)
+"""Share of a spread below which a cell is not cut: an answer that needs finer cells is not worth its length."""
+
+
+def seek_cells(
+    case: Case, equilibrium: Equilibrium, goal: Goal, effort: Effort, suffix: str, verify: Verify
+) -> tuple[tuple[Attempt, ...], CellsClaim | None]:
+    """A claim whose cells cover the whole box, each with a verified set that covers the region; or None."""
+    subject = goal.serves[0] if goal.serves else case.name
+    method, identifier = "quadratic, cell by cell of the tolerances", f"{case.name}.{suffix}"
+    whole = spread_box(case)
+    free = [p.name for p in case.model.parameters if p.has_spread and not p.varies]
+    if not free or not goal.region.is_bounded:
+        return (), None
+    waiting, done, looked, why = [whole], list[LyapunovClaim](), 0, ""
+    while waiting:
+        box = waiting.pop()
+        looked += 1
+        tried, claim, loop = seek_on_cell(case, equilibrium, box, goal, effort, "cell", verify)
+        if claim is not None:
+            done.append(claim)
+            continue
+        why = tried[-1].remark if tried else why
+        halves = None if loop is None else _halves(loop, box, whole, free)
+        if halves is None or len(done) + len(waiting) + 2 > effort.cells:
+            break
+        waiting.extend(halves)
+    else:
+        cells = tuple(_numbered(c, f"{identifier}.{k}") for k, c in enumerate(done, 1))
+        claim = CellsClaim(identifier, model_hash(case), TOLERANCES, cells[0].theorem, equilibrium.identifier, cells)
+        attempt = Attempt(subject, method, "found", f"{len(cells)} cells cover the box", {"cells": looked})
+        return (attempt,), claim
+    share = float(sum((_share(c.parameters, whole) for c in done), Fraction(0)))
+    remark = f"proved on {share:.3g} of the box when the budget of cells was spent; {why}"
+    return (Attempt(subject, method, "no candidate", remark, {"cells": looked}),), None
+
+
+def _numbered(claim: LyapunovClaim, identifier: str) -> LyapunovClaim:
+    return LyapunovClaim(
+        identifier, claim.model_hash, claim.over, claim.theorem, claim.equilibrium, claim.method, claim.function,
+        claim.level, claim.parameters, claim.expansion, claim.decrease,
+    )  # fmt: skip
+
+
+def _share(cell: Box, whole: Box) -> Fraction:
+    share = Fraction(1)
+    for part, side in zip(cell.intervals, whole.intervals, strict=True):
+        share *= part.width / side.width
+    return share
+
+
+def _halves(loop: ScaledLoop, box: Box, whole: Box, free: list[str]) -> tuple[Box, Box] | None:
+    """Cut the constant parameter whose two ends change the linear part most; None where all are too narrow."""
+    effects: dict[int, float] = {}
+    for place, (name, side) in enumerate(box.items()):
+        if name in free and side.width > SMALLEST * whole[name].width:
+            column = loop.vertices[:, place]
+            high = column > column.mean()
+            if high.any() and not high.all():
+                change = loop.linear[high].mean(axis=0) - loop.linear[~high].mean(axis=0)
+                effects[place] = float(np.abs(change).max())
+    if not effects:
+        return None
+    cut = max(effects, key=effects.__getitem__)
+    side = box.intervals[cut]
+    parts = (Interval(side.lower, side.middle), Interval(side.middle, side.upper))
+    first, second = (Box(box.names, tuple(p if k == cut else s for k, s in enumerate(box.intervals))) for p in parts)
+    return first, second
