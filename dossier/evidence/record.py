@@ -10,7 +10,7 @@ from fractions import Fraction
 from typing import Any, Final
 
 from dossier.model.ball import Ball
-from dossier.model.claim import Claim, CoverClaim, LyapunovClaim, kind_of
+from dossier.model.claim import CellsClaim, Claim, CoverClaim, LyapunovClaim, kind_of
 from dossier.model.dossier import Evidence, PointEvidence
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.finding import Enclosure, Finding
@@ -169,6 +169,9 @@ def _certificate_data(claim: Claim, point: PointEvidence) -> dict[str, Any]:
         "file": f"certificates/{claim.identifier}.json",
         "sha256": hashlib.sha256(canonical(certificate_file(claim, point.findings)).encode()).hexdigest(),
     }
+    if isinstance(claim, CellsClaim):
+        data["method"] = "quadratic"
+        data["cells"] = len(claim.cells)
     if isinstance(claim, LyapunovClaim | CoverClaim):
         data["method"] = claim.method if isinstance(claim, LyapunovClaim) else "interval"
         data["degree"] = max((sum(e) for e in claim.function), default=0)

@@ -4,13 +4,15 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
-from dossier.model.claim import Claim, CoverClaim, LyapunovClaim, RootsClaim, SturmClaim
+from dossier.model.affine import spread_box
+from dossier.model.claim import CellsClaim, Claim, CoverClaim, LyapunovClaim, RootsClaim, SturmClaim
 from dossier.model.dossier import PointEvidence
 from dossier.model.finding import Finding
 from dossier.model.theorem import THEOREMS
-from dossier.report import equations, formulas, numbers, speech, wording
+from dossier.report import equations, formulas, numbers, speech, units, wording
 from dossier.report.blocks import Block, Column, Equations, Facts, Paragraph, Row, Subheading, Table
 from dossier.report.content.context import Context
+from dossier.report.content.sides import side_text
 from dossier.report.rich import Formula, Mono, Rich, rich
 
 METHODS = {
@@ -24,11 +26,14 @@ SetClaim = LyapunovClaim | CoverClaim
 def certificate_blocks(context: Context, point: PointEvidence) -> Iterator[Block]:
     """Every certificate with a function V, then the evidence of other kinds."""
     sets = [c for c in point.claims if isinstance(c, LyapunovClaim | CoverClaim)]
+    in_cells = [c for c in point.claims if isinstance(c, CellsClaim)]
     others = [c for c in point.claims if isinstance(c, RootsClaim | SturmClaim)]
-    if sets:
+    if sets or in_cells:
         yield Paragraph((wording.CERTIFICATE_CAUTION,), "caution")
     for claim in sets:
         yield from _set_blocks(context, point, claim)
+    for claim in in_cells:
+        yield from _cell_blocks(context, point, claim)
     if others:
         yield _other_table(context, point)
 
@@ -46,6 +51,35 @@ def _set_blocks(context: Context, point: PointEvidence, claim: SetClaim) -> Iter
     else:
         yield Paragraph(rich("The same function V as in ", context.link(twin.identifier), "."))
     yield Facts(tuple(_set_facts(context, point, claim, degree)))
+    for finding in point.findings:
+        if finding.subject == claim.identifier and finding.premises:
+            yield premise_table(context, finding)
+
+
+def _cell_blocks(context: Context, point: PointEvidence, claim: CellsClaim) -> Iterator[Block]:
+    """The cells of one certificate: which parameters were cut where; the functions stand in the certificate."""
+    yield Subheading((f"{claim.identifier}, certificate in cells",), claim.identifier)
+    yield Paragraph(
+        (
+            "No single function V was found for the whole box of spreads. The box is cut into the cells below; each "
+            "has a quadratic V and a set of its own, printed in full in the certificate. A motion keeps its "
+            "parameters, so it stays in one cell.",
+        )
+    )
+    whole = spread_box(point.case)
+    cut = [n for n in whole.names if any(c.parameters[n] != whole[n] for c in claim.cells)]
+    printed = {p.name: units.absolute_unit(p.unit, p.scale) for p in point.case.model.parameters}
+    rows = []
+    for place, cell in enumerate(claim.cells, 1):
+        sides = (side_text(cell.parameters[n], printed[n]) for n in cut)
+        rows.append(Row(((str(place),), *((side,) for side in sides), (str(len(cell.decrease)),))))
+    share = 68 // max(len(cut), 1)
+    columns = (
+        Column("Cell", "number", 8),
+        *(Column(f"{n}, {units.unit_text(printed[n].name) or 1}", "number", share) for n in cut),
+        Column("Identities", "number", 100 - 8 - share * len(cut)),
+    )
+    yield Table(f"Cells of {claim.identifier}", columns, tuple(rows))
     for finding in point.findings:
         if finding.subject == claim.identifier and finding.premises:
             yield premise_table(context, finding)

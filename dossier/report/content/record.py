@@ -29,6 +29,7 @@ KIND_WORDS = {
     "routh": "characteristic polynomial and Routh array",
     "combination": "linear part at one parameter combination",
     "gram": "function V with its Gram matrices",
+    "cells": "functions V of parameter cells with their Gram matrices",
     "cover": "interval cover of the decrease of V",
     "sturm": "isolated crossings in frequency",
 }
