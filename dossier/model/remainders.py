@@ -40,6 +40,9 @@ HIGHEST_ORDER: Final = 3
 FACTOR_BITS: Final = 24
 """Binary digits of the ends of a factor's interval, rounded outward: short, and far below any margin."""
 
+PIECES: Final = 16
+"""Pieces of the reach over which a remainder is enclosed."""
+
 ARGUMENT: Final = "argument"
 
 
@@ -129,10 +132,26 @@ def _expansion(
             return Refusal(f"{to_text(node)} is not proved differentiable at the equilibrium")
         coefficients.append(ball)
         slope = simplify(differentiate(slope, ARGUMENT))
-    rest = from_arb(evaluate(slope, {ARGUMENT: reach}) / factorial(len(coefficients)))
+    rest = _enclosed(slope, reach, factorial(len(coefficients)))
     if rest is None:
         return Refusal(f"{to_text(node)} has no finite remainder over the set")
     return Expansion(tuple(coefficients), _outward(rest))
+
+
+def _enclosed(slope: Expression, reach: arb, divisor: int) -> Ball | None:
+    """slope/divisor over `reach`, piece by piece, which balls need to be sharp; None where a piece is not finite."""
+    whole = from_arb(reach)
+    if whole is None:
+        return None
+    width = 2 * whole.radius / PIECES
+    found = []
+    for place in range(PIECES if width else 1):
+        piece = Ball.from_bounds(whole.lower + place * width, whole.lower + (place + 1) * width)
+        found.append(from_arb(evaluate(slope, {ARGUMENT: enclose(piece)}) / divisor))
+    known = [b for b in found if b is not None]
+    if len(known) < len(found):
+        return None
+    return Ball.from_bounds(min(b.lower for b in known), max(b.upper for b in known))
 
 
 def _outward(ball: Ball) -> Interval:

@@ -199,7 +199,7 @@ def _task(
 def _expanded(
     case: Case, equilibrium: Equilibrium, over: Scope, goal: Goal, loop: ScaledLoop, cell: Box | None
 ) -> tuple[Goal, ScaledLoop]:
-    """Elementary functions expanded as coarsely as possible, on a box that becomes part of the goal."""
+    """Elementary functions expanded as coarsely as a stable linear part allows, on a box that joins the goal."""
     if not (isinstance(loop.field, NotRational) and goal.region.is_bounded):
         return goal, loop
     states = case.model.state_names
@@ -211,17 +211,22 @@ def _expanded(
         known: list[Fraction] = [*([wanted] if wanted else []), *reaches]
         widths.append(min(known) if known else Fraction(1))
     sides = tuple(Interval(b.lower - w, b.upper + w) for b, w in zip(equilibrium.state, widths, strict=True))
+    slabs = tuple(
+        Slab(tuple(Fraction(int(i == j)) for j in range(len(states))), -w, w, f"the box of expansion in {n}")
+        for i, (w, n) in enumerate(zip(widths, states, strict=True))
+        if n in met
+    )
+    best: ScaledLoop | None = None
     for order in range(HIGHEST_ORDER + 1):
         found = scaled_loop(case, equilibrium, over, goal.region, (Box(states, sides), order), cell)
-        if not isinstance(found.field, NotRational):
-            slabs = tuple(
-                Slab(tuple(Fraction(int(i == j)) for j in range(len(states))), -w, w, f"the box of expansion in {n}")
-                for i, (w, n) in enumerate(zip(widths, states, strict=True))
-                if n in met
-            )
-            return replace(goal, slabs=(*goal.slabs, *slabs)), found
-        loop = found
-    return goal, loop
+        if isinstance(found.field, NotRational):
+            loop = found if best is None else loop
+            continue
+        best = best or found
+        if found.is_settling:
+            best = found
+            break
+    return (goal, loop) if best is None else (replace(goal, slabs=(*goal.slabs, *slabs)), best)
 
 
 def _states_in_functions(case: Case) -> frozenset[str]:

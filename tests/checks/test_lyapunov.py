@@ -32,7 +32,7 @@ def diagonal(basis, *values) -> Gram:
 def claim_about(case: Case, function, level, *witnesses: DecreaseWitness, over="nominal", box=NOTHING) -> LyapunovClaim:
     theorem = "T3" if case.model.time == "sampled" else "T2"
     return LyapunovClaim(
-        "point.V2", model_hash(case), over, theorem, "point.E1", "quadratic", function, F(level), box, witnesses
+        "point.V2", model_hash(case), over, theorem, "point.E1", "quadratic", function, F(level), box, 0, witnesses
     )
 
 

@@ -219,7 +219,7 @@ def test_the_same_seed_gives_the_same_campaign_and_another_seed_another_one():
 def quadratic_claim(case, level, function):
     return LyapunovClaim(
         "point.V2", model_hash(case), "nominal", "T2", "point.E1", "quadratic",
-        {k: Fraction(v) for k, v in function.items()}, Fraction(level), Box((), ()), (),
+        {k: Fraction(v) for k, v in function.items()}, Fraction(level), Box((), ()), 0, (),
     )  # fmt: skip
 
 

@@ -41,6 +41,7 @@ CLAIMS = [
         {(0, 2): F(1), (2, 0): F(1, 3)},
         F(2),
         SIDE,
+        1,
         (DecreaseWitness((0,), GRAM, GRAM),),
     ),
     CoverClaim(*COMMON, "point.E1", {(2,): F(5)}, F(1), 12),

@@ -104,7 +104,7 @@ def point(states=3, function=None):
     other = replace(
         equilibrium_at(F(9, 5), *[0] * (states - 1)), identifier="point.E2", chosen=False, stability="unstable"
     )
-    claim = LyapunovClaim("point.V2", "", "nominal", "T2", "point.E1", "quadratic", function, F(8), Box((), ()), ())
+    claim = LyapunovClaim("point.V2", "", "nominal", "T2", "point.E1", "quadratic", function, F(8), Box((), ()), 0, ())
     proof = Finding("point.V2", "exact", "proved", "exact", "nominal", "T2", "V falls", evidence=("point.V2",))
     scale = {"proved scale of the region": Enclosure(F(5, 4), F(5, 4), "1")}
     region = Finding("point.C1", "exact", "proved", "exact", "nominal", "T2", "attracted", (), scale, ("point.V2",))

@@ -146,9 +146,9 @@ def reordered_monomials(file: Data) -> Iterator[Data]:
     """Coefficients, monomials, rows or states in another order."""
     claim = file["claim"]
     paths = [("function",), ("polynomial",), ("open_loop",), ("closed_loop",), ("array",), ("cells", 0, "matrix")]
-    paths += [("decrease", 0, "main", "basis"), ("decrease",), ("search", "sides")]
+    paths += [("decrease", 0, "main", "basis"), ("decrease",), ("search", "sides"), ("cells", 0, "decrease")]
     for path in paths:
-        found = at(claim, path) if path[0] in claim else []
+        found = at(claim, path) if path[0] in claim and path[-1] in at(claim, path[:-1]) else []
         if found != found[::-1]:
             copy = deepcopy(file)
             put(copy["claim"], path, found[::-1])

@@ -23,13 +23,14 @@ KINDS = {
     "combination": ("rest", "W-C1"),
     "gram": ("hold", "V2"),
     "sturm": ("rest", "M-u"),
-    "cover": ("lean", "V2-nominal"),
+    "cover": ("capped", "V2-nominal"),
+    "cells": ("swing", "V2-cells"),
 }
 """One certificate of every kind: its operating point and its own name there."""
 
 NOT_APPLICABLE = {
     *(("widened_region", k) for k in ("routh", "cover", "combination")),
-    ("level", "combination"),
+    *(("level", k) for k in ("combination", "cells")),
     ("reordered_monomials", "combination"),
 }
 """Certificates that state no region of their own; a combination has no level and no monomials either."""
@@ -64,6 +65,7 @@ WITNESSES = {
     "gram": {"decrease"},
     "sturm": {"gain_crossings", "phase_crossings", "peak_candidates"},
     "cover": {"boxes"},
+    "cells": {"cells"},
 }
 """Parts of a claim that only help to prove it: another uniqueness box, Gram matrix or interval may prove the same."""
 
@@ -104,12 +106,20 @@ def scaled(field, factor):
 FORGERIES = {
     "a faster decay than the loop has": ("rest", "P-C1", scaled("level", 2), "C1"),
     "a set far larger than the proved one": ("hold", "V2 V2-tight", scaled("level", 100), "C1"),
-    "a set beyond the next equilibrium": ("lean", "V2-nominal", scaled("level", 50), "C1"),
+    "a set beyond the next equilibrium": ("lean", "V2-nominal V2-nominal-tight", scaled("level", 50), "C1"),
     "a combination within every bound": (
         "rest", "W-C1", lambda c: c.update(values={"k1": "1000", "m": "10"}), "C4",
     ),
     "a combination outside of the tolerances": (
         "rest", "W-C1", lambda c: c.update(values={"k1": "1000", "m": "1"}), "C4",
+    ),
+    "a cell left out": ("swing", "V2-cells", lambda c: c["cells"].pop(), "C1"),
+    "a cell that reaches less far": (
+        "swing", "V2-cells", lambda c: c["cells"][0]["parameters"]["sides"][0].__setitem__(1, "21/4"), "C1",
+    ),
+    "a coarser expansion of the sine": ("swing", "V2-cells", lambda c: c["cells"][0].update(expansion=3), "C1"),
+    "a set of one cell far larger": (
+        "swing", "V2-cells", lambda c: c["cells"][0].update(level=str(100 * Fraction(c["cells"][0]["level"]))), "C1",
     ),
     "a list of no equilibria": ("rest", "R1", lambda c: c.update(solutions=[]), "C3"),
     "a list that hides an undecided box": ("rest", "R1", lambda c: c.update(undecided=[c["search"]]), "C3"),
@@ -148,11 +158,11 @@ def test_a_set_proved_at_nominal_is_no_evidence_over_tolerances(damaged, capsys)
 
 
 def test_a_nominal_set_relabelled_as_one_over_tolerances_is_refused(damaged, capsys):
-    folder = damaged("lean")
-    rewrite(folder, "certificates/lean.V2-nominal.json", lambda d: d["claim"].update(over="tolerances"))
-    honest = make_everything_true_but_the_verdicts(folder, "lean")
+    folder = damaged("capped")
+    rewrite(folder, "certificates/capped.V2-nominal.json", lambda d: d["claim"].update(over="tolerances"))
+    honest = make_everything_true_but_the_verdicts(folder, "capped")
     assert honest["C1"]["verdict"] == "not established"
-    assert any("lean.C1" in line for line in refusals(folder, capsys))
+    assert any("capped.C1" in line for line in refusals(folder, capsys))
 
 
 def test_a_certificate_that_bears_the_name_of_the_list_of_equilibria_is_no_list(damaged, capsys):

@@ -1,5 +1,6 @@
 """A folder that is not as a build left it is refused, whatever was put into it; never with a traceback."""
 
+import json
 import os
 import random
 import shutil
@@ -146,6 +147,20 @@ def test_an_empty_folder_and_none_at_all_are_refused(tmp_path, capsys):
     assert rechecked(tmp_path / "nowhere", capsys)[0] == REFUSED
 
 
+def what_is_verified(text: bytes) -> object:
+    """The content but for what searches and simulations report, which recheck says it does not repeat."""
+    try:
+        data = json.loads(text)
+        if canonical(data).encode() != text:
+            return text
+        for point in data.get("operating_points", {}).values():
+            for part in ("attempts", "campaign"):
+                point.pop(part)
+    except (ValueError, AttributeError, KeyError):
+        return text
+    return data
+
+
 @pytest.mark.parametrize("seed", range(4))
 def test_no_random_change_of_a_few_characters_passes_or_breaks_the_recheck(seed, damaged, capsys):
     """Characters of one file are replaced by others of the same file, so that many changes are still JSON."""
@@ -159,7 +174,7 @@ def test_no_random_change_of_a_few_characters_passes_or_breaks_the_recheck(seed,
         for _ in range(chance.choice((1, 1, 2, 5))):
             place = chance.randrange(len(text))
             text[place] = text[chance.randrange(len(text))]
-        if bytes(text) != (sound / name).read_bytes():
+        if what_is_verified(bytes(text)) != what_is_verified((sound / name).read_bytes()):
             (folder / name).write_bytes(text)
             make_manifest_true(folder)
             refusals(folder, capsys)
