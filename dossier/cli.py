@@ -75,6 +75,11 @@ def _parser() -> argparse.ArgumentParser:
     inspect = commands.add_parser("inspect", help="show the model as understood, in SI, with warnings")
     inspect.add_argument("project", type=Path, metavar="PROJECT")
     inspect.set_defaults(run=_inspect)
+    new = commands.add_parser("new", help="write a commented project file to start from")
+    new.add_argument("folder", type=Path, metavar="DIR", help="folder of the new project")
+    new.set_defaults(run=_new)
+    schema = commands.add_parser("schema", help="print the format as a JSON Schema, for editors")
+    schema.set_defaults(run=_schema)
     recheck = commands.add_parser("recheck", help="verify a written dossier again without any search")
     recheck.add_argument("folder", type=Path, metavar="OUT", help="folder written by build")
     recheck.set_defaults(run=_recheck)
@@ -118,6 +123,33 @@ def _inspect(options: argparse.Namespace) -> int:
         terminal.faults(project.faults)
         return FAULTY_INPUT
     terminal.model(project)
+    return PROVED
+
+
+def _new(options: argparse.Namespace) -> int:
+    from dossier.evidence.store import NotADossierError, write_new_project
+    from dossier.report.locate import starter
+    from dossier.terminal import Terminal
+
+    terminal = Terminal()
+    try:
+        written = write_new_project(options.folder, starter())
+    except FileExistsError as error:
+        terminal.error(f"{error.filename} exists already; nothing was written")
+        return FAULTY_INPUT
+    except (NotADossierError, OSError) as error:
+        terminal.error(str(error))
+        return FAULTY_INPUT
+    terminal.say(f"written: {written}", f"next: dossier inspect {written}", f"then: dossier build {written}")
+    return PROVED
+
+
+def _schema(options: argparse.Namespace) -> int:
+    import json
+
+    from dossier.project.schema import json_schema
+
+    print(json.dumps(json_schema(), indent=1, sort_keys=True, ensure_ascii=False))
     return PROVED
 
 

@@ -69,6 +69,11 @@ class Terminal:
         """One sentence about a request that cannot be carried out."""
         self.err.print(f"dossier: {message}", style="bold", markup=False)
 
+    def say(self, *lines: str) -> None:
+        """Plain lines of an answer."""
+        for line in lines:
+            self.out.print(Text(line))
+
     def faults(self, faults: Sequence[Fault]) -> None:
         """Every fault with its place, the offending text, what was expected and what to do."""
         for fault in faults:

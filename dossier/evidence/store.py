@@ -12,6 +12,8 @@ from pathlib import Path
 from typing import Final
 
 MANIFEST: Final = "MANIFEST.sha256"
+STARTER: Final = "project.yaml"
+"""Name of a new project's file."""
 RUN_LOG: Final = "run.json"
 """Times and host of the run: not hashed, not printed."""
 
@@ -43,6 +45,20 @@ def refuse_foreign_folder(folder: Path) -> None:
     changed = [p for p in verify_manifest(folder) if not p.endswith(MISSING)]
     if changed:
         raise NotADossierError(f"{folder} has changed since it was written ({changed[0]}); choose another --out")
+
+
+def write_new_project(folder: Path, content: bytes) -> Path:
+    """A starter project file in `folder`, which is made where it is missing; nothing is ever replaced.
+
+    Raises FileExistsError where there is a project already, NotADossierError or OSError where it cannot be made.
+    """
+    if not folder.exists():
+        _refuse_place(folder)
+    folder.mkdir(parents=True, exist_ok=True)
+    target = folder / STARTER
+    with target.open("xb") as file:
+        file.write(content)
+    return target
 
 
 def _refuse_place(folder: Path) -> None:

@@ -56,8 +56,13 @@ def _choice(*values: str) -> GetPydanticSchema:
     return _text_schema(check, {"enum": list(values)})
 
 
+def _flag(value: Text) -> None:
+    if value not in ("true", "false"):
+        raise PydanticCustomError("choice", "not one of the words allowed here", {"choices": ("true", "false")})
+
+
 Plain = Annotated[Text, _text_schema(lambda _value: None, {"type": ["string", "number"]})]
-Flag = Annotated[Text, _choice("true", "false")]
+Flag = Annotated[Text, _text_schema(_flag, {"enum": [True, False]})]
 
 
 def _keep(kind: type) -> Any:
@@ -268,5 +273,12 @@ class ProjectEntry(Entry):
 
 
 def json_schema() -> dict[str, Any]:
-    """The JSON Schema of the format, for editors."""
-    return ProjectEntry.model_json_schema()
+    """The format as a JSON Schema (draft 2020-12), for editors that check and complete while one types.
+
+    It knows names, shapes and fixed words; units, formulas and references are checked by reading the file.
+    """
+    return {
+        "$schema": "https://json-schema.org/draft/2020-12/schema",
+        "title": "Project of a stability dossier",
+        **{k: v for k, v in ProjectEntry.model_json_schema().items() if k != "title"},
+    }

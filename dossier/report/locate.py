@@ -24,6 +24,11 @@ def templates(candidates: tuple[Path, ...] = CANDIDATES) -> Path:
     raise FileNotFoundError(f"the dossier's templates are missing: {ENTRY} was looked for in {places}")
 
 
+def starter() -> bytes:
+    """The commented project file that a new project starts from."""
+    return (templates() / "starter.yaml").read_bytes()
+
+
 def font(name: str) -> Path:
     """The font file `name` in the template folder's ``fonts``."""
     return templates() / "fonts" / name

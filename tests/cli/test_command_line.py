@@ -1,5 +1,6 @@
 """The commands as a user meets them: exit codes, messages, files written or left alone."""
 
+import json
 import os
 import re
 import shutil
@@ -275,9 +276,43 @@ def test_recheck_of_what_is_no_whole_dossier_is_exit_code_four(damage, built, tm
     assert "refused" in done.stdout and "Traceback" not in done.stderr
 
 
+def test_a_new_project_is_sound_and_proves_what_it_asks_for(tmp_path):
+    folder = tmp_path / "axis"
+    done = dossier("new", folder)
+    assert done.returncode == 0 and str(folder / "project.yaml") in done.stdout
+    inspected = dossier("inspect", folder)
+    assert inspected.returncode == 0 and "warning" not in inspected.stdout
+    assert dossier("build", folder, "--effort", "quick").returncode == 0
+    before = (folder / "project.yaml").read_bytes()
+    again = dossier("new", folder)
+    assert again.returncode == 2 and "exists already" in again.stderr
+    assert (folder / "project.yaml").read_bytes() == before
+
+
+def test_a_new_project_is_refused_where_no_folder_can_be_made(tmp_path):
+    (tmp_path / "file").write_text("mine")
+    for place in (tmp_path / "file", tmp_path / "file" / "below"):
+        done = dossier("new", place)
+        assert done.returncode == 2 and "Traceback" not in done.stderr
+    assert (tmp_path / "file").read_text() == "mine"
+
+
+def test_the_schema_names_every_field_and_claim():
+    """JSON Schema, draft 2020-12: https://json-schema.org/draft/2020-12/schema."""
+    done = dossier("schema")
+    schema = json.loads(done.stdout)
+    assert done.returncode == 0 and schema["$schema"].endswith("2020-12/schema")
+    assert {"dossier", "document", "models", "operating_points"} <= set(schema["required"])
+    claims = schema["$defs"]["CriterionEntry"]["properties"]["claim"]["enum"]
+    assert {"attraction", "decay_rate", "ultimate_bound"} <= set(claims)
+    assert schema["additionalProperties"] is False
+
+
 def test_help_and_version_say_what_the_program_is():
     said = dossier("--help")
     assert said.returncode == 0
-    assert all(word in said.stdout for word in ("build", "inspect", "recheck", "does not certify a machine"))
+    assert all(
+        word in said.stdout for word in ("build", "inspect", "recheck", "new", "schema", "does not certify a machine")
+    )
     assert re.fullmatch(r"dossier [0-9]+\.[0-9]+\S*\n", dossier("--version").stdout)
     assert dossier().returncode == dossier("prove").returncode == 2
