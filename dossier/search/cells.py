@@ -17,6 +17,7 @@ from dossier.model.claim import CellsClaim, LyapunovClaim
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.loop import model_hash
 from dossier.model.region import Box, Interval
+from dossier.search.conic import meter
 from dossier.search.effort import Effort
 from dossier.search.goal import Goal
 from dossier.search.offsets import ScaledLoop
@@ -37,7 +38,11 @@ def seek_cells(
     if not free or not goal.region.is_bounded:
         return (), None
     waiting, done, looked, why = [whole], list[LyapunovClaim](), 0, ""
+    begun = meter.programs
     while waiting:
+        if meter.programs - begun > effort.programs:
+            why = "the budget of conic programs is spent"
+            break
         box = waiting.pop()
         looked += 1
         tried, claim, loop = seek_on_cell(case, equilibrium, box, goal, effort, "cell", verify)
@@ -47,6 +52,7 @@ def seek_cells(
         why = tried[-1].remark if tried else why
         halves = None if loop is None else _halves(loop, box, whole, free)
         if halves is None or len(done) + len(waiting) + 2 > effort.cells:
+            why = f"the budget of cells is spent; {why}" if halves is not None else why
             break
         waiting.extend(halves)
     else:
@@ -55,7 +61,7 @@ def seek_cells(
         attempt = Attempt(subject, method, "found", f"{len(cells)} cells cover the box", {"cells": looked})
         return (attempt,), claim
     share = float(sum((_share(c.parameters, whole) for c in done), Fraction(0)))
-    remark = f"proved on {share:.3g} of the box when the budget of cells was spent; {why}"
+    remark = f"proved on {share:.3g} of the box, then: {why}"
     return (Attempt(subject, method, "no candidate", remark, {"cells": looked}),), None
 
 

@@ -42,7 +42,7 @@ class Solved:
 
 @dataclass
 class Meter:
-    """Programs solved and seconds spent inside the solvers by this process; only for benchmarks and the run log."""
+    """Programs solved and seconds spent inside the solvers by this process; for benchmarks, the run log and work budgets."""
 
     programs: int = 0
     seconds: float = 0.0
