@@ -42,7 +42,7 @@ class Solved:
 
 @dataclass
 class Meter:
-    """Programs solved and seconds spent inside the solvers by this process; for benchmarks, the run log and work budgets."""
+    """Programs solved and seconds inside the solvers, of this process; for benchmarks, run log and work budgets."""
 
     programs: int = 0
     seconds: float = 0.0

@@ -23,6 +23,7 @@ FILES = [
     ("press_slide", "project.yaml"),
     ("dc_bus", "project.yaml"),
     ("dc_bus", "widened_search.yaml"),
+    ("magnetic_bearing", "project.yaml"),
 ]
 
 
@@ -188,3 +189,61 @@ def test_the_bus_returns_from_the_corners_of_its_region(name, examples):
         if name == "full_power_2mF":
             assert 500 < float(bound.lower) < motion.y[1].min() and motion.y[1].max() < float(bound.upper) < 760
             assert motion.y[1].min() > 616 and motion.y[1].max() < 662
+
+
+# --- magnetic bearing -------------------------------------------------------------------------------
+
+ROTOR = {"m": 8.0, "k": 3e-6, "i0": 2.5, "g0": 4e-4, "tau": 1.5e-4}
+ROTOR_SPREAD = {"m": 0.02, "k": 0.08, "i0": 0.01, "g0": 0.04, "tau": 0.15}
+POSITION_GAIN, VELOCITY_GAIN = 15e3, 28.0
+
+
+def rotor_corners():
+    for signs in product((-1, 1), repeat=len(ROTOR)):
+        yield {n: ROTOR[n] * (1 + s * ROTOR_SPREAD[n]) for n, s in zip(ROTOR, signs, strict=True)}
+
+
+def rotor_matrix(p: dict):
+    stiffness, force = 4 * p["k"] * p["i0"] ** 2 / p["g0"] ** 3, 4 * p["k"] * p["i0"] / p["g0"] ** 2
+    lag = [-POSITION_GAIN / p["tau"], -VELOCITY_GAIN / p["tau"], -1 / p["tau"]]
+    return np.array([[0, 1, 0], [stiffness / p["m"], 0, force / p["m"]], lag])
+
+
+def test_the_rotor_decays_as_expected_at_every_corner_and_inside(examples):
+    random = np.random.default_rng(1)
+    inside = [{n: v * (1 + ROTOR_SPREAD[n] * random.uniform(-1, 1)) for n, v in ROTOR.items()} for _ in range(2000)]
+    worst = min(-np.linalg.eigvals(rotor_matrix(p)).real.max() for p in (*rotor_corners(), *inside))
+    assert worst == pytest.approx(269.3, abs=0.1)
+    value = outcomes(examples["magnetic_bearing", "project.yaml"])["levitated.C3"].value
+    assert float(value.lower) < worst < float(value.upper) * (1 + 1e-9)
+
+
+def test_the_margins_of_the_rotor_come_out_of_its_transfer_function():
+    known = expected("magnetic_bearing", "project.yaml")
+    s = 1j * np.logspace(0, 6, 400_001)
+    plant = (ROTOR["tau"] * s + 1) * (ROTOR["m"] * s**2 - 1.171875e6)
+    response = (POSITION_GAIN + VELOCITY_GAIN * s) * 187.5 / plant
+    assert np.max(np.abs(1 / (1 + response))) == pytest.approx(known["levitated.C8"]["value"], rel=1e-5)
+    assert 20 * np.log10(15e3 * 187.5 / 1.171875e6) == pytest.approx(known["levitated.C7"]["value"], rel=1e-9)
+    assert not np.diff(np.sign(response.imag)).any()
+
+
+def test_the_rotor_returns_from_every_corner_within_its_bounds(examples):
+    starts = np.array(list(product((-5e-5, 5e-5), (-0.015, 0.015), (-0.5, 0.5)))).T
+    found = outcomes(examples["magnetic_bearing", "project.yaml"])
+    gap, current = (float(found[f"levitated.{c}"].value.upper) for c in ("C4", "C5"))
+    peaks = np.zeros(2)
+    for p in rotor_corners():
+
+        def flow(_, flat, p=p):
+            x, v, i = flat.reshape(3, -1)
+            near, far = (p["i0"] + i) / (p["g0"] - x), (p["i0"] - i) / (p["g0"] + x)
+            command = -POSITION_GAIN * x - VELOCITY_GAIN * v
+            return np.concatenate([v, p["k"] * (near**2 - far**2) / p["m"], (command - i) / p["tau"]])
+
+        motion = solve_ivp(flow, (0, 0.05), starts.ravel(), method="LSODA", rtol=1e-9, atol=1e-12)
+        path = motion.y.reshape(3, starts.shape[1], -1)
+        peaks = np.maximum(peaks, [np.abs(path[0]).max(), np.abs(path[2]).max()])
+        assert np.abs(path[0, :, -1]).max() < 1e-6
+    assert peaks == pytest.approx([62.1e-6, 1.148], rel=0.02)
+    assert peaks[0] < gap < 120e-6 and peaks[1] < current < 2.4
