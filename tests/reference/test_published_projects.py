@@ -128,6 +128,7 @@ EXPECTED = {
         ("franklin_limit", "r", "?"),
         ("franklin_below", "r", "u"),
         ("nise_range", "p", "s"),
+        ("nise_range_beyond", "r", "s"),
         # E17: 0.1 * 3 = 0.3 in decimals, so two roots are on the axis; binary doubles put them inside.
         ("marginal", "rrn", "?"),
         # E16 and E12: twenty and twelve ill-conditioned eigenvalues, all proved on their side.
@@ -194,9 +195,15 @@ def test_thresholds_of_transition_from_which_motions_do_not_return_are_never_pro
     assert verdicts("planar", name)["C2"] not in ("proved", "supported")
 
 
-def test_ranges_that_reach_beyond_the_stability_limit_are_not_proved():
-    assert verdicts("linear", "nise_range_beyond") != {"C1": "proved"}
-    assert verdicts("three_states", "lorenz_crossing") != {"C1": "proved"}
+def test_a_range_that_reaches_beyond_the_stability_limit_is_refuted_by_its_far_end():
+    # N. Nise, Example 6.9 (from memory): 0 < K < 1386; the range is [1, 1387].
+    (outcome,) = point("linear", "nise_range_beyond").outcomes
+    assert outcome.verdict == "refuted" and outcome.counter_example["combination"] == "K = 1387"
+
+
+def test_a_range_in_which_a_moving_equilibrium_loses_its_stability_is_not_proved():
+    # C. Sparrow 1982 (from memory): 470/19 = 24.7368 lies in [24.7, 24.8].
+    assert verdicts("three_states", "lorenz_crossing") == {"C1": "not established"}
 
 
 def near(enclosure: tuple[Fraction, Fraction], known: float, tolerance: float) -> bool:
