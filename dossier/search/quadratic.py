@@ -45,8 +45,8 @@ LEVEL_SHARES: Final = tuple(Fraction(s) for s in ("1", "0.9998", "0.999", "0.99"
 """Shares of the promising level tried before bisection: mostly the first or second is proved."""
 LEAST_SHARE: Final = 1e-5
 """Share of the promising level at which bisection begins where nothing is proved yet."""
-ROOM: Final = Fraction(5, 2)
-"""Size of the box on which elementary functions are expanded first, in half widths of the region."""
+ROOMS: Final = (Fraction(5, 2), Fraction(5))
+"""Sizes of the box on which elementary functions are expanded, in half widths of the region; the tighter first."""
 BEYOND: Final = Fraction(1, 10**9)
 """Share by which the box of an expansion is taken wider than computed in floating point."""
 CLOSE_ENOUGH: Final = 1.01
@@ -98,12 +98,26 @@ def seek_quadratic(
     bounded (there are slabs), the same V at the least level that covers the region follows, as its
     bounds are tighter.
     """
-    task = _task(case, equilibrium, over, goal, effort, suffix, verify)
-    if isinstance(task, Attempt):
-        return (task,), ()
+    attempts: list[Attempt] = []
+    found: tuple[LyapunovClaim, ...] = ()
+    for room in ROOMS:
+        task = _task(case, equilibrium, over, goal, effort, suffix, verify, room=room)
+        if isinstance(task, Attempt):
+            return (*attempts, task), found
+        tried, claims = _seek(task)
+        attempts += tried
+        if not found or (claims and claims[0].level > found[0].level):
+            found = claims
+        covers = bool(found) and goal.region.is_bounded and found[0].level >= 1
+        if covers or not task.loop.is_expanded:
+            break
+    return tuple(attempts), found
+
+
+def _seek(task: Task) -> tuple[tuple[Attempt, ...], tuple[LyapunovClaim, ...]]:
     attempts: list[Attempt] = []
     prospects: list[Prospect] = []
-    for attempt, candidate in covering_candidates(task.loop, task.goal, effort, task.subject):
+    for attempt, candidate in covering_candidates(task.loop, task.goal, task.effort, task.subject):
         attempts.append(attempt)
         if candidate is None:
             continue
@@ -179,12 +193,12 @@ def largest_level(
 
 def _task(
     case: Case, equilibrium: Equilibrium, over: Scope, goal: Goal, effort: Effort, suffix: str, verify: Verify,
-    cell: Box | None = None,
+    cell: Box | None = None, room: Fraction = ROOMS[0],
 ) -> Task | Attempt:  # fmt: skip
     subject = goal.serves[0] if goal.serves else case.name
     try:
         loop = scaled_loop(case, equilibrium, over, goal.region, cell=cell)
-        goal, loop = _expanded(case, equilibrium, over, goal, loop, cell)
+        goal, loop = _expanded(case, equilibrium, over, goal, loop, cell, room)
     except ArithmeticError as error:
         return Attempt(subject, "quadratic, Gram matrices", "out of reach", str(error))
     field = loop.field
@@ -197,7 +211,13 @@ def _task(
 
 
 def _expanded(
-    case: Case, equilibrium: Equilibrium, over: Scope, goal: Goal, loop: ScaledLoop, cell: Box | None
+    case: Case,
+    equilibrium: Equilibrium,
+    over: Scope,
+    goal: Goal,
+    loop: ScaledLoop,
+    cell: Box | None,
+    room: Fraction,
 ) -> tuple[Goal, ScaledLoop]:
     """Elementary functions expanded as coarsely as a stable linear part allows, on a box that joins the goal."""
     if not (isinstance(loop.field, NotRational) and goal.region.is_bounded):
@@ -206,7 +226,7 @@ def _expanded(
     met = _states_in_functions(case)
     widths: list[Fraction] = []
     for place, side in enumerate(goal.region.intervals):
-        wanted = ROOM * max(abs(b) for b in side.bounds)
+        wanted = room * max(abs(b) for b in side.bounds)
         reaches = [s.reach for s in goal.slabs if s.reach is not None and s.reach > 0 and _is_along(s, place)]
         known: list[Fraction] = [*([wanted] if wanted else []), *reaches]
         widths.append(min(known) if known else Fraction(1))

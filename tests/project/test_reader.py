@@ -67,8 +67,8 @@ def test_every_machine_is_read_without_fault_and_quickly(path: Path) -> None:
     assert read.sha256 == hashlib.sha256(path.read_bytes()).hexdigest()
 
 
-def test_there_are_seven_machines_and_two_examples() -> None:
-    assert (len(MACHINES), len(EXAMPLES)) == (7, 2)
+def test_there_are_machines_and_examples_to_read() -> None:
+    assert len(MACHINES) >= 7 and len(EXAMPLES) >= 3
 
 
 def test_the_press_slide_is_read_exactly() -> None:
