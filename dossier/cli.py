@@ -33,6 +33,9 @@ def main(arguments: Sequence[str] | None = None) -> int:
     signal.signal(signal.SIGTERM, _interrupted)
     try:
         return options.run(options)
+    except BrokenPipeError:  # whoever read the output has stopped reading; what is written is written
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return PROGRAM_FAULT
     except KeyboardInterrupt:
         print("\ninterrupted; no half-written output is left", file=sys.stderr)
         return PROGRAM_FAULT
@@ -101,9 +104,14 @@ def _build(options: argparse.Namespace) -> int:
     try:
         with terminal.progress() as progress:
             result = build(project_file(options.project), options.out, tuple(options.only), options.effort, progress)
-    except (NotADossierError, OSError) as error:
+    except NotADossierError as error:
         terminal.error(str(error))
         return FAULTY_INPUT
+    except BrokenPipeError:
+        raise
+    except OSError as error:
+        terminal.error(f"the dossier could not be written: {error}")
+        return PROGRAM_FAULT
     if isinstance(result, Faults):
         terminal.faults(result.faults)
         return FAULTY_INPUT

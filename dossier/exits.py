@@ -9,6 +9,6 @@ NOT_PROVED: Final = 1
 FAULTY_INPUT: Final = 2
 """The input is faulty; nothing was written."""
 PROGRAM_FAULT: Final = 3
-"""A fault of the program or its installation, or an internal contradiction."""
+"""A fault of the program, its installation or the disk, an interruption, or an internal contradiction."""
 REFUSED: Final = 4
 """Recheck refused something."""

@@ -111,7 +111,8 @@ def _swap(staging: Path, folder: Path) -> None:
             os.replace(retired, folder)
         raise
     finally:
-        shutil.rmtree(attic, ignore_errors=True)
+        if folder.exists():  # else the only copy of the previous dossier lies in the attic, and stays there
+            shutil.rmtree(attic, ignore_errors=True)
 
 
 MISSING: Final = "listed in the manifest but missing"

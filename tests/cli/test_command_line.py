@@ -189,7 +189,7 @@ def test_an_interruption_leaves_the_earlier_dossier_and_nothing_half_written(num
     project.write_text(TINY, encoding="utf-8")
     before = contents(folder)
     slow = (
-        "import sys, time, dossier.pipeline as p; q = p.write_dossier\n"
+        "import sys, time, dossier.pipeline as p\n"
         "p.render = lambda *a: (print('now', flush=True), time.sleep(60))\n"
         "from dossier.cli import main; sys.exit(main(sys.argv[1:]))"
     )
@@ -230,7 +230,7 @@ def test_a_full_disk_leaves_the_earlier_dossier(built, tmp_path):
         "from dossier.cli import main; sys.exit(main(sys.argv[1:]))"
     )
     done = dossier("build", tmp_path / "project.yaml", code=full)
-    assert done.returncode == 2 and "No space left" in done.stderr and "Traceback" not in done.stderr
+    assert done.returncode == 3 and "No space left" in done.stderr and "Traceback" not in done.stderr
     assert contents(folder) == before
     assert sorted(p.name for p in tmp_path.iterdir()) == ["out", "project.yaml"]
 
@@ -306,6 +306,15 @@ def test_the_schema_names_every_field_and_claim():
     claims = schema["$defs"]["CriterionEntry"]["properties"]["claim"]["enum"]
     assert {"attraction", "decay_rate", "ultimate_bound"} <= set(claims)
     assert schema["additionalProperties"] is False
+
+
+def test_a_reader_who_stops_reading_is_no_fault(project):
+    program = f"{sys.executable} -m dossier inspect {project} | head -n 1"
+    done = subprocess.run(
+        ["bash", "-c", program], capture_output=True, text=True, check=False, cwd=ROOT,
+        env={**os.environ, "PYTHONPATH": str(ROOT), "PYTHONUNBUFFERED": "1"},
+    )  # fmt: skip
+    assert "Traceback" not in done.stderr and "fault of the program" not in done.stderr
 
 
 def test_help_and_version_say_what_the_program_is():

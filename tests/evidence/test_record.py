@@ -2,6 +2,7 @@
 
 import hashlib
 import json
+import os
 import re
 from pathlib import Path
 
@@ -121,6 +122,25 @@ def test_a_write_that_fails_leaves_the_earlier_dossier(tmp_path, monkeypatch):
         write_dossier(folder, {"record.json": b"changed"}, {})
     assert (folder / "record.json").read_bytes() == b"{}\n"
     assert [p.name for p in tmp_path.iterdir()] == ["out"]
+
+
+def test_the_only_copy_of_a_dossier_is_kept_where_it_cannot_be_put_back(tmp_path, monkeypatch):
+    folder = tmp_path / "out"
+    write_dossier(folder, {"record.json": b"{}\n"}, {})
+    replace = os.replace
+    calls = []
+
+    def refuse(source, target):
+        calls.append(target)
+        if len(calls) > 1:
+            raise OSError(5, "Input/output error")
+        replace(source, target)
+
+    monkeypatch.setattr(os, "replace", refuse)
+    with pytest.raises(OSError, match="Input/output"):
+        write_dossier(folder, {"record.json": b"changed"}, {})
+    kept = [p.read_bytes() for p in tmp_path.rglob("record.json")]
+    assert kept == [b"{}\n"]
 
 
 @pytest.mark.parametrize("change", ["altered", "added", "link"])
