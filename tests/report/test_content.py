@@ -10,7 +10,7 @@ from typing import Any
 from dossier.model.case import Quantity
 from dossier.model.dossier import Evidence
 from dossier.report.blocks import Card, Gauge, Paper, Paragraph, SignField, Table
-from dossier.report.content import paper_of
+from dossier.report.content import paper_of, quantities
 from dossier.report.content.argument import deciding_finding
 from dossier.report.content.context import read_context
 from dossier.report.content.quantities import obtained, required, reserve, unit_of
@@ -165,3 +165,15 @@ def test_a_row_has_one_cell_per_column(paper: Paper) -> None:
         if isinstance(table, Table):
             for row in table.rows:
                 assert len(row.cells) == (1 if row.spanning else len(table.columns)), table.title
+
+
+def test_a_nominal_value_under_a_claim_over_tolerances_says_so(evidence: Evidence) -> None:
+    """Beside the bound it could be read as met for every combination."""
+    point = evidence.points[0]
+    pairs = list(zip(point.outcomes, point.case.criteria, strict=True))
+    outcome, criterion = next((o, c) for o, c in pairs if o.value is not None)
+    aside = replace(outcome, verdict="not attempted")
+    over, nominal = replace(criterion, over="tolerances"), replace(criterion, over="nominal")
+    assert quantities.obtained(aside, over, point.case).startswith("nominal only: ")
+    assert "nominal" not in quantities.obtained(aside, nominal, point.case)
+    assert "nominal" not in quantities.obtained(replace(outcome, verdict="proved"), over, point.case)

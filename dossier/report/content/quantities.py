@@ -5,7 +5,7 @@ from __future__ import annotations
 from fractions import Fraction
 from typing import Final
 
-from dossier.model.case import Case, Criterion, Quantity
+from dossier.model.case import NOMINAL, Case, Criterion, Quantity
 from dossier.model.finding import Enclosure
 from dossier.model.outcome import LoopMargins, Outcome
 from dossier.report import numbers, units
@@ -74,7 +74,16 @@ def required_words(criterion: Criterion) -> str:
 
 
 def obtained(outcome: Outcome, criterion: Criterion, case: Case) -> str:
-    """The value obtained: a proved bound from its less favourable side, other enclosures from both."""
+    """The value obtained: a proved bound from its less favourable side, other enclosures from both.
+
+    What was measured at the nominal combination only, where tolerances were asked for, says so.
+    """
+    text = _obtained(outcome, criterion, case)
+    only_nominal = criterion.over != NOMINAL and outcome.verdict in ("not attempted", "not applicable")
+    return f"nominal only: {text}" if text and only_nominal else text
+
+
+def _obtained(outcome: Outcome, criterion: Criterion, case: Case) -> str:
     value = outcome.value
     if value is None:
         return ""
