@@ -140,10 +140,8 @@ def _obtained(point: PointEvidence, row: Reserve) -> str:
     outcome = row.outcome
     criterion = next(c for c in point.case.criteria if outcome.identifier == f"{point.case.name}.{c.name}")
     text = obtained(outcome, criterion, point.case)
-    if text == numbers.NO_FINITE_VALUE:
-        return "no finite value"
-    if text:
-        return text
+    if text:  # the column of the figure is narrow
+        return text.replace(numbers.NO_FINITE_VALUE, "no finite value").replace("nominal only", "nominal")
     if row.share is not None and outcome.claim == "attraction":
         return f"{numbers.below(row.share + 1, 3)} × region"
     return ""
