@@ -16,12 +16,14 @@ from typing import Final
 import dossier
 from dossier.checks.assess import Assessment, assess, locate
 from dossier.checks.combination import check_combination
+from dossier.checks.courses import alone_on, rest_family
 from dossier.checks.cover import check_cover
 from dossier.checks.criteria.linear import region_and_level
 from dossier.checks.equilibria import Unbounded, enclose_equilibria
 from dossier.checks.linear import classify, routh_claim
 from dossier.checks.listing import list_equilibria, nearest
 from dossier.checks.lyapunov import check_lyapunov, ellipsoid, set_premises
+from dossier.checks.movement import Movement, check_absence, check_branch, check_end
 from dossier.checks.self_test import self_test
 from dossier.checks.sets import covers
 from dossier.checks.simulation import figure_data, run_campaign
@@ -31,9 +33,10 @@ from dossier.evidence.provenance import Stopwatch, components, run_log
 from dossier.evidence.record import certificate_file, record_data
 from dossier.evidence.store import refuse_foreign_folder, write_dossier
 from dossier.judgement.points import judge_point
+from dossier.model.affine import spread_box
 from dossier.model.attempt import Attempt
 from dossier.model.case import NOMINAL, Case, Criterion
-from dossier.model.claim import CellsClaim, Claim, CoverClaim, LyapunovClaim, RootsClaim, SpectralRegion
+from dossier.model.claim import CellsClaim, Claim, CoverClaim, EndClaim, LyapunovClaim, RootsClaim, SpectralRegion
 from dossier.model.dossier import Campaign, Evidence, PointEvidence, Provenance
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.figures import figure
@@ -44,19 +47,31 @@ from dossier.model.text import canonical
 from dossier.project.faults import Fault
 from dossier.project.reader import Faults, Project, read_project
 from dossier.report.render import Rendered, render
+from dossier.search.branch import seek_branch, seek_end
 from dossier.search.cells import seek_cells
 from dossier.search.conic import meter
 from dossier.search.cover import seek_cover_candidate
 from dossier.search.effort import EFFORTS, Effort
 from dossier.search.equilibria import seed_equilibria
 from dossier.search.frequency import seek_crossings
-from dossier.search.goals import ABOUT_SPECTRUM, SetTask, loops, set_tasks, spectral_tasks, stronger_levels
+from dossier.search.goals import (
+    ABOUT_SPECTRUM,
+    SetTask,
+    effective_scope,
+    loops,
+    set_tasks,
+    spectral_tasks,
+    stronger_levels,
+)
 from dossier.search.linearisation import seek_matrix
 from dossier.search.quadratic import seek_quadratic
 from dossier.search.worst import seek_worst
 
 SEED: Final = 20_140
 """Seed of the simulated campaigns, so that a build can be repeated."""
+
+END_BOXES: Final = 20_000
+"""Boxes per face or box in which a branch is shown to end: a case that needs more is next to a fold."""
 
 TIGHT: Final = "-tight"
 """Suffix of a set that lies in another with the same V: its motions are among that one's."""
@@ -113,18 +128,49 @@ def find_claims(case: Case, effort: Effort, progress: Progress, roots: Roots) ->
     chosen = next((e for e in equilibria if e.chosen), None)
     if chosen is None:
         return tuple(claims), tuple(attempts)
-    searches = [_spectral_claims(case, chosen, effort), _margin_claims(case, chosen)]
+    attempts_there, moved, movement = follow_equilibrium(case, chosen, effort, progress)
+    attempts += attempts_there
+    claims += moved
+    if any(isinstance(c, EndClaim) for c in moved):
+        # Whatever is asked over tolerances is refuted by that; the rest is about the nominal combination.
+        case = replace(case, criteria=tuple(c for c in case.criteria if effective_scope(case, c.over) == NOMINAL))
+    searches = [_spectral_claims(case, chosen, movement, effort), _margin_claims(case, chosen)]
     unstable = any(e is chosen and classify(c) == "unstable" for e, c in counts)
     if unstable:
         why = "the linear part is unstable: no certificate exists"
         attempts.append(Attempt(case.name, "Lyapunov certificates", "infeasible", why))
     else:
         progress(case.name, "certificates")
-        searches.append(_set_claims(case, chosen, effort))
+        searches.append(_set_claims(case, chosen, movement, effort))
     for found, tried in searches:
         claims += found
         attempts += tried
     return tuple(claims), tuple(attempts)
+
+
+def follow_equilibrium(
+    case: Case, chosen: Equilibrium, effort: Effort, progress: Progress
+) -> tuple[tuple[Attempt, ...], tuple[Claim, ...], Movement]:
+    """Where the equilibrium lies over the tolerances, where a criterion is about them and it moves."""
+    asked = any(effective_scope(case, c.over) != NOMINAL for c in case.criteria)
+    if chosen.fixed_for_all or not asked:
+        return (), (), Movement(chosen)
+    progress(case.name, "branch")
+    tried, ends = seek_end(
+        case, chosen, lambda end: check_end(case, chosen, end, END_BOXES).result == "proved",
+        lambda absence: check_absence(case, absence, END_BOXES).result == "proved",
+    )  # fmt: skip
+    if ends:
+        return tried, ends, Movement(chosen)
+    family = rest_family(case)
+    more, claim = seek_branch(
+        case, chosen, effort, lambda cell, middle: alone_on(family, cell, middle) is not None,
+        lambda claim: check_branch(case, chosen, claim)[0].result == "proved",
+    )  # fmt: skip
+    if claim is None:
+        return (*tried, *more), (), Movement(chosen)
+    _, movement = check_branch(case, chosen, claim)
+    return (*tried, *more), (claim,), movement or Movement(chosen)
 
 
 def _wanted(case: Case) -> Iterator[tuple[Criterion, SpectralRegion, Fraction]]:
@@ -135,7 +181,7 @@ def _wanted(case: Case) -> Iterator[tuple[Criterion, SpectralRegion, Fraction]]:
                 yield criterion, *wanted
 
 
-def _spectral_claims(case: Case, chosen: Equilibrium, effort: Effort) -> Found:
+def _spectral_claims(case: Case, chosen: Equilibrium, movement: Movement, effort: Effort) -> Found:
     """A Lyapunov inequality per task, then the same for more than was asked, so that the reserve shows."""
     claims: list[Claim] = []
     attempts: list[Attempt] = []
@@ -148,13 +194,23 @@ def _spectral_claims(case: Case, chosen: Equilibrium, effort: Effort) -> Found:
             claims += [] if worst is None else [worst]
             at_worst[task.region] = nominal if worst is None else check_combination(case, chosen, worst).facts
         values = nominal if task.over == NOMINAL else at_worst[task.region]
-        tried, claim = seek_matrix(case, chosen, task.over, task.region, task.level, effort, task.suffix, cell_holds)
+        tried, claim = seek_matrix(
+            case, chosen, task.over, task.region, task.level, effort, task.suffix, cell_holds, movement.on
+        )
         attempts += tried
         if claim is None:
             continue
         for level in stronger_levels(task, values):
             more, better = seek_matrix(
-                case, chosen, task.over, task.region, level, replace(effort, cells=1), task.suffix, cell_holds
+                case,
+                chosen,
+                task.over,
+                task.region,
+                level,
+                replace(effort, cells=1),
+                task.suffix,
+                cell_holds,
+                movement.on,
             )
             if better is not None:
                 claim = better
@@ -174,7 +230,7 @@ def _margin_claims(case: Case, chosen: Equilibrium) -> Found:
     return tuple(claims), tuple(attempts)
 
 
-def _set_claims(case: Case, chosen: Equilibrium, effort: Effort) -> Found:
+def _set_claims(case: Case, chosen: Equilibrium, movement: Movement, effort: Effort) -> Found:
     """Sets for all criteria about regions; attraction alone is sought only where the whole goal was missed."""
     claims: list[Claim] = []
     attempts: list[Attempt] = []
@@ -182,25 +238,35 @@ def _set_claims(case: Case, chosen: Equilibrium, effort: Effort) -> Found:
     for task in set_tasks(case, chosen):
         if task.suffix.endswith("-free") and not missed:
             continue
-        tried, found = _seek_set(case, chosen, task, effort)
+        tried, found = _seek_set(case, chosen, movement, task, effort)
         missed = not any(_serves(case, c, task.goal.region) for c in found)
         attempts += tried
         claims += found
     return tuple(claims), tuple(attempts)
 
 
-def _seek_set(case: Case, chosen: Equilibrium, task: SetTask, effort: Effort) -> tuple[tuple[Attempt, ...], Sets]:
+def _seek_set(
+    case: Case, chosen: Equilibrium, movement: Movement, task: SetTask, effort: Effort
+) -> tuple[tuple[Attempt, ...], Sets]:
     """A set by exact Gram matrices; where it misses the region, then cell by cell, or by intervals."""
-    tried, found = seek_quadratic(
-        case, chosen, task.over, task.goal, effort, task.suffix,
-        lambda claim: check_lyapunov(case, chosen, claim).result == "proved",
-    )  # fmt: skip
+    tried: tuple[Attempt, ...] = ()
+    found: tuple[LyapunovClaim, ...] = ()
+    whole = Box((), ()) if task.over == NOMINAL else spread_box(case)
+    place = movement.on(whole)
+    if place is not None:
+        tried, found = seek_quadratic(
+            case, place, task.over, task.goal_at(case, place, whole), effort, task.suffix,
+            lambda claim: check_lyapunov(case, chosen, claim, movement.on).result == "proved",
+        )  # fmt: skip
     if any(_serves(case, c, task.goal.region) for c in found):
         return tried, found
     if task.over != NOMINAL:
         more, cells = seek_cells(
-            case, chosen, task.goal, effort, f"{task.suffix}-cells",
-            lambda claim: all(p.result == "proved" for p in set_premises(case, chosen, claim, of_cell=True)),
+            case, chosen, movement.on, lambda rest, cell: task.goal_at(case, rest, cell), effort,
+            f"{task.suffix}-cells",
+            lambda claim: all(
+                p.result == "proved" for p in set_premises(case, chosen, claim, movement.on, of_cell=True)
+            ),
         )  # fmt: skip
         return (*tried, *more), (*found, *(() if cells is None else (cells,)))
     suffix = f"{task.suffix}-boxes" if found else task.suffix

@@ -21,14 +21,18 @@ from dossier.checks.frequency import check_margins
 from dossier.checks.knowledge import Knowledge
 from dossier.checks.linear import check_routh, classify, routh_claim
 from dossier.checks.lyapunov import check_lyapunov
+from dossier.checks.movement import Movement, check_absence, check_branch, check_end
 from dossier.checks.spectral import check_matrix
 from dossier.checks.spectrum import eigenvalue_discs, spectral_values
 from dossier.model.case import Case, Criterion
 from dossier.model.claim import (
+    AbsenceClaim,
+    BranchClaim,
     CellsClaim,
     Claim,
     CombinationClaim,
     CoverClaim,
+    EndClaim,
     LyapunovClaim,
     MatrixClaim,
     RootsClaim,
@@ -81,12 +85,14 @@ def assess(case: Case, claims: tuple[Claim, ...], boxes: int) -> Assessment:
     equilibria, place, why = locate(case, roots)
     equilibria = tuple(_with_spectrum(case, e) for e in equilibria)
     chosen = next((e for e in equilibria if e.chosen), None)
-    verified, margins = _verify(case, claims, equilibria, chosen, boxes)
-    findings = (*about_roots, *verified)
+    moved, movement = _movement(case, claims, chosen, boxes)
+    verified, margins = _verify(case, claims, equilibria, chosen, movement, boxes)
+    findings = (*about_roots, *moved, *verified)
     complete = any(f.result == "proved" for f in about_roots)
     knowledge = Knowledge(
         case, equilibria, complete, claims, findings, place,
-        {} if chosen is None else spectral_values(case, chosen), margins, why,
+        {} if chosen is None else spectral_values(case, chosen), margins, movement,
+        why,
     )  # fmt: skip
     about_criteria = tuple(f for c in case.criteria if c.claim in FAMILIES for f in FAMILIES[c.claim](knowledge, c))
     missing = next(iter(about_roots), None) if complete and not equilibria and not case.none_expected else None
@@ -149,11 +155,30 @@ def _with_spectrum(case: Case, equilibrium: Equilibrium) -> Equilibrium:
     )  # fmt: skip
 
 
+def _movement(
+    case: Case, claims: tuple[Claim, ...], chosen: Equilibrium | None, boxes: int
+) -> tuple[list[Finding], Movement | None]:
+    """What is proved of the equilibrium's movement over the spreads; every other claim about them may rest on it."""
+    findings: list[Finding] = []
+    movement = None if chosen is None else Movement(chosen)
+    for claim in claims:
+        if isinstance(claim, AbsenceClaim):
+            findings.append(check_absence(case, claim, boxes))
+        elif isinstance(claim, EndClaim) and chosen is not None:
+            findings.append(check_end(case, chosen, claim, boxes))
+        elif isinstance(claim, BranchClaim) and chosen is not None:
+            finding, found = check_branch(case, chosen, claim)
+            findings.append(finding)
+            movement = found or movement
+    return findings, movement
+
+
 def _verify(
     case: Case,
     claims: tuple[Claim, ...],
     equilibria: tuple[Equilibrium, ...],
     chosen: Equilibrium | None,
+    movement: Movement | None,
     boxes: int,
 ) -> tuple[list[Finding], tuple[LoopMargins, ...]]:
     findings: list[Finding] = []
@@ -162,16 +187,16 @@ def _verify(
     for claim in claims:
         if isinstance(claim, RouthClaim) and claim.equilibrium in by_id:
             findings.append(check_routh(case, by_id[claim.equilibrium], claim))
-        if chosen is None:
+        if chosen is None or movement is None:
             continue
         if isinstance(claim, MatrixClaim):
-            findings.append(check_matrix(case, chosen, claim))
+            findings.append(check_matrix(case, chosen, claim, movement.on))
         elif isinstance(claim, CombinationClaim):
             findings.append(check_combination(case, chosen, claim))
         elif isinstance(claim, CellsClaim):
-            findings.append(check_cells(case, chosen, claim))
+            findings.append(check_cells(case, chosen, claim, movement.on))
         elif isinstance(claim, LyapunovClaim):
-            findings.append(check_lyapunov(case, chosen, claim))
+            findings.append(check_lyapunov(case, chosen, claim, movement.on))
             findings.append(check_cover(case, chosen, claim, min(boxes, SECOND_WITNESS_BOXES)))
         elif isinstance(claim, CoverClaim):
             findings.append(check_cover(case, chosen, claim, boxes))

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
-from dossier.checks.lyapunov import set_premises
+from dossier.checks.lyapunov import Where, set_premises
 from dossier.checks.spectral import covers_exactly
 from dossier.model.affine import spread_box
 from dossier.model.case import TOLERANCES, Case
@@ -18,10 +18,13 @@ from dossier.model.finding import Finding, Premise, Result, weakest
 from dossier.model.loop import model_hash
 
 
-def check_cells(case: Case, equilibrium: Equilibrium, claim: CellsClaim) -> Finding:
-    """Verify that the cells cover the box and that the set of every cell attracts, for every combination in it."""
+def check_cells(case: Case, equilibrium: Equilibrium, claim: CellsClaim, where: Where | None = None) -> Finding:
+    """Verify that the cells cover the box and that the set of every cell attracts, for every combination in it.
+
+    `where` as for `dossier.checks.lyapunov.check_lyapunov`.
+    """
     theorem = "T3" if case.model.time == "sampled" else "T2"
-    premises = tuple(_premises(case, equilibrium, claim))
+    premises = tuple(_premises(case, equilibrium, claim, where))
     result, strength = weakest(premises)
     count = len(claim.cells)
     statement = (
@@ -34,7 +37,7 @@ def check_cells(case: Case, equilibrium: Equilibrium, claim: CellsClaim) -> Find
     )  # fmt: skip
 
 
-def _premises(case: Case, equilibrium: Equilibrium, claim: CellsClaim) -> Iterator[Premise]:
+def _premises(case: Case, equilibrium: Equilibrium, claim: CellsClaim, where: Where | None) -> Iterator[Premise]:
     ident, whole = claim.identifier, spread_box(case)
     meant = (
         claim.model_hash == model_hash(case)
@@ -52,7 +55,7 @@ def _premises(case: Case, equilibrium: Equilibrium, claim: CellsClaim) -> Iterat
     kept = complete and all(box[name] == whole[name] for box in boxes for name in varying)
     yield _premise("kept", "no parameter that varies during a motion is cut", kept, ident)
     if kept:
-        found = [tuple(set_premises(case, equilibrium, cell, of_cell=True)) for cell in claim.cells]
+        found = [tuple(set_premises(case, equilibrium, cell, where, of_cell=True)) for cell in claim.cells]
         yield from merged(found, ident)
 
 

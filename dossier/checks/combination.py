@@ -10,11 +10,12 @@ from fractions import Fraction
 from typing import Final
 
 from dossier.checks.linear import routh_claim
+from dossier.checks.movement import words_of_values
+from dossier.checks.path import place_at
 from dossier.checks.spectrum import spectral_values
 from dossier.model.case import TOLERANCES, Case, at_combination
 from dossier.model.claim import CombinationClaim
 from dossier.model.equilibrium import Equilibrium
-from dossier.model.figures import figure
 from dossier.model.finding import Enclosure, Finding, Premise, Result, Strength, weakest
 from dossier.model.loop import model_hash
 from dossier.model.region import Interval
@@ -34,6 +35,8 @@ def check_combination(case: Case, equilibrium: Equilibrium, claim: CombinationCl
         side.contains(Interval.point(claim.values[name])) for name, side in free.items()
     )
     meant = claim.model_hash == model_hash(case) and claim.over == TOLERANCES and not claim.theorem
+    known = inside and equilibrium.identifier == claim.equilibrium
+    there = place_at(case, equilibrium, claim.values) if known else None
     premises = [
         Premise(
             "model", "the certificate is about this loop and its tolerances", _result(meant), "exact",
@@ -44,14 +47,18 @@ def check_combination(case: Case, equilibrium: Equilibrium, claim: CombinationCl
             words_of(case, claim), claim.identifier,
         ),
         Premise(
-            "fixed", "the equilibrium is the same for every parameter combination",
-            _result(equilibrium.fixed_for_all and equilibrium.identifier == claim.equilibrium), "exact",
+            "fixed", "the equilibrium is the same for every parameter combination", _result(there is not None), "exact",
             evidence=claim.equilibrium,
+        )
+        if equilibrium.fixed_for_all
+        else Premise(
+            "moved", "the equilibrium moves continuously from the nominal combination to this one",
+            _result(there is not None), "enclosed", evidence=claim.equilibrium,
         ),
     ]  # fmt: skip
     facts: dict[str, Enclosure] = {}
-    if all(p.result == "proved" for p in premises):
-        spectrum, facts = _spectrum(at_combination(case, claim.values), equilibrium, claim)
+    if there is not None and all(p.result == "proved" for p in premises):
+        spectrum, facts = _spectrum(at_combination(case, claim.values), there, claim)
         premises.append(spectrum)
     result, strength = weakest(tuple(premises))
     return Finding(
@@ -69,8 +76,7 @@ def count_of(finding: Finding, kind: str) -> int:
 
 def words_of(case: Case, claim: CombinationClaim) -> str:
     """The combination in words, SI, in the order of the model's parameters."""
-    known = [p.name for p in case.model.parameters if p.name in claim.values]
-    return ", ".join(f"{name} = {figure(claim.values[name])}" for name in known)
+    return words_of_values(case, claim.values)
 
 
 def _result(shown: bool) -> Result:

@@ -5,8 +5,19 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass
 
+from dossier.checks.movement import Movement
 from dossier.model.case import NOMINAL, TOLERANCES, Case, Scope
-from dossier.model.claim import CellsClaim, Claim, CombinationClaim, CoverClaim, LyapunovClaim, RootsClaim
+from dossier.model.claim import (
+    AbsenceClaim,
+    BranchClaim,
+    CellsClaim,
+    Claim,
+    CombinationClaim,
+    CoverClaim,
+    EndClaim,
+    LyapunovClaim,
+    RootsClaim,
+)
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.finding import Enclosure, Finding, Premise
 from dossier.model.outcome import LoopMargins
@@ -28,6 +39,8 @@ class Knowledge:
     place: Premise
     spectral: dict[str, Enclosure]
     margins: tuple[LoopMargins, ...]
+    movement: Movement | None
+    """Where the chosen equilibrium lies for other combinations; None without one."""
     unavailable: dict[str, str]
     """Why a family of quantities could not be measured, by its name (``equilibria``, ``linear part``, loop ids)."""
 
@@ -66,11 +79,36 @@ class Knowledge:
                 if finding is not None:
                     yield claim, finding
 
+    def rest_of(self, claim: LyapunovClaim | CoverClaim, over: Scope) -> Equilibrium | None:
+        """The equilibrium that a set is about: the nominal one, or where it lies over the combinations of `claim`."""
+        if over == NOMINAL or not isinstance(claim, LyapunovClaim) or self.movement is None:
+            return self.chosen
+        return self.movement.on(claim.parameters)
+
     def cells(self) -> Iterator[tuple[CellsClaim, Finding]]:
         """Proved attractive sets cell by cell; they serve every scope, as each combination lies in a cell."""
         for claim in self.claims:
             finding = self.proved(claim.identifier, (TOLERANCES,)) if isinstance(claim, CellsClaim) else None
             if isinstance(claim, CellsClaim) and finding is not None:
+                yield claim, finding
+
+    def branch(self) -> Finding | None:
+        """The finding that proves where the equilibrium lies over the whole box of the spreads."""
+        branches = [c.identifier for c in self.claims if isinstance(c, BranchClaim)]
+        return self.proved(branches[0], (TOLERANCES,)) if branches else None
+
+    def absences(self) -> Iterator[tuple[AbsenceClaim, Finding]]:
+        """Combinations of the spreads at which the search box was proved to hold no equilibrium."""
+        for claim in self.claims:
+            finding = self.proved(claim.identifier, (TOLERANCES,)) if isinstance(claim, AbsenceClaim) else None
+            if isinstance(claim, AbsenceClaim) and finding is not None:
+                yield claim, finding
+
+    def ends(self) -> Iterator[tuple[EndClaim, Finding]]:
+        """Combinations before which the equilibrium was proved to cease to exist."""
+        for claim in self.claims:
+            finding = self.proved(claim.identifier, (TOLERANCES,)) if isinstance(claim, EndClaim) else None
+            if isinstance(claim, EndClaim) and finding is not None:
                 yield claim, finding
 
     def combinations(self) -> Iterator[tuple[CombinationClaim, Finding]]:

@@ -6,7 +6,7 @@ P > 0, an ellipsoid, hence compact and connected; its bounding box is |y_i| <= s
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
 
@@ -90,13 +90,18 @@ def absolute_box(equilibrium: Equilibrium, names: tuple[str, ...], half_widths: 
     )
 
 
-def check_lyapunov(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim) -> Finding:
+Where = Callable[[Box], Equilibrium | None]
+"""The equilibrium of the operating point for the combinations in a cell (`dossier.checks.movement`)."""
+
+
+def check_lyapunov(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, where: Where | None = None) -> Finding:
     """Verify every premise of T2 (T3 for sampled models) for the set of `claim`, without its region.
 
+    `where` tells of an equilibrium that moves; without it, only one that is the same for every combination will do.
     Undecided, never proved, where anything is missing or another model was meant.
     """
     theorem = "T3" if case.model.time == "sampled" else "T2"
-    premises = tuple(set_premises(case, equilibrium, claim))
+    premises = tuple(set_premises(case, equilibrium, claim, where))
     result, strength = weakest(premises)
     return Finding(
         claim.identifier, "exact", result, strength, claim.over, theorem, _statement(case, claim), premises,
@@ -111,7 +116,7 @@ def _statement(case: Case, claim: LyapunovClaim) -> str:
 
 
 def set_premises(
-    case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, *, of_cell: bool = False
+    case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, where: Where | None = None, *, of_cell: bool = False
 ) -> Iterator[Premise]:
     """Every premise about the set of `claim`; with `of_cell` it may be about a part of the box of spreads only."""
     ident = claim.identifier
@@ -128,6 +133,15 @@ def set_premises(
     yield _premise("scope", "the parameter box is the one asked for", fits, ident)
     if shape is None or not fits:
         return
+    if claim.over != NOMINAL and not equilibrium.fixed_for_all:
+        place = None if where is None else where(claim.parameters)
+        moved = place is not None and place.course is not None
+        yield _premise("moved", "where the equilibrium of every combination lies is proved", moved, ident, "enclosed")
+        varying = any(p.varies and p.has_spread for p in case.model.parameters)
+        yield _premise("rest", "no parameter varies during a motion, as the equilibrium moves", not varying, ident)
+        if place is None or not moved:
+            return
+        equilibrium = place
     yield from _place(case, equilibrium, claim, shape)
     yield from _decrease(case, equilibrium, claim, shape)
 
@@ -176,6 +190,7 @@ def certified_field(
     return offset_field(
         loop.equations, loop.states, equilibrium.state,
         {p.name: p.nominal for p in case.model.parameters}, symbolic, sampled=loop.sampled, place=place, order=order,
+        course=equilibrium.course,
     )  # fmt: skip
 
 
@@ -207,7 +222,7 @@ def _decrease(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, shape:
             "remainders", "elementary functions of the states lie between the polynomials used, on the bounding box "
             "of the set", True, ident, "enclosed", f"{len(field.factors.names)} functions, order {claim.expansion}",
         )  # fmt: skip
-    if claim.over != NOMINAL:
+    if claim.over != NOMINAL and equilibrium.course is None:
         yield _premise(
             "fixed", "the equilibrium is the same for every parameter combination",
             field.constant_terms_vanish and all(b.is_exact for b in equilibrium.state), ident,

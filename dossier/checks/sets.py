@@ -43,17 +43,20 @@ class Bound:
 
 
 def bound_over_set(
-    case: Case, equilibrium: Equilibrium, shape: Ellipsoid, quantity: Expression, over: Scope
+    case: Case, equilibrium: Equilibrium, shape: Ellipsoid, quantity: Expression, over: Scope, cell: Box | None = None
 ) -> Bound | None:
     """Enclose `quantity` (states and parameters, absolute values) over x* + the ellipsoid, for every combination.
 
     A quantity that is affine in the offsets is bounded by the support function of the ellipsoid,
     max w'y = sqrt(level w'P^-1 w), convex in (constant, w), hence largest at the Bernstein
     coefficients over the parameter box.  Others are enclosed over the bounding box by ball arithmetic.
-    None where no finite enclosure was found.
+    With a `cell` of the spreads only its combinations are meant.  None where no finite enclosure was found.
     """
     names = case.model.state_names
     box = parameter_box(case, over)
+    if cell is not None:
+        sides = dict(box.items()) | dict(cell.items())
+        box = Box(tuple(sides), tuple(sides.values()))
     place = Box(
         (*names, *box.names),
         (*absolute_box(equilibrium, names, (Fraction(0),) * len(names)).intervals, *box.intervals),
@@ -61,7 +64,7 @@ def bound_over_set(
     at_rest = range_over(quantity, place, RANGE_PIECES)
     if at_rest is None:
         return None
-    affine = _affine_bound(case, equilibrium, shape, quantity, over)
+    affine = _affine_bound(case, equilibrium, shape, quantity, over, cell)
     if affine is not None:
         return Bound(affine, at_rest, True)
     around = absolute_box(equilibrium, names, shape.half_widths)
@@ -71,9 +74,9 @@ def bound_over_set(
 
 
 def _affine_bound(
-    case: Case, equilibrium: Equilibrium, shape: Ellipsoid, quantity: Expression, over: Scope
+    case: Case, equilibrium: Equilibrium, shape: Ellipsoid, quantity: Expression, over: Scope, cell: Box | None
 ) -> Ball | None:
-    forms = offset_forms(case, equilibrium, quantity, over)
+    forms = offset_forms(case, equilibrium, quantity, over, cell)
     if forms is None:
         return None
     bounds = []

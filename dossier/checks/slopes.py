@@ -144,7 +144,7 @@ def krawczyk(
 def _image(residual: list[arb], slopes: list[arb], box: Sequence[Ball]) -> tuple[Ball, ...] | None:
     n = len(box)
     a = arb_mat(n, n, slopes)
-    inverse = _approximate_inverse(a)
+    inverse = approximate_inverse(a)
     if inverse is None or not all(r.is_finite() for r in residual):
         return None
     step = inverse * arb_mat(n, 1, residual)
@@ -165,7 +165,7 @@ def _image(residual: list[arb], slopes: list[arb], box: Sequence[Ball]) -> tuple
     return tuple(image)
 
 
-def _approximate_inverse(a: arb_mat) -> arb_mat | None:
+def approximate_inverse(a: arb_mat) -> arb_mat | None:
     """A matrix near the inverse of the midpoints, with exact entries; any matrix is sound as Y."""
     n = a.nrows()
     try:

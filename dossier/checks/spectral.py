@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from fractions import Fraction
 
 from flint import arb, fmpq_mpoly
@@ -31,6 +31,10 @@ REGION_TEXT: Mapping[SpectralRegion, str] = {
 }
 
 
+NO_VARYING = "no parameter varies during a motion, as the equilibrium moves"
+"""Statement of the premise that a moving equilibrium needs: a motion has one equilibrium only."""
+
+
 def region_text(region: SpectralRegion, level: Fraction) -> str:
     """What the region asks of every eigenvalue, in words."""
     if region == "half-plane" and level == 0:
@@ -38,9 +42,16 @@ def region_text(region: SpectralRegion, level: Fraction) -> str:
     return REGION_TEXT[region].format(level=figure(level))
 
 
-def check_matrix(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Finding:
-    """Verify the Lyapunov inequality of `claim` on every cell, and that the cells cover the scope's box."""
-    premises = tuple(_premises(case, equilibrium, claim))
+Where = Callable[[Box], Equilibrium | None]
+"""The equilibrium of the operating point for the combinations in a cell (`dossier.checks.movement`)."""
+
+
+def check_matrix(case: Case, equilibrium: Equilibrium, claim: MatrixClaim, where: Where | None = None) -> Finding:
+    """Verify the Lyapunov inequality of `claim` on every cell, and that the cells cover the scope's box.
+
+    `where` tells of an equilibrium that moves; without it, only one that is the same for every combination will do.
+    """
+    premises = tuple(_premises(case, equilibrium, claim, where or (lambda _: None)))
     result, strength = weakest(premises)
     scope = "at the nominal parameters" if claim.over == NOMINAL else "for every parameter combination"
     text = region_text(claim.region, claim.level)
@@ -56,7 +67,7 @@ def _shown(
     return Premise(label, statement, "proved" if shown else "undecided", strength, detail, claim.identifier)
 
 
-def _premises(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Iterator[Premise]:
+def _premises(case: Case, equilibrium: Equilibrium, claim: MatrixClaim, where: Where) -> Iterator[Premise]:
     meant = claim.model_hash == model_hash(case) and claim.equilibrium == equilibrium.identifier
     sampled = case.model.time == "sampled"
     fits = claim.region == "disc" if sampled else claim.region in ("half-plane", "sector")
@@ -83,8 +94,14 @@ def _premises(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Itera
     if claim.over != NOMINAL and any(p.varies and p.has_spread for p in case.model.parameters):
         common = len({c.matrix for c in claim.cells}) == 1
         yield _shown("common", "one P serves all cells, as parameters vary during a motion", common, claim, "exact")
-    yield _smooth(case, equilibrium, claim) if claim.over == NOMINAL else _regular(case, equilibrium, claim)
-    yield from _spectrum(case, equilibrium, claim)
+    if claim.over == NOMINAL:
+        yield _smooth(case, equilibrium, claim)
+    elif equilibrium.fixed_for_all:
+        yield _regular(case, claim, [(equilibrium, parameter_box(case, claim.over))])
+    else:
+        places = [(where(box), box) for box in cells]
+        yield _regular(case, claim, [(e, _all_parameters(case, box)) for e, box in places if e is not None])
+    yield from _spectrum(case, equilibrium, claim, where)
 
 
 def _smooth(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Premise:
@@ -96,16 +113,23 @@ def _smooth(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Premise
     )  # fmt: skip
 
 
-def _regular(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Premise:
-    """Over the whole parameter box the equations are smooth at the equilibrium and keep their nominal branch."""
-    parameters = parameter_box(case, claim.over)
-    states = tuple(Interval(b.lower, b.upper) for b in equilibrium.state)
-    place = Box((*case.model.state_names, *parameters.names), (*states, *parameters.intervals))
+def _all_parameters(case: Case, cell: Box) -> Box:
+    """The parameters of the cell, and the nominal balls of the others."""
+    sides = dict(parameter_box(case, NOMINAL).items()) | dict(cell.items())
+    return Box(tuple(sides), tuple(sides.values()))
+
+
+def _regular(case: Case, claim: MatrixClaim, places: Sequence[tuple[Equilibrium, Box]]) -> Premise:
+    """Over the whole parameter box the equations are smooth at the equilibrium and keep one branch."""
     equations = vector_field(case).equations
     asked = list(dict.fromkeys(c for e in equations for c in conditions(e)))
     kinks = list(dict.fromkeys(k for e in equations for k in kink_distances(e)))
     nominal_inside = all(p.spread.contains(Interval(p.nominal.lower, p.nominal.upper)) for p in case.model.parameters)
-    proofs = [condition_holds(c, place) for c in (*asked, *(Condition("nonzero", k) for k in kinks))]
+    proofs = []
+    for equilibrium, parameters in places:
+        states = tuple(Interval(b.lower, b.upper) for b in equilibrium.state)
+        place = Box((*case.model.state_names, *parameters.names), (*states, *parameters.intervals))
+        proofs += [condition_holds(c, place) for c in (*asked, *(Condition("nonzero", k) for k in kinks))]
     return _shown(
         "smooth", "the right-hand side is continuously differentiable at the equilibrium for every combination, and no "
         "saturation or absolute value changes its branch", nominal_inside and all(p.holds for p in proofs), claim,
@@ -124,14 +148,19 @@ def kink_distances(expression: Expression) -> Iterator[Expression]:
             yield from (sub(argument, lower), sub(upper, argument), sub(upper, lower))
 
 
-def _spectrum(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Iterator[Premise]:
-    whole = linear_forms(case, equilibrium, claim.over)
+def _spectrum(case: Case, equilibrium: Equilibrium, claim: MatrixClaim, where: Where) -> Iterator[Premise]:
+    moves = claim.over != NOMINAL and not equilibrium.fixed_for_all
+    whole = "" if moves else linear_forms(case, equilibrium, claim.over)
     held, strength, why = 0, "exact", ""
     fixed = True
     for cell in claim.cells:
         forms = whole
+        place = where(cell.parameters) if moves else equilibrium
+        if place is None or (moves and place.course is None):
+            why = "it is not proved where the equilibrium of a cell lies"
+            break
         if claim.over != NOMINAL and (isinstance(whole, str) or whole.local):
-            forms = linear_forms(case, equilibrium, claim.over, cell.parameters)
+            forms = linear_forms(case, place, claim.over, cell.parameters)
         if isinstance(forms, str):
             why = forms
             break
@@ -140,7 +169,15 @@ def _spectrum(case: Case, equilibrium: Equilibrium, claim: MatrixClaim) -> Itera
         if not cell_holds(forms, cell, claim.region, claim.level):
             break
         held += 1
-    if claim.over != NOMINAL:
+    if moves:
+        yield _shown(
+            "moved", "where the equilibrium of every combination lies is proved", held == len(claim.cells) > 0, claim,
+            "enclosed",
+        )  # fmt: skip
+        yield _shown(
+            "rest", NO_VARYING, not any(p.varies and p.has_spread for p in case.model.parameters), claim, "exact"
+        )
+    elif claim.over != NOMINAL:
         yield _shown(
             "fixed", "the equilibrium is the same for every parameter combination", held > 0 and fixed, claim, "exact"
         )

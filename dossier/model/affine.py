@@ -9,7 +9,17 @@ from dossier.model.case import NOMINAL, Case, Scope
 from dossier.model.decrease import bernstein_coefficients
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.expression import Expression
-from dossier.model.polynomial import Exponents, NotRational, Quotient, Ring, collapse, quotient_of, split_constants
+from dossier.model.polynomial import (
+    Exponents,
+    NotRational,
+    Quotient,
+    Ring,
+    collapse,
+    places_at_rest,
+    quotient_of,
+    shifts,
+    split_constants,
+)
 from dossier.model.region import Box
 
 
@@ -20,29 +30,27 @@ def spread_box(case: Case) -> Box:
 
 
 def offset_forms(
-    case: Case, equilibrium: Equilibrium, quantity: Expression, over: Scope
+    case: Case, equilibrium: Equilibrium, quantity: Expression, over: Scope, cell: Box | None = None
 ) -> tuple[dict[Exponents, Ball], ...] | None:
     """Coefficients over the offsets at every Bernstein index; the value anywhere in the box is a convex combination.
+
+    The box is that of the spreads, or a `cell` of it.
 
     None where `quantity` (states and parameters only) is no polynomial in the states and spread parameters.
     """
     names = case.model.state_names
-    free = Box((), ()) if over == NOMINAL else spread_box(case)
+    free = Box((), ()) if over == NOMINAL else spread_box(case) if cell is None else cell
     known = {p.name: p.nominal for p in case.model.parameters if p.name not in free.names}
     try:
         (converted,), balls = split_constants((quantity,), frozenset((*names, *free.names)), known)
     except ArithmeticError:
         return None
-    shifts = {
-        f"shift of {n}": Ball(Fraction(0), b.radius) for n, b in zip(names, equilibrium.state, strict=True) if b.radius
-    }
-    balls = {**balls, **shifts}
+    balls = {**balls, **shifts(names, equilibrium.state, equilibrium.course)}
     ring = Ring((*names, *free.names, *balls))
     one = ring.constant(Fraction(1))
     values = {n: Quotient(ring.gen(n), one) for n in (*free.names, *balls)}
-    for name, ball in zip(names, equilibrium.state, strict=True):
-        place = ring.constant(ball.middle) + ring.gen(name)
-        values[name] = Quotient(place + ring.gen(f"shift of {name}") if ball.radius else place, one)
+    for name, place in zip(names, places_at_rest(ring, names, equilibrium.state, equilibrium.course), strict=True):
+        values[name] = Quotient(place + ring.gen(name), one)
     quotient = quotient_of(converted, ring, values)
     if isinstance(quotient, NotRational) or not quotient.denominator.is_constant():
         return None

@@ -105,6 +105,51 @@ class CombinationClaim(Claim):
 
 
 @dataclass(frozen=True, slots=True)
+class BranchCell:
+    """A part of the box of the spreads, and a rational point near the equilibrium of its middle combination."""
+
+    parameters: Box
+    middle: tuple[Fraction, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class BranchClaim(Claim):
+    """Kind ``branch``: the equilibrium moves continuously over the whole box of the spreads, from its nominal place.
+
+    On every cell one equilibrium is alone near a plane through it; in cells that touch it is the same one.
+    """
+
+    equilibrium: str
+    cells: tuple[BranchCell, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class AbsenceClaim(Claim):
+    """Kind ``absence``: at one exact combination of the spreads the search box holds no equilibrium.
+
+    `values` names every parameter with a spread, in SI; `boxes` counts the boxes the cover needed.
+    """
+
+    search: Box
+    values: Mapping[str, Fraction]
+    boxes: int
+
+
+@dataclass(frozen=True, slots=True)
+class EndClaim(Claim):
+    """Kind ``end``: on the straight way from the nominal combination to `values` the equilibrium ceases to exist.
+
+    After the `share` of the way it lies in the box `around` (absolute); from there on no equilibrium crosses the faces
+    of that box, and at `values` the box holds none.
+    """
+
+    equilibrium: str
+    values: Mapping[str, Fraction]
+    share: Fraction
+    around: Box
+
+
+@dataclass(frozen=True, slots=True)
 class Gram:
     """The polynomial z' `matrix` z over the monomials `basis` of the offsets."""
 
@@ -195,6 +240,9 @@ KINDS: Mapping[str, type[Claim]] = {
     "matrix": MatrixClaim,
     "routh": RouthClaim,
     "combination": CombinationClaim,
+    "branch": BranchClaim,
+    "absence": AbsenceClaim,
+    "end": EndClaim,
     "gram": LyapunovClaim,
     "cells": CellsClaim,
     "cover": CoverClaim,

@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Literal
 
 from dossier.model.ball import Ball
+from dossier.model.course import Course
 
 StabilityClass = Literal["stable", "unstable", "undecided"]
 
@@ -25,7 +26,8 @@ class Eigenvalue:
 class Equilibrium:
     """One proved equilibrium: `state` is its enclosure, radius 0 where it is rational and exact.
 
-    `fixed_for_all` says that the same point is an equilibrium for every parameter combination.
+    `fixed_for_all` says that the same point is an equilibrium for every parameter combination.  With a `course` it
+    stands for the equilibria of all combinations in a cell, and `state` encloses every one of them.
     """
 
     identifier: str
@@ -36,3 +38,8 @@ class Equilibrium:
     eigenvalues: tuple[Eigenvalue, ...]
     fixed_for_all: bool = False
     remarks: tuple[str, ...] = ()
+    course: Course | None = None
+
+    def along(self, course: Course) -> Equilibrium:
+        """The same operating point for the combinations of a cell."""
+        return replace(self, state=course.hull(), fixed_for_all=False, course=course)

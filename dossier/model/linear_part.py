@@ -13,7 +13,7 @@ from fractions import Fraction
 
 from flint import arb, fmpq
 
-from dossier.model.ball import WORKING_BITS, enclose, evaluate, precision, to_fmpq
+from dossier.model.ball import WORKING_BITS, Ball, enclose, evaluate, precision, to_fmpq
 from dossier.model.case import Case
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.expression import (
@@ -31,6 +31,7 @@ from dossier.model.expression import (
     to_text,
 )
 from dossier.model.loop import LOOP_INPUT, jacobian, open_loop, vector_field
+from dossier.model.region import Box
 
 Number = fmpq | arb
 """An exact rational, or a ball that contains the true number."""
@@ -71,8 +72,10 @@ class _RefusalError(Exception):
 class _Point:
     """Values of all symbols at the equilibrium, exact ones as numbers and the others as balls."""
 
-    def __init__(self, case: Case, equilibrium: Equilibrium) -> None:
+    def __init__(self, case: Case, equilibrium: Equilibrium, cell: Box | None = None) -> None:
         known = {p.name: p.nominal for p in case.model.parameters}
+        if cell is not None:
+            known |= {n: Ball.from_bounds(*side.bounds) for n, side in cell.items()}
         known |= dict(zip(case.model.state_names, equilibrium.state, strict=True))
         self.exact: dict[str, Expression] = {n: number(b.middle) for n, b in known.items() if b.is_exact}
         self.balls: dict[str, arb] = {n: enclose(b) for n, b in known.items() if not b.is_exact}
@@ -131,14 +134,15 @@ class ActiveBranch:
     remarks: tuple[str, ...]
 
 
-def active_branch(case: Case, equilibrium: Equilibrium) -> ActiveBranch | NoLinearPart:
+def active_branch(case: Case, equilibrium: Equilibrium, cell: Box | None = None) -> ActiveBranch | NoLinearPart:
     """The equations of `case`, each kink replaced by the branch proved active at `equilibrium` and nominal parameters.
 
+    With a `cell`, at the equilibria of all combinations there, which `equilibrium` encloses.
     Every domain condition of the equations is proved there too.
     """
     with precision(WORKING_BITS):
         try:
-            return _active_branch(case, _Point(case, equilibrium))
+            return _active_branch(case, _Point(case, equilibrium, cell))
         except _RefusalError as refusal:
             return NoLinearPart(str(refusal))
 

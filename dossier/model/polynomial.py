@@ -18,6 +18,7 @@ from functools import reduce
 from flint import Ordering, fmpq_mpoly, fmpq_mpoly_ctx
 
 from dossier.model.ball import WORKING_BITS, Ball, enclose, evaluate, from_arb, precision, to_fmpq, to_fraction
+from dossier.model.course import Course, shift_of
 from dossier.model.expression import Expression, fold, names, number, rebuild, substitute, symbol
 from dossier.model.region import Box
 from dossier.model.remainders import Expansion, Refusal, expansions, is_function, valid_box
@@ -225,8 +226,11 @@ def offset_field(
     sampled: bool,
     place: Box | None = None,
     order: int = 0,
+    course: Course | None = None,
 ) -> OffsetField | NotRational:
     """The field in offsets from `equilibrium`, with the parameters `symbolic` kept as variables.
+
+    With a `course` over these parameters the offsets are from each combination's own equilibrium.
 
     `parameters` encloses all others.  Returns `NotRational` where the equations are not quotients of
     polynomials in states and symbolic parameters; with a `place` (bounds of the states, absolute, and of the
@@ -235,7 +239,7 @@ def offset_field(
     variable = frozenset(states) | frozenset(symbolic)
     fixed = {n: b for n, b in parameters.items() if n not in symbolic}
     converted, balls = split_constants(equations, variable, fixed)
-    shift = {f"shift of {s}": Ball(Fraction(0), b.radius) for s, b in zip(states, equilibrium, strict=True) if b.radius}
+    shift = shifts(states, equilibrium, course)
     plans: dict[Expression, Expansion] = {}
     if place is not None:
         bounds = balls | valid_box((*states, *symbolic), place)
@@ -249,11 +253,8 @@ def offset_field(
     terms_of.ring = ring
     one = ring.constant(Fraction(1))
     values = {n: Quotient(ring.gen(n), one) for n in (*symbolic, *balls)}
-    for name, ball in zip(states, equilibrium, strict=True):
-        here = ring.constant(ball.middle) + ring.gen(name)
-        if ball.radius:
-            here = here + ring.gen(f"shift of {name}")
-        values[name] = Quotient(here, one)
+    for name, here in zip(states, places_at_rest(ring, states, equilibrium, course), strict=True):
+        values[name] = Quotient(here + ring.gen(name), one)
     quotients: list[Quotient] = []
     for expression in converted:
         quotient = quotient_of(expression, ring, values, terms_of if plans else None)
@@ -278,6 +279,28 @@ def offset_field(
         ring, states, tuple(symbolic), {**balls, **shift}, numerators, denominator, sampled, all(vanish),
         terms_of.factors,
     )  # fmt: skip
+
+
+def shifts(states: tuple[str, ...], equilibrium: tuple[Ball, ...], course: Course | None) -> dict[str, Ball]:
+    """The balls of the symbols ``shift of <state>``: what is not known of the equilibrium's place."""
+    radii = tuple(b.radius for b in equilibrium) if course is None else course.rest
+    return {shift_of(s): Ball(Fraction(0), r) for s, r in zip(states, radii, strict=True) if r}
+
+
+def places_at_rest(
+    ring: Ring, states: tuple[str, ...], equilibrium: tuple[Ball, ...], course: Course | None
+) -> list[fmpq_mpoly]:
+    """The states at rest as polynomials in the parameters of the course and in the shifts."""
+    known = shifts(states, equilibrium, course)
+    places = []
+    for i, name in enumerate(states):
+        place = ring.constant(equilibrium[i].middle if course is None else course.centre[i])
+        if course is not None:
+            for slope, (parameter, side) in zip(course.slopes[i], course.parameters.items(), strict=True):
+                if slope:
+                    place = place + ring.constant(slope) * (ring.gen(parameter) - ring.constant(side.middle))
+        places.append(place + ring.gen(shift_of(name)) if shift_of(name) in known else place)
+    return places
 
 
 class _Terms:

@@ -12,7 +12,7 @@ y'Ry + w'Rw + 2 t (y'A'Pw - y'PAw) with R = A'P + PA and t = tan b (the sign of 
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 
@@ -21,11 +21,14 @@ from flint import fmpq_mpoly
 from dossier.model.ball import Ball, from_arb, to_fraction
 from dossier.model.case import NOMINAL, Case, Scope
 from dossier.model.claim import Matrix, SpectralRegion
+from dossier.model.course import shift_of
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.expression import (
     ARITHMETIC,
     Expression,
+    add,
     fold,
+    mul,
     names,
     number,
     rebuild,
@@ -36,7 +39,7 @@ from dossier.model.expression import (
 )
 from dossier.model.linear_part import NoLinearPart, active_branch, closed_matrix
 from dossier.model.loop import jacobian
-from dossier.model.polynomial import NotRational, Quotient, Ring, quotient_of, split_constants
+from dossier.model.polynomial import NotRational, Quotient, Ring, quotient_of, shifts, split_constants
 from dossier.model.region import Box
 from dossier.model.taylor import expand_functions
 
@@ -115,17 +118,21 @@ def _nominal(case: Case, equilibrium: Equilibrium) -> LinearForms | str:
 
 def _over_tolerances(case: Case, equilibrium: Equilibrium, box: Box) -> LinearForms | str:
     """Raises ArithmeticError where a constant or a Taylor polynomial has no finite enclosure on `box`."""
-    branch = active_branch(case, equilibrium)
+    course, states = equilibrium.course, case.model.state_names
+    if course is not None and course.parameters != box:
+        return "where the equilibrium moves is known for another part of the box"
+    if course is None and not all(b.is_exact for b in equilibrium.state):
+        return "the equilibrium is not known to be the same for every parameter combination"
+    branch = active_branch(case, equilibrium, None if course is None else box)
     if isinstance(branch, NoLinearPart):
         return branch.reason
-    if not all(b.is_exact for b in equilibrium.state):
-        return "the equilibrium is not known to be the same for every parameter combination"
-    states = case.model.state_names
     fixed = {p.name: p.nominal for p in case.model.parameters if p.name not in box.names}
     exact = {n: number(b.middle) for n, b in fixed.items() if b.is_exact}
-    exact |= {s: number(b.middle) for s, b in zip(states, equilibrium.state, strict=True)}
-    entries = tuple(simplify(substitute(e, exact)) for row in jacobian(branch.equations, states) for e in row)
-    split, balls = split_constants(entries, frozenset(box.names), fixed)
+    moved = shifts(states, equilibrium.state, course)
+    places = exact | dict(zip(states, rest_expressions(case, equilibrium, moved), strict=True))
+    entries = tuple(simplify(substitute(e, places)) for row in jacobian(branch.equations, states) for e in row)
+    split, balls = split_constants(entries, frozenset((*box.names, *moved)), fixed)
+    balls = {**balls, **moved}
     rational, remainders = expand_functions(split, box, balls)
     balls = {**balls, **remainders}
     ring = Ring((*states, *(partner(s) for s in states), *box.names, *balls))
@@ -140,11 +147,30 @@ def _over_tolerances(case: Case, equilibrium: Equilibrium, box: Box) -> LinearFo
         denominator = denominator * (q.denominator / denominator.gcd(q.denominator))
     cleared = iter(q.numerator * (denominator / q.denominator) for q in regular)
     rows = tuple(sum((next(cleared) * ring.gen(s) for s in states), ring.constant(Fraction(0))) for _ in states)
-    vanish = all(
-        vanishes_identically(sub(e, symbol(s)) if case.model.time == "sampled" else e, exact)
+    vanish = course is not None or all(
+        vanishes_identically(sub(e, symbol(s)) if case.model.time == "sampled" else e, places)
         for e, s in zip(branch.equations, states, strict=True)
     )
-    return LinearForms(ring, states, box, balls, rows, denominator, vanish, bool(remainders))
+    return LinearForms(
+        ring, states, box, balls, rows, denominator, vanish, bool(remainders) or course is not None
+    )  # fmt: skip
+
+
+def rest_expressions(case: Case, equilibrium: Equilibrium, moved: Collection[str]) -> tuple[Expression, ...]:
+    """The states at rest: numbers, or expressions in the parameters of the course and in the symbols of `moved`."""
+    course = equilibrium.course
+    if course is None:
+        return tuple(number(b.middle) for b in equilibrium.state)
+    places = []
+    for state, centre, row in zip(case.model.state_names, course.centre, course.slopes, strict=True):
+        terms = [number(centre)]
+        for slope, (name, side) in zip(row, course.parameters.items(), strict=True):
+            if slope:
+                terms.append(mul(number(slope), sub(symbol(name), number(side.middle))))
+        if shift_of(state) in moved:
+            terms.append(symbol(shift_of(state)))
+        places.append(add(*terms))
+    return tuple(places)
 
 
 def vanishes_identically(expression: Expression, values: Mapping[str, Expression]) -> bool:

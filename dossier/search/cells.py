@@ -5,6 +5,7 @@ Only parameters that stay constant during a motion may be cut: there each motion
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from fractions import Fraction
 from typing import Final
 
@@ -23,19 +24,26 @@ from dossier.search.goal import Goal
 from dossier.search.offsets import ScaledLoop
 from dossier.search.quadratic import Verify, seek_on_cell
 
+Where = Callable[[Box], Equilibrium | None]
+GoalAt = Callable[[Equilibrium, Box | None], Goal]
+
 SMALLEST: Final = Fraction(1, 64)
 """Share of a spread below which a cell is not cut: an answer that needs finer cells is not worth its length."""
 
 
 def seek_cells(
-    case: Case, equilibrium: Equilibrium, goal: Goal, effort: Effort, suffix: str, verify: Verify
+    case: Case, equilibrium: Equilibrium, where: Where, goal: GoalAt, effort: Effort, suffix: str, verify: Verify
 ) -> tuple[tuple[Attempt, ...], CellsClaim | None]:
-    """A claim whose cells cover the whole box, each with a verified set that covers the region; or None."""
-    subject = goal.serves[0] if goal.serves else case.name
+    """A claim whose cells cover the whole box, each with a verified set that covers the region; or None.
+
+    `where` tells where the equilibrium of a cell lies, `goal` what is wanted there.
+    """
+    wanted = goal(equilibrium, None)
+    subject = wanted.serves[0] if wanted.serves else case.name
     method, identifier = "quadratic, cell by cell of the tolerances", f"{case.name}.{suffix}"
     whole = spread_box(case)
     free = [p.name for p in case.model.parameters if p.has_spread and not p.varies]
-    if not free or not goal.region.is_bounded:
+    if not free or not wanted.region.is_bounded:
         return (), None
     waiting, done, looked, why = [whole], list[LyapunovClaim](), 0, ""
     begun = meter.programs
@@ -45,12 +53,16 @@ def seek_cells(
             break
         box = waiting.pop()
         looked += 1
-        tried, claim, loop = seek_on_cell(case, equilibrium, box, goal, effort, "cell", verify)
-        if claim is not None:
-            done.append(claim)
-            continue
-        why = tried[-1].remark if tried else why
-        halves = None if loop is None else _halves(loop, box, whole, free)
+        place, loop = where(box), None
+        if place is None:
+            why = "it is not proved where the equilibrium of a cell lies"
+        else:
+            tried, claim, loop = seek_on_cell(case, place, box, goal(place, box), effort, "cell", verify)
+            if claim is not None:
+                done.append(claim)
+                continue
+            why = tried[-1].remark if tried else why
+        halves = _halves(loop, box, whole, free)
         if halves is None or len(done) + len(waiting) + 2 > effort.cells:
             why = f"the budget of cells is spent; {why}" if halves is not None else why
             break
@@ -79,11 +91,17 @@ def _share(cell: Box, whole: Box) -> Fraction:
     return share
 
 
-def _halves(loop: ScaledLoop, box: Box, whole: Box, free: list[str]) -> tuple[Box, Box] | None:
-    """Cut the constant parameter whose two ends change the linear part most; None where all are too narrow."""
+def _halves(loop: ScaledLoop | None, box: Box, whole: Box, free: list[str]) -> tuple[Box, Box] | None:
+    """Cut the constant parameter whose two ends change the linear part most; None where all are too narrow.
+
+    Without a loop, the side that is relatively widest.
+    """
     effects: dict[int, float] = {}
     for place, (name, side) in enumerate(box.items()):
         if name in free and side.width > SMALLEST * whole[name].width:
+            if loop is None:
+                effects[place] = float(side.width / whole[name].width)
+                continue
             column = loop.vertices[:, place]
             high = column > column.mean()
             if high.any() and not high.all():

@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
+from collections.abc import Iterable, Iterator, Mapping
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Final
 
@@ -27,11 +27,16 @@ INSIDE: Final = Fraction(1, 10**6)
 
 @dataclass(frozen=True, slots=True)
 class SetTask:
-    """One set to be sought: its scope, goal and certificate suffix."""
+    """One set to be sought: its scope, goal and certificate suffix; `criteria` are those it is sought for."""
 
     over: Scope
     goal: Goal
     suffix: str
+    criteria: tuple[Criterion, ...] = ()
+
+    def goal_at(self, case: Case, equilibrium: Equilibrium, cell: Box | None) -> Goal:
+        """The same goal about an equilibrium that lies elsewhere, for the combinations of a cell of the spreads."""
+        return Goal(self.goal.region, tuple(_slabs(case, equilibrium, self.criteria, cell)), self.goal.serves)
 
 
 @dataclass(frozen=True, slots=True)
@@ -73,12 +78,20 @@ def _tasks_of(
     case: Case, equilibrium: Equilibrium, over: Scope, region: Box, criteria: list[Criterion], tag: str
 ) -> Iterator[SetTask]:
     serves = tuple(f"{case.name}.{c.name}" for c in criteria)
-    domain = tuple(_domain_slabs(case, equilibrium))
-    bounds = tuple(s for c in criteria for s in _criterion_slabs(case, equilibrium, c))
-    yield SetTask(over, Goal(region, (*domain, *bounds), serves), tag)
-    attraction = tuple(f"{case.name}.{c.name}" for c in criteria if c.claim == "attraction")
+    whole = SetTask(over, Goal(region, (), serves), tag, tuple(criteria))
+    yield replace(whole, goal=whole.goal_at(case, equilibrium, None))
+    attraction = tuple(c for c in criteria if c.claim == "attraction")
+    bounds = any(True for c in criteria for _ in _criterion_slabs(case, equilibrium, c, None))
     if bounds and attraction:
-        yield SetTask(over, Goal(region, domain, attraction), f"{tag}-free")
+        serves = tuple(f"{case.name}.{c.name}" for c in attraction)
+        free = SetTask(over, Goal(region, (), serves), f"{tag}-free", attraction)
+        yield replace(free, goal=free.goal_at(case, equilibrium, None))
+
+
+def _slabs(case: Case, equilibrium: Equilibrium, criteria: Iterable[Criterion], cell: Box | None) -> Iterator[Slab]:
+    yield from _domain_slabs(case, equilibrium)
+    for criterion in criteria:
+        yield from _criterion_slabs(case, equilibrium, criterion, cell)
 
 
 def _unit(size: int, place: int) -> tuple[Fraction, ...]:
@@ -94,7 +107,7 @@ def _domain_slabs(case: Case, equilibrium: Equilibrium) -> Iterator[Slab]:
             yield Slab(_unit(size, i), lower, upper, f"domain of {name}")
 
 
-def _criterion_slabs(case: Case, equilibrium: Equilibrium, criterion: Criterion) -> Iterator[Slab]:
+def _criterion_slabs(case: Case, equilibrium: Equilibrium, criterion: Criterion, cell: Box | None) -> Iterator[Slab]:
     if criterion.claim == "limits_kept":
         size = len(case.model.states)
         for i, (name, side) in enumerate(case.limits.items()):
@@ -103,12 +116,12 @@ def _criterion_slabs(case: Case, equilibrium: Equilibrium, criterion: Criterion)
         for signal in case.model.signals:
             if signal.limits != Interval(None, None):
                 formula = inline_signals(symbol(signal.name), case.model)
-                yield from _quantity_slabs(case, equilibrium, formula, criterion.over, signal.limits, signal.name)
+                yield from _quantity_slabs(case, equilibrium, formula, criterion.over, signal.limits, signal.name, cell)
     elif criterion.claim == "excursion" and criterion.of is not None:
         low, high = criterion.between or (criterion.at_least, criterion.at_most)
         side = Interval(_low(low), _high(high))
         formula = inline_signals(criterion.of, case.model)
-        yield from _quantity_slabs(case, equilibrium, formula, criterion.over, side, criterion.of_written)
+        yield from _quantity_slabs(case, equilibrium, formula, criterion.over, side, criterion.of_written, cell)
 
 
 def _low(quantity: Quantity | None) -> Fraction | None:
@@ -120,10 +133,11 @@ def _high(quantity: Quantity | None) -> Fraction | None:
 
 
 def _quantity_slabs(
-    case: Case, equilibrium: Equilibrium, formula: Expression, over: Scope, side: Interval, label: str
-) -> Iterator[Slab]:
+    case: Case, equilibrium: Equilibrium, formula: Expression, over: Scope, side: Interval, label: str,
+    cell: Box | None,
+) -> Iterator[Slab]:  # fmt: skip
     """A slab per Bernstein coefficient of an affine quantity; a non-linear one is bounded afterwards, not sought."""
-    for form in offset_forms(case, equilibrium, formula, over) or ():
+    for form in offset_forms(case, equilibrium, formula, over, cell) or ():
         parts = affine_parts(form, len(case.model.states))
         if parts is None:
             return

@@ -29,6 +29,8 @@ from dossier.search.lyapunov_equation import from_equation
 from dossier.search.rounding import rescale
 
 VerifyCell = Callable[[LinearForms, MatrixCell, SpectralRegion, Fraction], bool]
+Where = Callable[[Box], Equilibrium | None]
+"""The equilibrium of the operating point for the combinations in a cell."""
 
 COMMON_BITS: Final = (24, 40)
 """Rounding of a P found by a conic program, whose own digits end there."""
@@ -44,9 +46,15 @@ class _Family:
     equilibrium: Equilibrium
     over: Scope
     whole: LinearForms | str
+    where: Where
 
     def on(self, box: Box) -> LinearForms | str:
         """Forms for `box`, a part of the whole: derived again where they are sharper there."""
+        if self.over != NOMINAL and not self.equilibrium.fixed_for_all:
+            place = self.where(box)
+            if place is None:
+                return "it is not proved where the equilibrium of a cell lies"
+            return linear_forms(self.case, place, self.over, box)
         if isinstance(self.whole, LinearForms) and not self.whole.local:
             return replace(self.whole, box=box)
         return linear_forms(self.case, self.equilibrium, self.over, box) if box.names else self.whole
@@ -73,18 +81,20 @@ def seek_matrix(
     effort: Effort,
     suffix: str,
     verify: VerifyCell,
+    where: Where,
 ) -> tuple[tuple[Attempt, ...], MatrixClaim | None]:
-    """A claim whose every cell `verify` accepts, or None with the reason."""
+    """A claim whose every cell `verify` accepts, or None with the reason; `where` tells of a moving equilibrium."""
     method = f"common quadratic function for the linear part ({region}, level {float(level):.6g})"
     subject = f"{case.name}.{suffix}"
-    forms = linear_forms(case, equilibrium, over)
+    moves = over != NOMINAL and not equilibrium.fixed_for_all
+    forms = "" if moves else linear_forms(case, equilibrium, over)
     box = Box((), ()) if over == NOMINAL else spread_box(case)
     if isinstance(forms, str) and not box.names:
         return (Attempt(subject, method, "out of reach", forms),), None
     if isinstance(forms, LinearForms) and not forms.constant_terms_vanish:
         return (Attempt(subject, method, "out of reach", "the equilibrium moves with the parameters"),), None
     common = over != NOMINAL and any(p.varies and p.has_spread for p in case.model.parameters)
-    task = _Task(_Family(case, equilibrium, over, forms), region, level, effort.cells, common, verify)
+    task = _Task(_Family(case, equilibrium, over, forms, where), region, level, effort.cells, common, verify)
     cells, why = _cells(task, box)
     work = {"cells": len(cells)}
     if why:

@@ -163,7 +163,7 @@ def field_of(
         place = Box((*around.names, *parameters.names), (*around.intervals, *parameters.intervals))
     return offset_field(
         loop.equations, loop.states, equilibrium.state, known, parameters.names, sampled=loop.sampled, place=place,
-        order=order,
+        order=order, course=equilibrium.course,
     )  # fmt: skip
 
 
@@ -239,9 +239,18 @@ def _from_expressions(case: Case, loop: VectorField, equilibrium: Equilibrium, s
     constants = {n: v for n, v in nominal_floats(case).items() if n not in spread.names}
     function = NumericFunction(loop.equations, (*loop.states, *spread.names), constants)
 
+    course = equilibrium.course
+    slopes = np.zeros((len(place), len(spread.names)))
+    middle = np.zeros(len(spread.names))
+    if course is not None:
+        place = np.array([float(c) for c in course.centre])
+        slopes = np.array([[float(s) for s in row] for row in course.slopes]).reshape(slopes.shape)
+        middle = np.array([float(i.middle) for i in course.parameters.intervals])
+
     def evaluate(points: Array, parameters: Array) -> Array:
-        moved = function(np.hstack([points + place, parameters]).T).T
-        return moved - function(np.hstack([np.broadcast_to(place, points.shape), parameters]).T).T
+        rests = place + (parameters - middle) @ slopes.T
+        moved = function(np.hstack([points + rests, parameters]).T).T
+        return moved - function(np.hstack([np.broadcast_to(rests, points.shape), parameters]).T).T
 
     return evaluate
 

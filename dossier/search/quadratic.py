@@ -204,7 +204,8 @@ def _task(
     field = loop.field
     if isinstance(field, NotRational):
         return Attempt(subject, "quadratic, Gram matrices", "out of reach", field.reason)
-    if loop.parameters.names and not (field.constant_terms_vanish and all(b.is_exact for b in equilibrium.state)):
+    rests = field.constant_terms_vanish and all(b.is_exact for b in equilibrium.state)
+    if loop.parameters.names and not rests and equilibrium.course is None:
         why = "the equilibrium moves with the parameters"
         return Attempt(subject, "quadratic over tolerances", "out of reach", why)
     return Task(loop, equilibrium, over, goal, effort, suffix, verify)

@@ -9,20 +9,22 @@ from __future__ import annotations
 from collections.abc import Sequence
 from fractions import Fraction
 from itertools import islice
-from typing import Any, Final
+from typing import Any, Final, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
+from dossier.model.affine import spread_box
 from dossier.model.attempt import Attempt
 from dossier.model.case import TOLERANCES, Case
 from dossier.model.claim import CombinationClaim, SpectralRegion
 from dossier.model.equilibrium import Equilibrium
-from dossier.model.loop import model_hash
+from dossier.model.loop import model_hash, vector_field
 from dossier.model.polynomial import terms
 from dossier.model.region import Box
 from dossier.model.spectral_form import LinearForms, linear_forms
 from dossier.search.effort import Effort
+from dossier.search.numeric import NumericFunction, nominal_floats, slopes_by_differences
 
 Array = NDArray[np.float64]
 
@@ -41,6 +43,13 @@ LAST_STEP: Final = 1e-4
 
 MOST_ROUNDS: Final = 400
 """Moves and halvings of one compass search: far more than smooth functions of ten parameters need."""
+
+WAY_STEPS: Final = 6
+NEWTON_STEPS: Final = 4
+"""Parts of the way to a combination and Newton steps at each, for all points at once."""
+
+SETTLED: Final = 1e-6
+"""Last Newton step, in reaches of the states, at an equilibrium counted as found."""
 
 GRID: Final = 10**6
 """Parts into which each side is divided: combinations are rounded to these, so that they stay short."""
@@ -108,21 +117,91 @@ def seek_worst(
     """A claim about the worst combination found over the box of the spreads; None where there is none to look at."""
     subject = f"{case.name}.{suffix}"
     method = f"worst combination of the linear part ({region})"
-    forms = linear_forms(case, equilibrium, TOLERANCES)
-    if isinstance(forms, str):
-        return (Attempt(subject, method, "out of reach", forms),), None
-    if not forms.box.names:
+    if not spread_box(case).names:
         return (), None
-    if not (forms.constant_terms_vanish and equilibrium.fixed_for_all):
-        return (Attempt(subject, method, "out of reach", "the equilibrium moves with the parameters"),), None
-    point, points = _search(_Family(forms), len(forms.box.names), region, effort)
+    if equilibrium.fixed_for_all:
+        forms = linear_forms(case, equilibrium, TOLERANCES)
+        if isinstance(forms, str):
+            return (Attempt(subject, method, "out of reach", forms),), None
+        if not forms.constant_terms_vanish:
+            return (Attempt(subject, method, "out of reach", "the equilibrium moves with the parameters"),), None
+        family: Family = _Family(forms)
+    else:
+        family = MovingFamily(case, equilibrium)
+    box = spread_box(case)
+    point, points = _search(family, len(box.names), region, effort)
     claim = CombinationClaim(
-        subject, model_hash(case), TOLERANCES, "", equilibrium.identifier, dict(_rounded(forms.box, point))
+        subject, model_hash(case), TOLERANCES, "", equilibrium.identifier, dict(_rounded(box, point))
     )  # fmt: skip
     return (Attempt(subject, method, "found", f"{points} combinations looked at", {"combinations": points}),), claim
 
 
-def _search(family: _Family, free: int, region: SpectralRegion, effort: Effort) -> tuple[Array, int]:
+class Family(Protocol):
+    """Linear parts over the unit box of the spreads."""
+
+    def matrices(self, unit: Array) -> Array:
+        """A at (points, parameters): (points, n, n); not finite where there is none."""
+        ...
+
+
+class MovingFamily:
+    """Linear parts at the equilibrium of each combination, followed from the nominal one by Newton's method."""
+
+    def __init__(self, case: Case, equilibrium: Equilibrium) -> None:
+        loop, whole = vector_field(case), spread_box(case)
+        floats = nominal_floats(case)
+        constants = {n: v for n, v in floats.items() if n not in whole.names}
+        self.field = NumericFunction(loop.equations, (*loop.states, *whole.names), constants)
+        self.sampled, self.size = loop.sampled, len(loop.states)
+        self.origin = np.array([float(b.middle) for b in equilibrium.state])
+        self.nominal = np.array([floats[n] for n in whole.names])
+        self.low = np.array([float(i.bounds[0]) for i in whole.intervals])
+        self.width = np.array([float(i.width) for i in whole.intervals])
+        self.reach = np.array([_reach(case, n) for n in loop.states])
+
+    def matrices(self, unit: Array) -> Array:
+        """As for `Family`; not finite where the equilibrium was lost on the way."""
+        target = (self.low + unit * self.width).T
+        state = np.repeat(self.origin[:, None], target.shape[1], axis=1)
+        lost = np.zeros(target.shape[1], bool)
+        for step in range(1, WAY_STEPS + 1):
+            at = self.nominal[:, None] + (target - self.nominal[:, None]) * (step / WAY_STEPS)
+            for _ in range(NEWTON_STEPS):
+                state, length = self._newton(state, at)
+            lost |= ~(length < SETTLED)
+            state = np.where(lost, self.origin[:, None], state)
+        slopes = np.moveaxis(self._slopes(state, target), 2, 0)
+        return np.where(lost[:, None, None], np.nan, slopes)
+
+    def _slopes(self, state: Array, parameters: Array) -> Array:
+        scale = np.concatenate([self.reach, np.ones(len(parameters))])
+        points = np.concatenate([state, parameters])
+        return slopes_by_differences(self.field, points, scale)[:, : self.size]
+
+    def _newton(self, state: Array, parameters: Array) -> tuple[Array, Array]:
+        value = self.field(np.concatenate([state, parameters]))
+        slopes = self._slopes(state, parameters)
+        if self.sampled:
+            value = value - state
+            slopes = slopes - np.eye(self.size)[:, :, None]
+        usable = np.isfinite(value).all(axis=0) & np.isfinite(slopes).all(axis=(0, 1))
+        matrices = np.where(usable, slopes * self.reach[None, :, None], np.eye(self.size)[:, :, None]).transpose(
+            2, 0, 1
+        )
+        change = (np.linalg.pinv(matrices) @ np.where(usable, value, 0.0).T[:, :, None])[:, :, 0].T
+        length = np.where(usable, np.max(np.abs(change), axis=0), np.inf)
+        return state - change * self.reach[:, None], length
+
+
+def _reach(case: Case, state: str) -> float:
+    for box in (case.region, case.search, case.model.domain):
+        side = box[state]
+        if side.is_bounded and not side.is_point:
+            return float(side.width) / 2
+    return 1.0
+
+
+def _search(family: Family, free: int, region: SpectralRegion, effort: Effort) -> tuple[Array, int]:
     random = np.random.default_rng(SEED)
     corners = np.array(list(islice(_unit_corners(free), CORNERS)))
     draws = random.random((effort.motions, free))
@@ -143,7 +222,7 @@ def _unit_corners(free: int):
         yield [float(index >> k & 1) for k in range(free)]
 
 
-def _compass(family: _Family, start: Array, value: float, region: SpectralRegion) -> tuple[Array, float, int]:
+def _compass(family: Family, start: Array, value: float, region: SpectralRegion) -> tuple[Array, float, int]:
     step, at, used = FIRST_STEP, start, 0
     moves = np.concatenate([np.eye(len(start)), -np.eye(len(start))])
     for _ in range(MOST_ROUNDS):

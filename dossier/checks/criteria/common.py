@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from fractions import Fraction
 from typing import Literal
 
 from dossier.checks.knowledge import Knowledge
-from dossier.model.case import Criterion, value_of
+from dossier.checks.movement import words_of_values
+from dossier.model.case import NOMINAL, Criterion, value_of
 from dossier.model.finding import Enclosure, Finding, Premise, Strength, weakest
 
 
@@ -49,6 +50,17 @@ def refute(
         subject_of(knowledge, criterion), "interval" if strength == "enclosed" else "exact", "refuted", strength,
         criterion.over, theorem, statement, (premise,), facts or {}, evidence, counter_example,
     )  # fmt: skip
+
+
+def refute_by_end(knowledge: Knowledge, criterion: Criterion) -> Iterator[Finding]:
+    """Over tolerances: a combination for which the operating point no longer exists."""
+    if criterion.over == NOMINAL or knowledge.place.result != "proved":
+        return
+    for claim, finding in knowledge.ends():
+        at = {"combination": words_of_values(knowledge.case, claim.values), "equilibrium": claim.equilibrium}
+        yield refute(
+            knowledge, criterion, "E", finding.statement, finding.strength, (claim.identifier,), at
+        )  # fmt: skip
 
 
 def open_question(

@@ -5,13 +5,17 @@ from __future__ import annotations
 from fractions import Fraction
 from typing import Final
 
+from dossier.checks.along import combinations_to_try, range_along, value_at
 from dossier.checks.boxes import range_over
-from dossier.checks.criteria.common import conclude, open_question, refute, within
+from dossier.checks.criteria.common import conclude, open_question, refute, refute_by_end, within
 from dossier.checks.criteria.region import quantity_of
 from dossier.checks.knowledge import Knowledge
 from dossier.checks.lyapunov import parameter_box
+from dossier.checks.movement import combination_text, words_of_values
+from dossier.checks.path import place_at
 from dossier.checks.solutions import lies_in
-from dossier.model.case import NOMINAL, Criterion
+from dossier.model.affine import spread_box
+from dossier.model.case import NOMINAL, Criterion, at_combination
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.figures import span
 from dossier.model.finding import Enclosure, Finding, Premise
@@ -54,7 +58,7 @@ def _found(knowledge: Knowledge) -> dict[str, Enclosure]:
 
 
 def _listed(knowledge: Knowledge, criterion: Criterion) -> Finding:
-    if criterion.over != NOMINAL:
+    if _over_spreads(knowledge, criterion):
         return open_question(knowledge, criterion, "the list is proved at the nominal combination only")
     listed = _in_search(knowledge)
     unclear = [e.identifier for e in listed if e.stability == "undecided"]
@@ -78,6 +82,8 @@ def _existence(knowledge: Knowledge, criterion: Criterion) -> Finding:
                 "equilibria", "no equilibrium was found, but the search box is not fully decided"
             )
             return open_question(knowledge, criterion, why, _found(knowledge))
+        if knowledge.case.none_expected and _over_spreads(knowledge, criterion):
+            return open_question(knowledge, criterion, "that there is none is proved at the nominal combination only")
         if knowledge.case.none_expected:
             statement = "no equilibrium exists in the search box, as expected"
             return conclude(knowledge, criterion, "E", statement, listing.premises, evidence, _found(knowledge))
@@ -90,7 +96,7 @@ def _existence(knowledge: Knowledge, criterion: Criterion) -> Finding:
             knowledge, criterion, "E", "an equilibrium exists where none is expected", "enclosed", evidence,
             {"combination": "nominal", "equilibrium": found[0].identifier}, _found(knowledge),
         )  # fmt: skip
-    if criterion.over != NOMINAL:
+    if _over_spreads(knowledge, criterion):
         return _existence_over_tolerances(knowledge, criterion)
     premise = Premise(
         "unique", "at least one box is proved to hold exactly one equilibrium", "proved", "enclosed",
@@ -100,23 +106,46 @@ def _existence(knowledge: Knowledge, criterion: Criterion) -> Finding:
     return conclude(knowledge, criterion, "E", statement, (premise,), evidence, _found(knowledge))
 
 
+def _over_spreads(knowledge: Knowledge, criterion: Criterion) -> bool:
+    """Combinations other than the nominal one are meant."""
+    return criterion.over != NOMINAL and bool(spread_box(knowledge.case).names)
+
+
 def _existence_over_tolerances(knowledge: Knowledge, criterion: Criterion) -> Finding:
     fixed = next((e for e in _in_search(knowledge) if e.fixed_for_all), None)
-    if fixed is None:
-        return open_question(knowledge, criterion, "the equilibrium moves with the parameters; only nominal is proved")
+    if fixed is not None:
+        premise = Premise(
+            "fixed", f"{fixed.identifier} is an equilibrium for every parameter combination", "proved", "exact",
+            "the right-hand side vanishes there identically", fixed.identifier,
+        )  # fmt: skip
+        return conclude(knowledge, criterion, "E", "an equilibrium exists for every combination", (premise,), ())
+    for absence, found in knowledge.absences():
+        where = combination_text(knowledge.case, absence)
+        return refute(
+            knowledge, criterion, "E", found.statement, found.strength, (absence.identifier,), {"combination": where}
+        )
+    finding = knowledge.branch()
+    if finding is None or knowledge.movement is None:
+        return open_question(knowledge, criterion, _MOVES)
+    hulls = [alone.course.hull() for alone in knowledge.movement.cells or ()]
+    inside = all(lies_in(hull, knowledge.case.search) for hull in hulls)
     premise = Premise(
-        "fixed", f"{fixed.identifier} is an equilibrium for every parameter combination", "proved", "exact",
-        "the right-hand side vanishes there identically", fixed.identifier,
+        "search", "the equilibrium stays in the search box", "proved" if inside else "undecided", "enclosed",
+        evidence=finding.subject,
     )  # fmt: skip
-    return conclude(knowledge, criterion, "E", "an equilibrium exists for every combination", (premise,), ())
+    statement = "an equilibrium exists in the search box for every combination"
+    return conclude(knowledge, criterion, "E", statement, (*finding.premises, premise), (finding.subject,))
+
+
+_MOVES: Final = "the equilibrium moves with the parameters, and its branch is not proved over the whole box"
 
 
 def _value(knowledge: Knowledge, criterion: Criterion) -> Finding:
     chosen = knowledge.chosen
     if chosen is None:
         return open_question(knowledge, criterion, "the operating point has no proved equilibrium")
-    if criterion.over != NOMINAL and not chosen.fixed_for_all:
-        return open_question(knowledge, criterion, "the equilibrium moves with the parameters; only nominal is proved")
+    if _over_spreads(knowledge, criterion) and not chosen.fixed_for_all:
+        return _moving_value(knowledge, criterion, chosen)
     parameters = parameter_box(knowledge.case, criterion.over)
     sides = tuple(Interval(b.lower, b.upper) for b in chosen.state)
     place = Box((*knowledge.case.model.state_names, *parameters.names), (*sides, *parameters.intervals))
@@ -125,16 +154,58 @@ def _value(knowledge: Knowledge, criterion: Criterion) -> Finding:
         return open_question(knowledge, criterion, "the quantity has no finite enclosure at the equilibrium")
     value = Enclosure(ball.lower, ball.upper, "SI")
     inside = within(value, criterion)
-    statement = f"the quantity {criterion.of_written} at the equilibrium stays within its bounds"
+    statement = _statement(criterion)
     facts = {"value": value}
     if inside is False:
-        what = f"the quantity {criterion.of_written} at the equilibrium violates its bound"
-        return refute(
-            knowledge, criterion, "E", what, "enclosed",
-            (chosen.identifier,), {"combination": "nominal"}, facts,
-        )  # fmt: skip
+        return _violated(knowledge, criterion, chosen, "nominal", value)
     premise = Premise(
         "value", statement, "proved" if inside else "undecided", "exact" if ball.is_exact else "enclosed",
         f"in {span(ball.lower, ball.upper)} (SI)", chosen.identifier,
     )  # fmt: skip
     return conclude(knowledge, criterion, "E", statement, (knowledge.place, premise), (), facts)
+
+
+def _statement(criterion: Criterion) -> str:
+    return f"the quantity {criterion.of_written} at the equilibrium stays within its bounds"
+
+
+def _violated(knowledge: Knowledge, criterion: Criterion, chosen: Equilibrium, where: str, value: Enclosure) -> Finding:
+    what = f"the quantity {criterion.of_written} at the equilibrium violates its bound"
+    return refute(
+        knowledge, criterion, "E", what, "enclosed", (chosen.identifier,), {"combination": where}, {"value": value}
+    )
+
+
+def _moving_value(knowledge: Knowledge, criterion: Criterion, chosen: Equilibrium) -> Finding:
+    """Over the cells of the branch; a corner of the box, or the nominal combination, may refute."""
+    case, movement = knowledge.case, knowledge.movement
+    quantity = quantity_of(knowledge, criterion)
+    for absence, found in knowledge.absences():
+        where = combination_text(case, absence)
+        return refute(
+            knowledge, criterion, "E", found.statement, found.strength, (absence.identifier,), {"combination": where}
+        )
+    for found in refute_by_end(knowledge, criterion):
+        return found
+    for values in combinations_to_try(case):
+        there = place_at(case, chosen, values)
+        ball = None if there is None else value_at(at_combination(case, values), there, quantity)
+        value = None if ball is None else Enclosure(ball.lower, ball.upper, "SI")
+        if value is not None and within(value, criterion) is False:
+            return _violated(knowledge, criterion, chosen, words_of_values(case, values), value)
+    finding = knowledge.branch()
+    if finding is None or movement is None:
+        return open_question(knowledge, criterion, _MOVES)
+    balls = [range_along(case, chosen.along(a.course), quantity) for a in movement.cells or ()]
+    known = [b for b in balls if b is not None]
+    if len(known) < len(balls):
+        return open_question(knowledge, criterion, "the quantity has no finite enclosure at the equilibrium")
+    value = Enclosure(min(b.lower for b in known), max(b.upper for b in known), "SI")
+    inside = within(value, criterion)
+    premise = Premise(
+        "value", _statement(criterion), "proved" if inside else "undecided", "enclosed",
+        "" if value.lower is None or value.upper is None else f"in {span(value.lower, value.upper)} (SI)",
+        finding.subject,
+    )  # fmt: skip
+    premises = (knowledge.place, *finding.premises, premise)
+    return conclude(knowledge, criterion, "E", _statement(criterion), premises, (finding.subject,), {"value": value})

@@ -7,7 +7,15 @@ from fractions import Fraction
 from typing import Final
 
 from dossier.checks.combination import BOUNDARY, OUTSIDE, count_of, words_of
-from dossier.checks.criteria.common import conclude, open_question, refute, set_aside, stated_bounds, within
+from dossier.checks.criteria.common import (
+    conclude,
+    open_question,
+    refute,
+    refute_by_end,
+    set_aside,
+    stated_bounds,
+    within,
+)
 from dossier.checks.knowledge import Knowledge
 from dossier.checks.linear import routh_claim_id
 from dossier.checks.lyapunov import certified_field
@@ -48,6 +56,7 @@ def establish_linear(knowledge: Knowledge, criterion: Criterion) -> tuple[Findin
         return (set_aside(knowledge, criterion, "not applicable", "contraction per sample needs a sampled model"),)
     found = [
         *_refutations(knowledge, criterion, equilibrium),
+        *refute_by_end(knowledge, criterion),
         *_at_combinations(knowledge, criterion),
         *_by_matrix(knowledge, criterion),
         *_by_count(knowledge, criterion, equilibrium),

@@ -8,7 +8,14 @@ from fractions import Fraction
 from dossier.checks.boxes import range_over
 from dossier.checks.cells import merged
 from dossier.checks.combination import OUTSIDE, count_of, words_of
-from dossier.checks.criteria.common import conclude, open_question, refute, stated_bounds, tightest_bounds
+from dossier.checks.criteria.common import (
+    conclude,
+    open_question,
+    refute,
+    refute_by_end,
+    stated_bounds,
+    tightest_bounds,
+)
 from dossier.checks.knowledge import Knowledge
 from dossier.checks.linear import routh_claim_id
 from dossier.checks.lyapunov import Ellipsoid, ellipsoid, parameter_box
@@ -39,14 +46,12 @@ def establish_region(knowledge: Knowledge, criterion: Criterion) -> tuple[Findin
     if not region.is_bounded:
         missing = ", ".join(n for n, i in region.items() if not i.is_bounded)
         return (open_question(knowledge, criterion, f"the region of starts does not bound {missing}"),)
-    found = [*_refutations(knowledge, criterion, equilibrium, region)]
+    found = [*refute_by_end(knowledge, criterion), *_refutations(knowledge, criterion, equilibrium, region)]
     for claim, finding in knowledge.sets(criterion.over):
         shape = ellipsoid(claim, len(knowledge.case.model.states))
         if shape is not None:
-            found.append(_by_set(knowledge, criterion, equilibrium, region, claim, finding, shape))
-    found += [
-        _by_cells(knowledge, criterion, equilibrium, region, claim, finding) for claim, finding in knowledge.cells()
-    ]
+            found.append(_by_set(knowledge, criterion, region, claim, finding, shape))
+    found += [_by_cells(knowledge, criterion, region, claim, finding) for claim, finding in knowledge.cells()]
     return tuple(found) or (
         open_question(knowledge, criterion, "no set was proved attractive for the scope asked for"),
     )
@@ -55,12 +60,12 @@ def establish_region(knowledge: Knowledge, criterion: Criterion) -> tuple[Findin
 def _by_set(
     knowledge: Knowledge,
     criterion: Criterion,
-    equilibrium: Equilibrium,
     region: Box,
     claim: SetClaim,
     finding: Finding,
     shape: Ellipsoid,
 ) -> Finding:
+    equilibrium = knowledge.rest_of(claim, criterion.over)
     scale = covered_scale(shape, region)
     facts = {"proved scale of the region": Enclosure(scale, scale, "1")}
     premises = [
@@ -73,7 +78,10 @@ def _by_set(
     ]  # fmt: skip
     theorem = finding.theorem
     statement = "every motion from the region stays in the set, exists for all time and converges"
-    if criterion.claim == "limits_kept":
+    if equilibrium is None:
+        statement = "it is not proved where the equilibrium lies"
+        premises.append(Premise("moved", statement, "undecided", "enclosed", evidence=claim.identifier))
+    elif criterion.claim == "limits_kept":
         theorem, statement = "T9", "no motion from the region leaves the limits"
         premises.extend(_limit_premises(knowledge, criterion, equilibrium, claim, shape))
     elif criterion.claim == "excursion":
@@ -85,14 +93,11 @@ def _by_set(
     return conclude(knowledge, criterion, theorem, statement, tuple(premises), (claim.identifier,), facts)
 
 
-def _by_cells(
-    knowledge: Knowledge, criterion: Criterion, equilibrium: Equilibrium, region: Box, claim: CellsClaim,
-    finding: Finding,
-) -> Finding:  # fmt: skip
+def _by_cells(knowledge: Knowledge, criterion: Criterion, region: Box, claim: CellsClaim, finding: Finding) -> Finding:
     """The same criterion on every cell; what holds on each holds for every combination."""
     size = len(knowledge.case.model.states)
     shapes = [(cell, shape) for cell in claim.cells if (shape := ellipsoid(cell, size)) is not None]
-    parts = [_by_set(knowledge, criterion, equilibrium, region, cell, finding, shape) for cell, shape in shapes]
+    parts = [_by_set(knowledge, criterion, region, cell, finding, shape) for cell, shape in shapes]
     own = len(finding.premises)
     premises = [knowledge.place, *finding.premises]
     premises += merged([(p.premises[1], *p.premises[2 + own :]) for p in parts], claim.identifier)
@@ -112,7 +117,7 @@ def _excursion(
     knowledge: Knowledge, criterion: Criterion, equilibrium: Equilibrium, claim: SetClaim, shape: Ellipsoid
 ) -> tuple[Premise, dict[str, Enclosure]]:
     quantity = quantity_of(knowledge, criterion)
-    bound = bound_over_set(knowledge.case, equilibrium, shape, quantity, criterion.over)
+    bound = bound_over_set(knowledge.case, equilibrium, shape, quantity, criterion.over, _cell(claim, criterion))
     if bound is None:
         return Premise(
             "bound", "the quantity has a finite bound on the set", "undecided", "enclosed", evidence=claim.identifier
@@ -130,6 +135,11 @@ def _excursion(
         "proved" if kept else "undecided", strength, detail, claim.identifier,
     )  # fmt: skip
     return premise, facts
+
+
+def _cell(claim: SetClaim, criterion: Criterion) -> Box | None:
+    """The combinations a set is about, where that is a matter of the criterion."""
+    return claim.parameters if isinstance(claim, LyapunovClaim) and criterion.over != NOMINAL else None
 
 
 def quantity_of(knowledge: Knowledge, criterion: Criterion) -> Expression:
@@ -155,7 +165,7 @@ def _limit_premises(
         if signal.limits == Interval(None, None):
             continue
         formula = inline_signals(symbol(signal.name), case.model)
-        bound = bound_over_set(case, equilibrium, shape, formula, criterion.over)
+        bound = bound_over_set(case, equilibrium, shape, formula, criterion.over, _cell(claim, criterion))
         kept = bound is not None and signal.limits.contains(Interval(bound.over_set.lower, bound.over_set.upper))
         detail = "" if bound is None else f"in {span(bound.over_set.lower, bound.over_set.upper)} (SI)"
         yield Premise(
