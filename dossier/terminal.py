@@ -93,7 +93,7 @@ class Terminal:
         self.out.print(self._table(build.evidence.points))
         counts = Counter(o.verdict for o in outcomes)
         self.out.print(Text("   ".join(f"{counts[v]} {v}" for v in VERDICTS if counts[v])))
-        for warning in build.warnings:
+        for warning in (*build.warnings, *(f"{p.case.name}: {w}" for p in build.evidence.points for w in p.warnings)):
             self.out.print(Text(f"warning: {warning}"))
         for outcome in outcomes:
             if outcome.verdict != "proved" or outcome.contradiction:
@@ -133,7 +133,8 @@ class Terminal:
 
     @staticmethod
     def _exit_code(build: Build, outcomes: Sequence[Outcome]) -> int:
-        if any(o.contradiction for o in outcomes) or not isinstance(build.rendered.pdf, bytes):
+        lost = any(a.ending == "internal fault" for p in build.evidence.points for a in p.attempts)
+        if lost or any(o.contradiction for o in outcomes) or not isinstance(build.rendered.pdf, bytes):
             return PROGRAM_FAULT
         return PROVED if all(o.verdict in ("proved", "not applicable") for o in outcomes) else NOT_PROVED
 

@@ -9,6 +9,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
 from typing import Final
 
+from dossier.checks.candidate import check_candidate
 from dossier.checks.cells import check_cells
 from dossier.checks.combination import check_combination
 from dossier.checks.cover import check_cover
@@ -16,10 +17,17 @@ from dossier.checks.criteria.existence import establish_existence
 from dossier.checks.criteria.linear import establish_linear
 from dossier.checks.criteria.margins import establish_margins
 from dossier.checks.criteria.region import establish_region
-from dossier.checks.equilibria import check_roots, cluster_texts, list_equilibria, verify_fixed
+from dossier.checks.equilibria import (
+    check_roots,
+    cluster_texts,
+    is_alone_near_guess,
+    list_equilibria,
+    verify_fixed,
+)
 from dossier.checks.frequency import check_margins
 from dossier.checks.knowledge import Knowledge
 from dossier.checks.linear import check_routh, classify, routh_claim
+from dossier.checks.listing import nearest
 from dossier.checks.lyapunov import check_lyapunov
 from dossier.checks.movement import Movement, check_absence, check_branch, check_end
 from dossier.checks.spectral import check_matrix
@@ -28,6 +36,7 @@ from dossier.model.case import Case, Criterion
 from dossier.model.claim import (
     AbsenceClaim,
     BranchClaim,
+    CandidateClaim,
     CellsClaim,
     Claim,
     CombinationClaim,
@@ -79,20 +88,25 @@ class Assessment:
 
 
 def assess(case: Case, claims: tuple[Claim, ...], boxes: int) -> Assessment:
-    """Verify `claims`, gather what is known, and establish every criterion; `boxes` bounds each cover."""
+    """Verify `claims`, gather what is known, and establish every criterion; `boxes` bounds each cover.
+
+    Raises ValueError for claims that share an identifier: a finding about one would serve the other.
+    """
+    if len({c.identifier for c in claims}) < len(claims):
+        raise ValueError("two certificates have the same identifier")
     roots = next((c for c in claims if isinstance(c, RootsClaim)), None)
     about_roots = () if roots is None else (check_roots(case, roots, boxes),)
-    equilibria, place, why = locate(case, roots)
+    complete = any(f.result == "proved" for f in about_roots)
+    equilibria, place, why = locate(case, roots, complete, boxes)
     equilibria = tuple(_with_spectrum(case, e) for e in equilibria)
     chosen = next((e for e in equilibria if e.chosen), None)
     moved, movement = _movement(case, claims, chosen, boxes)
     verified, margins = _verify(case, claims, equilibria, chosen, movement, boxes)
     findings = (*about_roots, *moved, *verified)
-    complete = any(f.result == "proved" for f in about_roots)
     knowledge = Knowledge(
         case, equilibria, complete, claims, findings, place,
-        {} if chosen is None else spectral_values(case, chosen), margins, movement,
-        why,
+        {} if chosen is None else spectral_values(case, chosen), margins, why,
+        movement,
     )  # fmt: skip
     about_criteria = tuple(f for c in case.criteria if c.claim in FAMILIES for f in FAMILIES[c.claim](knowledge, c))
     missing = next(iter(about_roots), None) if complete and not equilibria and not case.none_expected else None
@@ -102,10 +116,13 @@ def assess(case: Case, claims: tuple[Claim, ...], boxes: int) -> Assessment:
     )
 
 
-def locate(case: Case, roots: RootsClaim | None) -> tuple[tuple[Equilibrium, ...], Premise, dict[str, str]]:
+def locate(
+    case: Case, roots: RootsClaim | None, complete: bool, boxes: int
+) -> tuple[tuple[Equilibrium, ...], Premise, dict[str, str]]:
     """The proved equilibria, the premise that the chosen point is one, and what could not be had.
 
-    A point stated with ``at`` is verified for every combination by itself, whatever the list says.
+    A point stated with ``at`` is verified for every combination by itself, whatever the list says.  One that a guess
+    chooses is chosen only if none can be as near: either the list is proved `complete`, or what is that near is.
     """
     unavailable: dict[str, str] = {}
     listed = () if roots is None else list_equilibria(case, roots)
@@ -120,6 +137,15 @@ def locate(case: Case, roots: RootsClaim | None) -> tuple[tuple[Equilibrium, ...
     chosen = next((e for e in listed if e.chosen), None)
     if chosen is None:
         return listed, Premise("equilibrium", "an equilibrium is proved", "undecided", "enclosed"), unavailable
+    if case.fixed is None and roots is not None:
+        rivals = len(nearest(case, listed)) > 1
+        if rivals or not (complete or is_alone_near_guess(case, roots, chosen, boxes)):
+            why = "several equilibria are about as near to the guess" if rivals else (
+                "the list of equilibria is not proved complete near the guess, so another one may be meant"
+            )  # fmt: skip
+            text = "the equilibrium nearest to the guess is proved"
+            premise = Premise("equilibrium", text, "undecided", "enclosed", why)
+            return tuple(replace(e, chosen=False) for e in listed), premise, unavailable | {"equilibrium": why}
     exact = all(b.is_exact for b in chosen.state)
     text = f"{chosen.identifier} is an equilibrium" + (" for every combination" if chosen.fixed_for_all else "")
     evidence = chosen.identifier if roots is None else roots.identifier
@@ -198,6 +224,8 @@ def _verify(
         elif isinstance(claim, LyapunovClaim):
             findings.append(check_lyapunov(case, chosen, claim, movement.on))
             findings.append(check_cover(case, chosen, claim, min(boxes, SECOND_WITNESS_BOXES)))
+        elif isinstance(claim, CandidateClaim):
+            findings.append(check_candidate(case, chosen, claim, boxes))
         elif isinstance(claim, CoverClaim):
             findings.append(check_cover(case, chosen, claim, boxes))
         elif isinstance(claim, SturmClaim):

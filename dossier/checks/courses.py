@@ -42,8 +42,11 @@ NEWTON_STEPS: Final = 8
 """Newton steps from the given point to the equilibrium of the middle combination."""
 HALVINGS: Final = (0, 1, 2, 3, 4, 6, 8, 11, 14, 18, 22, 26)
 """Radii tried are the reach divided by these powers of two: the largest that works leaves most room to join cells."""
-CONTRACTIONS: Final = 3
-"""Further applications of the operator to its own image: the second gains nearly all."""
+CONTRACTIONS: Final = 16
+"""Further applications of the operator to its own image: they gain digits quadratically, until the cell's own width
+or the rounding of the centre is left."""
+WORTH_GOING_ON: Final = Fraction(9, 10)
+"""An application that shrinks no radius below this share of what it was is the last."""
 DEFAULT_REACH: Final = Fraction(1)
 """Typical size of a state that neither region, search box nor domain bounds."""
 
@@ -105,8 +108,7 @@ def alone_on(family: RestFamily, cell: Box, start: Sequence[Fraction]) -> Alone 
         found = _alone_on(family, cell, start)
         if found is None:
             return None
-        course = _with_exact_coordinates(family, found)
-        return found if course is None else Alone(course, found.radii)
+        return _with_exact_coordinates(family, found) or found
 
 
 def _alone_on(family: RestFamily, cell: Box, start: Sequence[Fraction]) -> Alone | None:
@@ -120,12 +122,23 @@ def _alone_on(family: RestFamily, cell: Box, start: Sequence[Fraction]) -> Alone
         radii = tuple(r / 2**halvings for r in family.reach)
         rest = sheared.image(radii)
         if rest is not None and all(a < b for a, b in zip(rest, radii, strict=True)):
-            for _ in range(CONTRACTIONS):
-                better = sheared.image(rest)
-                if better is not None:
-                    rest = tuple(map(min, rest, better))
+            rest = _contracted(sheared, rest)
             return Alone(Course(cell, centre, slopes, tuple(map(_short_above, rest))), radii)
     return None
+
+
+def _contracted(sheared: _Sheared, rest: tuple[Fraction, ...]) -> tuple[Fraction, ...]:
+    """The operator applied to its own image until that gains no more: every application keeps the solutions."""
+    for _ in range(CONTRACTIONS):
+        image = sheared.image(rest)
+        if image is None:
+            break
+        better = tuple(map(min, rest, image))
+        gain = max((b / a for a, b in zip(rest, better, strict=True) if a), default=Fraction(1))
+        rest = better
+        if gain > WORTH_GOING_ON:
+            break
+    return rest
 
 
 def _centre(
@@ -262,11 +275,12 @@ class _Sheared:
         return tuple(result)
 
 
-def _with_exact_coordinates(family: RestFamily, alone: Alone) -> Course | None:
-    """The course with every coordinate that is proved to be one rational number for all combinations.
+def _with_exact_coordinates(family: RestFamily, alone: Alone) -> Alone | None:
+    """The same with every coordinate that is proved to be one rational number for all combinations.
 
     Put in, such numbers make some equations vanish identically; the others must prove the other coordinates as
-    before.  The point so found lies within the radii, hence it is the same equilibrium.
+    before.  The point so found lies within the radii, hence it is the same equilibrium.  About the new plane the radii
+    are smaller by how far it lies from the old one.
     """
     course = alone.course
     fixed: dict[str, Fraction] = {}
@@ -296,18 +310,20 @@ def _with_exact_coordinates(family: RestFamily, alone: Alone) -> Course | None:
         assert found is not None
         centre[i], slopes[i], rest[i] = found.course.centre[k], found.course.slopes[k], found.course.rest[k]
     exact = Course(course.parameters, tuple(centre), tuple(slopes), tuple(rest))
-    return exact if _stays_within(exact, alone) else None
+    gaps = _gaps(exact, course)
+    if any(g + r > radius for g, r, radius in zip(gaps, exact.rest, alone.radii, strict=True)):
+        return None
+    return Alone(exact, tuple(radius - g for g, radius in zip(gaps, alone.radii, strict=True)))
 
 
-def _stays_within(course: Course, alone: Alone) -> bool:
-    """On the whole cell every point of `course` lies within the radii of `alone` (both are affine)."""
-    widths = [i.width / 2 for i in course.parameters.intervals]
-    for i, radius in enumerate(alone.radii):
-        gap = abs(course.centre[i] - alone.course.centre[i]) + course.rest[i]
-        turns = zip(course.slopes[i], alone.course.slopes[i], widths, strict=True)
-        if gap + sum((abs(a - b) * w for a, b, w in turns), Fraction(0)) > radius:
-            return False
-    return True
+def _gaps(one: Course, other: Course) -> list[Fraction]:
+    """How far the planes of two courses over one cell are apart at most, per state."""
+    widths = [i.width / 2 for i in one.parameters.intervals]
+    gaps = []
+    for i, (a, b) in enumerate(zip(one.centre, other.centre, strict=True)):
+        turns = zip(one.slopes[i], other.slopes[i], widths, strict=True)
+        gaps.append(abs(a - b) + sum((abs(s - t) * w for s, t, w in turns), Fraction(0)))
+    return gaps
 
 
 def common(one: Box, other: Box) -> Box | None:

@@ -192,11 +192,10 @@ class Problem:
 def prove_decrease(case: Case, equilibrium: Equilibrium, shape: Ellipsoid, boxes: int) -> Verdict:
     """Branch and bound over the whole set; proved when every box is outside the set, decreasing, or closed at zero."""
     try:
-        problem = Problem(case, equilibrium, shape)
+        with np.errstate(all="ignore"):
+            return _run(Problem(case, equilibrium, shape), boxes)
     except (ArithmeticError, ValueError) as error:
         return Verdict(False, 0, str(error))
-    with np.errstate(all="ignore"):
-        return _run(problem, boxes)
 
 
 def _run(problem: Problem, boxes: int) -> Verdict:
@@ -226,18 +225,27 @@ def _start(problem: Problem) -> Array:
     """Half widths in z of a box that holds the set z'Fz <= c, F = T'PT.
 
     Scaled to unit diagonal, F is at least 1 minus its largest off-diagonal row sum (S. A. Gershgorin 1931),
-    so z_i^2 <= c / (F_ii times that).  Raises ArithmeticError where the row sum is 1 or more.
+    so z_i^2 <= c / (F_ii times that).  Raises ArithmeticError where the row sum is 1 or more, or where numbers
+    leave the range in which they are as precise as that needs.
     """
     diagonal = np.array([problem.form.lo[i, i, 0] for i in range(problem.size)])
+    if not (diagonal > LEAST_DIAGONAL).all():
+        raise ArithmeticError("the coordinates of the interval check are badly scaled")
     size = np.maximum(np.abs(problem.form.lo[:, :, 0]), np.abs(problem.form.hi[:, :, 0]))
-    scale = np.sqrt(np.maximum(diagonal, 1e-300))
+    scale = np.sqrt(diagonal)
     relative = size / np.outer(scale, scale)
     rest = relative.sum(axis=1) - np.diag(relative)
     least = 1.0 - rest.max() * (1 + SAFETY)
-    if least <= 0:
+    if not least > SAFETY:
         raise ArithmeticError("the coordinates of the interval check are too ill-conditioned")
-    return np.sqrt(float(problem.level_above) / least) / scale * (1 + SAFETY)
+    half = np.sqrt(float(problem.level_above) / least) / scale * (1 + SAFETY)
+    if not (np.isfinite(half) & (half > LEAST_DIAGONAL)).all():
+        raise ArithmeticError("the coordinates of the interval check are badly scaled")
+    return half
 
+
+LEAST_DIAGONAL: Final = 1e-200
+"""Diagonal entries and half widths below this would come near underflow in products; no scaled set has them."""
 
 SAFETY: Final = 1e-9
 """Relative widening of the start box: far above the rounding of the few operations that give it."""

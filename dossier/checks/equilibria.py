@@ -8,7 +8,7 @@ box is covered anew from these boxes alone.  Statements hold at the nominal para
 from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from itertools import combinations
 from typing import Final
@@ -17,7 +17,7 @@ import numpy as np
 
 from dossier.checks.branch_and_bound import Cover, cover, inside_known
 from dossier.checks.intervals import Span
-from dossier.checks.listing import list_equilibria, verify_fixed
+from dossier.checks.listing import TIE, distance_scales, list_equilibria, region_distance, verify_fixed
 from dossier.checks.newton import System, UniqueBox, box_around
 from dossier.checks.solutions import (
     Enclosure,
@@ -29,8 +29,10 @@ from dossier.checks.solutions import (
     rest_problem,
     tighten,
 )
+from dossier.model.ball import Ball
 from dossier.model.case import NOMINAL, Case
 from dossier.model.claim import RootsClaim, SolutionBox
+from dossier.model.equilibrium import Equilibrium
 from dossier.model.finding import Enclosure as Fact
 from dossier.model.finding import Finding, Premise, weakest
 from dossier.model.loop import model_hash
@@ -218,6 +220,46 @@ def _doubts_about_solutions(case: Case, claim: RootsClaim) -> Iterable[str]:
     for (i, a), (j, b) in combinations(enumerate(claim.solutions, 1), 2):
         if not _is_apart(a.enclosure, b.enclosure):
             yield f"solutions {i} and {j} may be the same"
+
+
+def is_alone_near_guess(case: Case, claim: RootsClaim, chosen: Equilibrium, boxes: int) -> bool:
+    """No other equilibrium of the search box is about as near to the guess of `case` as `chosen`.
+
+    The box that holds all points up to `TIE` times as far away is covered anew; distances as in
+    `dossier.checks.listing.region_distance`.
+    """
+    if case.near is None:
+        return False
+    if chosen.state == tuple(Ball(v) for v in case.near):
+        return True
+    reach = Fraction(TIE * region_distance(case, chosen.state, case.near) * (1 + ROUNDING))
+    sides = []
+    for value, scale, side in zip(case.near, distance_scales(case), case.search.intervals, strict=True):
+        lower, upper = side.bounds
+        low, high = max(lower, value - reach * scale), min(upper, value + reach * scale)
+        if low > high:
+            return False
+        sides.append(Interval(low, high))
+    around = replace(case, search=Box(case.search.names, tuple(sides)))
+    if any(s.is_point for s in sides):
+        return False
+    system, problem = system_of(around), rest_problem(case)
+    mine = [s for s in claim.solutions if lies_in(chosen.state, s.uniqueness) and holds_one(problem, s.uniqueness)]
+    known = [UniqueBox(system.scaled(s.uniqueness), system.scaled(s.uniqueness)) for s in mine]
+    found = cover(system, known, boxes)
+    if not found.within_budget or found.undecided:
+        return False
+    for zero in found.zeros[len(known) :]:
+        solution = _confirmed(system, problem, zero, around.search)
+        if solution is None:
+            return False
+        if not lies_in(chosen.state, solution.uniqueness) and place_of(solution.enclosure, around.search) != "outside":
+            return False
+    return True
+
+
+ROUNDING: Final = 1e-9
+"""Relative widening of a distance computed in floating point."""
 
 
 def _is_apart(a: Enclosure, b: Enclosure) -> bool:

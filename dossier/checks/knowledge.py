@@ -10,6 +10,7 @@ from dossier.model.case import NOMINAL, TOLERANCES, Case, Scope
 from dossier.model.claim import (
     AbsenceClaim,
     BranchClaim,
+    CandidateClaim,
     CellsClaim,
     Claim,
     CombinationClaim,
@@ -39,15 +40,20 @@ class Knowledge:
     place: Premise
     spectral: dict[str, Enclosure]
     margins: tuple[LoopMargins, ...]
-    movement: Movement | None
-    """Where the chosen equilibrium lies for other combinations; None without one."""
     unavailable: dict[str, str]
     """Why a family of quantities could not be measured, by its name (``equilibria``, ``linear part``, loop ids)."""
+    movement: Movement | None = None
+    """Where the chosen equilibrium lies for other combinations; None without one."""
 
     @property
     def chosen(self) -> Equilibrium | None:
         """The equilibrium the operating point stands for."""
         return next((e for e in self.equilibria if e.chosen), None)
+
+    @property
+    def why_no_equilibrium(self) -> str:
+        """Why nothing is known about the operating point itself."""
+        return self.unavailable.get("equilibrium", "the operating point has no proved equilibrium")
 
     def proved(self, identifier: str, scopes: tuple[Scope, ...] = (NOMINAL, TOLERANCES)) -> Finding | None:
         """The rigorous finding that proves claim `identifier` for one of `scopes`, exact before interval."""
@@ -84,6 +90,14 @@ class Knowledge:
         if over == NOMINAL or not isinstance(claim, LyapunovClaim) or self.movement is None:
             return self.chosen
         return self.movement.on(claim.parameters)
+
+    def candidate(self) -> tuple[CandidateClaim, Finding] | None:
+        """The engineer's own V where the set it describes was proved attractive (at the nominal combination)."""
+        for claim in self.claims:
+            finding = self.proved(claim.identifier) if isinstance(claim, CandidateClaim) else None
+            if isinstance(claim, CandidateClaim) and finding is not None:
+                return claim, finding
+        return None
 
     def cells(self) -> Iterator[tuple[CellsClaim, Finding]]:
         """Proved attractive sets cell by cell; they serve every scope, as each combination lies in a cell."""

@@ -109,10 +109,18 @@ def nearest(case: Case, listed: Sequence[Equilibrium]) -> tuple[Equilibrium, ...
 
 def region_distance(case: Case, state: Enclosure, guess: Sequence[Fraction]) -> float:
     """Distance with each state divided by the region's half width there, else the search box's, else 1."""
-    total = 0.0
-    for ball, value, region, search in zip(state, guess, case.region.intervals, case.search.intervals, strict=True):
-        total += float((ball.middle - value) / (_half_width(region) or _half_width(search) or 1)) ** 2
-    return math.sqrt(total)
+    return math.sqrt(
+        sum(
+            float((ball.middle - value) / scale) ** 2
+            for ball, value, scale in zip(state, guess, distance_scales(case), strict=True)
+        )
+    )
+
+
+def distance_scales(case: Case) -> tuple[Fraction, ...]:
+    """By what each state is divided in a distance: the region's half width, else the search box's, else 1."""
+    sides = zip(case.region.intervals, case.search.intervals, strict=True)
+    return tuple(_half_width(region) or _half_width(search) or Fraction(1) for region, search in sides)
 
 
 def _half_width(side: Interval) -> Fraction | None:

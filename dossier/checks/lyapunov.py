@@ -35,6 +35,7 @@ from dossier.model.finding import Finding, Premise, Result, Strength, weakest
 from dossier.model.loop import model_hash, vector_field
 from dossier.model.polynomial import Exponents, NotRational, OffsetField, collapse, offset_field, terms
 from dossier.model.region import Box, Interval
+from dossier.model.remainders import HIGHEST_ORDER
 
 QUADRATIC = 2
 
@@ -131,10 +132,12 @@ def set_premises(
     if of_cell and claim.over != NOMINAL:
         fits = claim.parameters.names == expected.names and expected.contains(claim.parameters)
     yield _premise("scope", "the parameter box is the one asked for", fits, ident)
-    if shape is None or not fits:
+    if shape is None or not fits or not 0 <= claim.expansion <= HIGHEST_ORDER:
+        if shape is not None and fits:
+            yield _premise("remainders", f"the order of expansion is at most {HIGHEST_ORDER}", False, ident)
         return
-    if claim.over != NOMINAL and not equilibrium.fixed_for_all:
-        place = None if where is None else where(claim.parameters)
+    if claim.over != NOMINAL and not equilibrium.fixed_for_all and where is not None:
+        place = where(claim.parameters)
         moved = place is not None and place.course is not None
         yield _premise("moved", "where the equilibrium of every combination lies is proved", moved, ident, "enclosed")
         varying = any(p.varies and p.has_spread for p in case.model.parameters)

@@ -16,8 +16,8 @@ from dossier.model.ball import Ball
 from dossier.model.case import Case
 from dossier.model.expression import ZERO, Expression, names, number, simplify, sub, substitute, symbol
 from dossier.model.loop import vector_field
-from dossier.model.polynomial import Quotient, Ring, quotient_of
 from dossier.model.region import Box, Interval
+from dossier.model.spectral_form import vanishes_identically
 
 TIGHT_BITS: Final = 200
 """Solutions are enclosed to 2^-200, about 6e-61, of the larger of their size and the radius of their box."""
@@ -87,17 +87,9 @@ def holds_solution(problem: RestProblem, enclosure: Enclosure) -> bool:
 
 
 def vanishes(expression: Expression) -> bool:
-    """`expression` is identically zero wherever it is defined, by folding or as a quotient of polynomials."""
+    """`expression` is identically zero wherever it is defined; equal functions of equal arguments cancel."""
     folded = simplify(expression)
-    if folded == ZERO:
-        return True
-    variables = tuple(sorted(names(folded)))
-    if not variables:
-        return False
-    ring = Ring(variables)
-    one = ring.constant(Fraction(1))
-    quotient = quotient_of(folded, ring, {n: Quotient(ring.gen(n), one) for n in variables})
-    return isinstance(quotient, Quotient) and not quotient.numerator
+    return folded == ZERO or (bool(names(folded) or folded.args) and vanishes_identically(folded, {}))
 
 
 def lies_in(enclosure: Enclosure, box: Box) -> bool:

@@ -51,7 +51,7 @@ def check_matrix(case: Case, equilibrium: Equilibrium, claim: MatrixClaim, where
 
     `where` tells of an equilibrium that moves; without it, only one that is the same for every combination will do.
     """
-    premises = tuple(_premises(case, equilibrium, claim, where or (lambda _: None)))
+    premises = tuple(_premises(case, equilibrium, claim, where))
     result, strength = weakest(premises)
     scope = "at the nominal parameters" if claim.over == NOMINAL else "for every parameter combination"
     text = region_text(claim.region, claim.level)
@@ -67,7 +67,7 @@ def _shown(
     return Premise(label, statement, "proved" if shown else "undecided", strength, detail, claim.identifier)
 
 
-def _premises(case: Case, equilibrium: Equilibrium, claim: MatrixClaim, where: Where) -> Iterator[Premise]:
+def _premises(case: Case, equilibrium: Equilibrium, claim: MatrixClaim, where: Where | None) -> Iterator[Premise]:
     meant = claim.model_hash == model_hash(case) and claim.equilibrium == equilibrium.identifier
     sampled = case.model.time == "sampled"
     fits = claim.region == "disc" if sampled else claim.region in ("half-plane", "sector")
@@ -96,7 +96,7 @@ def _premises(case: Case, equilibrium: Equilibrium, claim: MatrixClaim, where: W
         yield _shown("common", "one P serves all cells, as parameters vary during a motion", common, claim, "exact")
     if claim.over == NOMINAL:
         yield _smooth(case, equilibrium, claim)
-    elif equilibrium.fixed_for_all:
+    elif equilibrium.fixed_for_all or where is None:
         yield _regular(case, claim, [(equilibrium, parameter_box(case, claim.over))])
     else:
         places = [(where(box), box) for box in cells]
@@ -148,14 +148,14 @@ def kink_distances(expression: Expression) -> Iterator[Expression]:
             yield from (sub(argument, lower), sub(upper, argument), sub(upper, lower))
 
 
-def _spectrum(case: Case, equilibrium: Equilibrium, claim: MatrixClaim, where: Where) -> Iterator[Premise]:
-    moves = claim.over != NOMINAL and not equilibrium.fixed_for_all
+def _spectrum(case: Case, equilibrium: Equilibrium, claim: MatrixClaim, where: Where | None) -> Iterator[Premise]:
+    moves = claim.over != NOMINAL and not equilibrium.fixed_for_all and where is not None
     whole = "" if moves else linear_forms(case, equilibrium, claim.over)
     held, strength, why = 0, "exact", ""
     fixed = True
     for cell in claim.cells:
         forms = whole
-        place = where(cell.parameters) if moves else equilibrium
+        place = where(cell.parameters) if moves and where is not None else equilibrium
         if place is None or (moves and place.course is None):
             why = "it is not proved where the equilibrium of a cell lies"
             break

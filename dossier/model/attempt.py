@@ -6,7 +6,9 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Literal
 
-Ending = Literal["found", "no candidate", "infeasible", "numerical failure", "budget spent", "out of reach"]
+Ending = Literal[
+    "found", "no candidate", "infeasible", "numerical failure", "budget spent", "out of reach", "internal fault"
+]  # fmt: skip
 
 
 @dataclass(frozen=True, slots=True)

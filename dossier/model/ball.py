@@ -138,13 +138,21 @@ def _evaluate_node(node: Expression, args: tuple[arb, ...], environment: Mapping
     return getattr(args[0], op)()
 
 
+WIDE: Final = 1024
+"""Inverse relative radius from which a square is taken from its ends: below, the plain product is as sharp."""
+
+
 def square(value: arb) -> arb:
-    """Tight square: arb's power and product lose the sign information of a ball around zero."""
-    result = value * value
+    """Tight square: for wide balls arb's product loses that both factors are the same."""
+    if not value.is_finite() or value.rad() * WIDE < abs(value.mid()) or value.rad() == 0:
+        return value * value
+    size = abs(value)
+    top = arb(size.upper())
+    upper = (top * top).upper()
     if value.contains(0):
-        top = abs(value).upper()
-        return arb(0).union((arb(top) * top).upper())
-    return result
+        return arb(0).union(upper)
+    bottom = arb(size.lower())
+    return (bottom * bottom).lower().union(upper)
 
 
 def _power(base: arb, exponent: Fraction) -> arb:

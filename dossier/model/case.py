@@ -130,6 +130,18 @@ class Criterion:
 
 
 @dataclass(frozen=True, slots=True)
+class Candidate:
+    """The engineer's own V over the offsets, whose symbols are the state names and stand for SI values, and its level.
+
+    `written` is the formula as typed, over offsets in the states' own units.
+    """
+
+    function: Expression
+    level: Fraction
+    written: str
+
+
+@dataclass(frozen=True, slots=True)
 class Assumption:
     """One row of the assumption register."""
 
@@ -164,6 +176,7 @@ class Case:
     criteria: tuple[Criterion, ...]
     assumptions: tuple[str, ...]
     set_values: tuple[tuple[str, str], ...] = ()
+    candidate: Candidate | None = None
 
     @property
     def identifier(self) -> str:

@@ -210,6 +210,20 @@ class CoverClaim(Claim):
 
 
 @dataclass(frozen=True, slots=True)
+class CandidateClaim(Claim):
+    """Kind ``candidate``: the engineer's own V, as the project file states it, at its own level, at nominal.
+
+    Either the part of {V <= level} in the box `around` (offsets) attracts and V exceeds the level on the faces of that
+    box; or `against` is an offset, joined to the equilibrium inside the set, at which V does not do what it should.
+    """
+
+    equilibrium: str
+    level: Fraction
+    around: Box | None
+    against: tuple[Fraction, ...]
+
+
+@dataclass(frozen=True, slots=True)
 class Crossing:
     """One real root W = w^2 (or one boundary point) with an isolating interval and the loop value there."""
 
@@ -246,6 +260,7 @@ KINDS: Mapping[str, type[Claim]] = {
     "gram": LyapunovClaim,
     "cells": CellsClaim,
     "cover": CoverClaim,
+    "candidate": CandidateClaim,
     "sturm": SturmClaim,
 }
 

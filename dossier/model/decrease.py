@@ -62,14 +62,8 @@ def bernstein_coefficients(
     shared by all coefficients is the sign of `polynomial`.  For degree 1 they are the vertex values.
     """
     places = [ring.names.index(n) for n in parameters.names]
-    scaled = polynomial
-    if places:
-        images = list(ring.context.gens())
-        for place, side in zip(places, parameters.intervals, strict=True):
-            images[place] = ring.constant(side.bounds[0]) + ring.constant(side.width) * ring.context.gen(place)
-        scaled = polynomial.compose(*images, ctx=ring.context)
-    # The zero polynomial has degree -1 in the library; it still has one coefficient, zero, which no strict sign passes.
-    degrees = [max(0, int(scaled.degrees()[place])) for place in places]
+    scaled = _on_unit_box(polynomial, ring, parameters)
+    degrees = _degrees(scaled, places)
     power_form: dict[Exponents, dict[Exponents, fmpq]] = {}
     for exponents, coefficient in scaled.to_dict().items():
         k = tuple(int(exponents[place]) for place in places)
@@ -88,7 +82,30 @@ def bernstein_coefficients(
         yield index, total
 
 
+def _on_unit_box(polynomial: fmpq_mpoly, ring: Ring, parameters: Box) -> fmpq_mpoly:
+    """The polynomial over t in [0, 1]."""
+    if not parameters.names:
+        return polynomial
+    images = list(ring.context.gens())
+    for name, side in parameters.items():
+        place = ring.names.index(name)
+        images[place] = ring.constant(side.bounds[0]) + ring.constant(side.width) * ring.context.gen(place)
+    return polynomial.compose(*images, ctx=ring.context)
+
+
+def _degrees(polynomial: fmpq_mpoly, places: list[int]) -> list[int]:
+    """Degrees in the generators at `places`.
+
+    The zero polynomial has degree -1 in the library; it still has one coefficient, zero, which no strict sign passes.
+    """
+    return [max(0, int(polynomial.degrees()[place])) for place in places]
+
+
 def bernstein_count(polynomial: fmpq_mpoly, ring: Ring, parameters: Box) -> int:
     """How many coefficients `bernstein_coefficients` yields."""
-    degrees = polynomial.degrees() if not polynomial.is_zero() else [0] * len(ring.names)
-    return prod(int(degrees[ring.names.index(n)]) + 1 for n in parameters.names)
+    if not any(side.is_point for side in parameters.intervals):
+        # The substitution keeps every degree; the common case needs no algebra.
+        scaled = polynomial
+    else:
+        scaled = _on_unit_box(polynomial, ring, parameters)
+    return prod(d + 1 for d in _degrees(scaled, [ring.names.index(n) for n in parameters.names]))

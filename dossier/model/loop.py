@@ -147,7 +147,15 @@ def model_data(case: Case) -> dict[str, object]:
         "limits": {n: _sides(i) for n, i in case.limits.items()},
         "fixed": None if case.fixed is None else [str(v) for v in case.fixed],
         "near": None if case.near is None else [str(v) for v in case.near],
+        **_candidate_data(case),
     }
+
+
+def _candidate_data(case: Case) -> dict[str, object]:
+    """The engineer's V, which is part of what certificates are about where there is one."""
+    if case.candidate is None:
+        return {}
+    return {"candidate": {"function": to_data(case.candidate.function), "level": str(case.candidate.level)}}
 
 
 def _sides(interval: Interval) -> list[str | None]:

@@ -53,6 +53,10 @@ def exact(figure: str) -> Fraction:
     return value
 
 
+_MORE_DIGITS: Final = re.compile(r"[0-9]{3}([ ][0-9]{3})*(\.[0-9]*)?([ ]*[A-Za-z%].*)?")
+"""What follows the first group of a number that is written in groups of three digits."""
+
+
 def split(text: str) -> Written:
     """The number that `text` begins with and the unit text after it.
 
@@ -66,6 +70,8 @@ def split(text: str) -> Written:
     if rest[:1] in ("_", ",", ".", "'", ":"):
         raise NumberError(f"{body} is not a number", _advice(body))
     unit = rest.strip()
+    if _MORE_DIGITS.fullmatch(unit):
+        raise NumberError(f"{body} is not one number", "write the digits without spaces between them")
     return Written(found[0], exact(found[0]), unit, text.find(unit, found.end()) if unit else len(text))
 
 

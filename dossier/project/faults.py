@@ -63,14 +63,16 @@ class Ledger:
             text = str(where) if text is None else text
         else:
             line, column = where.line, where.column
-        self.add(line, column, message, text or "", expected, hint)
+        self.add(line, column, message, text or "", expected, hint, where.file)
 
-    def add(self, line: int, column: int, message: str, text: str, expected: str, hint: str) -> None:
-        """Add a fault, once."""
+    def add(
+        self, line: int, column: int, message: str, text: str, expected: str, hint: str, file: str = ""
+    ) -> None:  # fmt: skip
+        """Add a fault, once; `file` is one that the project includes."""
         shown = " ".join(text.split())
         if len(shown) > LONGEST_EXCERPT:
             shown = shown[: LONGEST_EXCERPT - 1] + "…"
-        found = Fault(self.file, line, column, message, shown, expected, hint or GENERAL_HINT)
+        found = Fault(file or self.file, line, column, message, shown, expected, hint or GENERAL_HINT)
         if found not in self._told:
             self._told.add(found)
             self.faults.append(found)
@@ -80,13 +82,13 @@ class Ledger:
         if where.is_absent:
             return
         line, column = where.place(offset)
-        text = f"{self.file}:{line}:{column}: {message}"
+        text = f"{where.file or self.file}:{line}:{column}: {message}"
         if text not in self.warnings:
             self.warnings.append(text)
 
     def in_order(self) -> tuple[Fault, ...]:
-        """All faults by position."""
-        return tuple(sorted(self.faults, key=lambda f: (f.line, f.column, f.message)))
+        """All faults by position, those of the project file first."""
+        return tuple(sorted(self.faults, key=lambda f: (f.file != self.file, f.file, f.line, f.column, f.message)))
 
 
 NOTHING_CLOSE: Final = "no known name is close: check the spelling, or declare it"

@@ -268,7 +268,9 @@ class _Parser:
 
     def close(self, opened: _Token) -> None:
         if self.token.kind == "end":
-            raise FormulaError("the bracket is not closed", opened.start, len(opened.text), ")")
+            raise FormulaError(
+                "the bracket is not closed", opened.start, len(opened.text), ")", "add the closing bracket"
+            )
         if not self.next_is(")"):
             raise self.unexpected(self.token)
         self.take()
@@ -301,7 +303,7 @@ class _Parser:
         if len(arguments) != count:
             usage = "sat(x, lo, hi)" if token.text == SATURATION else f"{token.text}(x)"
             message = f"{token.text} takes {count} argument{'s' if count > 1 else ''}, not {len(arguments)}"
-            raise FormulaError(message, token.start, len(token.text), usage)
+            raise FormulaError(message, token.start, len(token.text), usage, f"write {usage}")
         return self.keep(Expression(token.text, tuple(arguments)), token.start)
 
 

@@ -31,11 +31,14 @@ class Text(str):
     line: int
     column: int
     style: str
+    file: str = ""
+    """The file it stands in, empty for the project file itself."""
 
     @classmethod
-    def of(cls, node: yaml.ScalarNode, source: str) -> Text:
+    def of(cls, node: yaml.ScalarNode, source: str, file: str = "") -> Text:
         """The text of a scalar node of `source`."""
         text = cls(node.value)
+        text.file = file
         text.source, text.start, text.end = source, node.start_mark.index, node.end_mark.index
         text.line, text.column, text.style = node.start_mark.line + 1, node.start_mark.column + 1, node.style or ""
         return text
@@ -89,6 +92,7 @@ class Table(dict[Text, Any]):
     line: int = 1
     column: int = 1
     is_absent: bool = False
+    file: str = ""
 
     def key(self, name: str) -> Text | None:
         """The key equal to `name` as it stands in the file."""
@@ -101,6 +105,7 @@ class Items(list[Any]):
     line: int = 1
     column: int = 1
     is_absent: bool = False
+    file: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -142,8 +147,8 @@ class _Composer(yaml.BaseLoader):
             self.depth -= 1
 
 
-def compose(source: str) -> tuple[Table | None, tuple[Trouble, ...]]:
-    """The top table of one YAML document, with every trouble found.
+def compose(source: str, file: str = "") -> tuple[Table | None, tuple[Trouble, ...]]:
+    """The top table of one YAML document, with every trouble found; `file` is noted in everything it holds.
 
     A trouble of the YAML syntax ends the reading: the table is then None.
     """
@@ -159,7 +164,7 @@ def compose(source: str) -> tuple[Table | None, tuple[Trouble, ...]]:
         return None, (
             Trouble(1, 1, "", "the file holds no table", "keys such as dossier, document, models", "see the format"),
         )
-    builder = _Builder(source)
+    builder = _Builder(source, file)
     try:
         return builder.table(root), tuple(builder.troubles)
     except _TroubleError as error:
@@ -197,8 +202,8 @@ def _character_trouble(error: yaml.YAMLError, source: str) -> Trouble:
 class _Builder:
     """Turns nodes into tables, lists and texts; refuses tags, repeated keys and runaway aliases."""
 
-    def __init__(self, source: str) -> None:
-        self.source = source
+    def __init__(self, source: str, file: str) -> None:
+        self.source, self.file = source, file
         self.troubles: list[Trouble] = []
         self.count = 0
         self.open: set[int] = set()
@@ -206,6 +211,7 @@ class _Builder:
     def table(self, node: yaml.MappingNode) -> Table:
         """The mapping `node`."""
         result = Table()
+        result.file = self.file
         result.line, result.column = node.start_mark.line + 1, node.start_mark.column + 1
         for key_node, value_node in node.value:
             if not isinstance(key_node, yaml.ScalarNode):
@@ -242,12 +248,13 @@ class _Builder:
 
     def _items(self, node: yaml.Node) -> Items:
         result = Items(self._value(v) for v in node.value)
+        result.file = self.file
         result.line, result.column = node.start_mark.line + 1, node.start_mark.column + 1
         return result
 
     def _text(self, node: yaml.ScalarNode) -> Text:
         self._refuse_tag(node)
-        return Text.of(node, self.source)
+        return Text.of(node, self.source, self.file)
 
     def _refuse_tag(self, node: yaml.Node) -> None:
         usual = {

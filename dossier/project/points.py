@@ -8,6 +8,7 @@ from fractions import Fraction
 
 from dossier.model.case import Case, Quantity, value_of
 from dossier.model.region import UNBOUNDED, Box, Interval
+from dossier.project.candidate import read_candidate
 from dossier.project.conditions import check_conditions
 from dossier.project.criteria import PointContext, read_criteria, read_region
 from dossier.project.dimensions import Checked
@@ -54,10 +55,14 @@ class _PointReader:
         region = Box.from_mapping(states, self._offsets(entry.region, "region"))
         limits = Box.from_mapping(states, self._offsets(entry.limits, "limits"))
         search = self._search(at or near, region, limits)
+        candidate = read_candidate(entry.candidate, self.reading, self.ledger)
         check_names([(n, "criterion") for n in entry.criteria], self.ledger, in_formulas=False)
         check_criterion_names(entry.criteria, self.ledger)
         if not entry.criteria and not (isinstance(entry.criteria, Table) and entry.criteria.is_absent):
-            self.ledger.fault(self.name, "no criterion is asked for", expected="at least one criterion")
+            self.ledger.fault(
+                self.name, "no criterion is asked for", expected="at least one criterion",
+                hint="add one, such as criteria: {C1: {claim: asymptotic_stability}}",
+            )  # fmt: skip
         criteria = read_criteria(PointContext(self.reading, parameters, entry, self.ledger))
         model = self.reading.model
         if not entry.meaning:
@@ -79,7 +84,7 @@ class _PointReader:
         return Case(
             str(self.name), str(entry.meaning or ""), replace(model, parameters=tuple(known.values())),
             at, near, none_expected, search, region, limits, criteria, covering,
-            tuple((str(n), _written(v)) for n, v in (entry.set or {}).items()),
+            tuple((str(n), _written(v)) for n, v in (entry.set or {}).items()), candidate,
         )  # fmt: skip
 
     def _parameters(self) -> dict[str, ParameterReading | None]:

@@ -88,14 +88,14 @@ def _unit_of(text: Text, written: Written, meaning: Meaning, ledger: Ledger) -> 
             hint="differences, offsets and tolerances take K", offset=written.offset,
         )  # fmt: skip
         return None
-    if unit.is_decibel != declared.is_decibel or unit.dimension != declared.dimension:
-        _report_dimension(text, written, unit, declared, ledger)
-        return None
-    if unit.is_percent and not (declared.is_percent or declared.text == "1"):
+    if unit.is_percent and not (declared.is_percent or declared.is_decibel or declared.text == "1"):
         ledger.fault(
             text, "a percentage is a ratio", text=written.unit, expected=f"a quantity in {declared.text}",
             hint=f"write it in {declared.text}, or give a reserve a criterion of its own", offset=written.offset,
         )  # fmt: skip
+        return None
+    if unit.is_decibel != declared.is_decibel or unit.dimension != declared.dimension:
+        _report_dimension(text, written, unit, declared, ledger)
         return None
     return unit
 
@@ -183,7 +183,7 @@ def read_sides(
         if name not in units:
             ledger.fault(
                 name, f"{name} is no state, so it has no {what}", expected="a state: " + ", ".join(units),
-                hint=suggestion(name, units),
+                hint=suggestion(name, units, "only states have one: write a state of the model"),
             )  # fmt: skip
             continue
         interval = read_interval(sides, Meaning(units[name], difference), ledger, direction)

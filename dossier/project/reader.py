@@ -6,17 +6,14 @@ import hashlib
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Final
 
 from dossier.model.case import Assumption, Case
 from dossier.model.dossier import Document
 from dossier.project.build import build_project
 from dossier.project.faults import Fault, Ledger
+from dossier.project.includes import LARGEST_FILE, decoded, include_models, read_limited
 from dossier.project.located import Text, compose
 from dossier.project.shape import shape
-
-LARGEST_FILE: Final = 500_000
-"""Bytes of a project file; a large one has a tenth of this."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -59,15 +56,16 @@ def read_project(path: Path) -> Project | Faults:
     table, troubles = compose(text)
     for t in troubles:
         ledger.add(t.line, t.column, t.message, t.text, t.expected, t.hint)
+    included = () if table is None else include_models(table, path.parent, path.name, ledger)
     entry = None if table is None else shape(table, ledger)
     if entry is None:
         return Faults(ledger.in_order())
     document, assumptions, cases = build_project(entry, ledger)
     if ledger.faults:
         return Faults(ledger.in_order())
-    files = ((path.name, content),)
+    files = ((path.name, content), *included)
     return Project(
-        document, assumptions, cases, tuple(ledger.warnings), files, hashlib.sha256(content).hexdigest(),
+        document, assumptions, cases, tuple(ledger.warnings), files, _fingerprint(files),
         {str(n): _guess(p.equilibrium.near) for n, p in entry.operating_points.items() if p.equilibrium.near},
     )  # fmt: skip
 
@@ -77,30 +75,31 @@ def _guess(near: Mapping[Text, Text]) -> Guess:
     return Guess(first.line, first.column, ", ".join(f"{n}: {v}" for n, v in near.items()))
 
 
+def _fingerprint(files: tuple[tuple[str, bytes], ...]) -> str:
+    """SHA-256 of the project file; with includes, of the list of all names and their hashes."""
+    hashes = [(name, hashlib.sha256(content).hexdigest()) for name, content in files]
+    if len(hashes) == 1:
+        return hashes[0][1]
+    return hashlib.sha256("".join(f"{digest}  {name}\n" for name, digest in hashes).encode()).hexdigest()
+
+
 def _content(path: Path, ledger: Ledger) -> bytes | None:
-    try:
-        size = path.stat().st_size
-        if size <= LARGEST_FILE:
-            return path.read_bytes()
-    except OSError as error:
-        reason = (error.strerror or "not readable").lower()
-        ledger.add(1, 1, f"the file cannot be read: {reason}", path.name, "a project file", "check the path")
-        return None
-    ledger.add(
-        1, 1, f"the file has {size} bytes", path.name, f"at most {LARGEST_FILE} bytes", "split it into several projects"
-    )  # fmt: skip
+    content = read_limited(path, LARGEST_FILE)
+    if isinstance(content, bytes):
+        return content
+    if isinstance(content, int):
+        ledger.add(
+            1, 1, f"the file has {content} bytes", path.name, f"at most {LARGEST_FILE} bytes",
+            "split it into several projects",
+        )  # fmt: skip
+    else:
+        ledger.add(1, 1, f"the file cannot be read: {content}", path.name, "a project file", "check the path")
     return None
 
 
 def _decoded(content: bytes, ledger: Ledger) -> str | None:
-    try:
-        return content.decode("utf-8-sig")
-    except UnicodeDecodeError as error:
-        before = content[: error.start].decode("utf-8", "replace")
-        column = len(before) - (before.rfind("\n") + 1) + 1
-        offending = content[error.start : error.end].hex(" ")
-        ledger.add(
-            before.count("\n") + 1, column, "the file is not UTF-8 text", f"byte {offending}", "UTF-8 text",
-            "save the file as UTF-8",
-        )  # fmt: skip
-        return None
+    text = decoded(content)
+    if isinstance(text, str):
+        return text
+    ledger.add(text.line, text.column, text.message, text.text, text.expected, text.hint)
+    return None

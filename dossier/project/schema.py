@@ -21,11 +21,6 @@ TIMES: Final[tuple[str, ...]] = get_args(Time)
 ROLES: Final[tuple[Role, ...]] = get_args(Role)
 SCOPES: Final = ("nominal", "tolerances")
 SIGNATURES: Final = ("prepared", "checked", "independently_reviewed", "approved", "accepted")
-RESERVED: Final = {
-    "include": "write the models into this file",
-    "candidate": "remove it; a function is searched for",
-}
-"""Fields of the format that this version refuses, with what to do instead."""
 CLAIMS: Final = (
     "existence", "equilibria_listed", "equilibrium_value", "asymptotic_stability", "exponential_stability",
     "attraction", "global_attraction", "limits_kept", "excursion", "decay_rate", "damping_ratio", "contraction",
@@ -76,6 +71,7 @@ def _keep(kind: type) -> Any:
         checked = handler(value)
         result = kind(checked)
         result.line, result.column, result.is_absent = value.line, value.column, value.is_absent
+        result.file = value.file
         return result
 
     def schema(source: Any, handler: Any) -> core_schema.CoreSchema:
@@ -223,6 +219,13 @@ class EquilibriumEntry(Entry):
     none_expected: Flag | None = Field(None, description="true: no equilibrium is expected")
 
 
+class CandidateEntry(Entry):
+    """A Lyapunov function of the engineer's own."""
+
+    function: Plain = Field(description="V of the offsets: a formula in the states, as numbers in their units")
+    level: Plain = Field(description="the set is V <= level; a plain number")
+
+
 class CriterionEntry(Entry):
     """What is asked for."""
 
@@ -257,6 +260,7 @@ class PointEntry(Entry):
     search: Sides | None = Field(None, description="where all equilibria are to be listed (absolute)")
     region: Sides | None = Field(None, description="starts, as offsets from the equilibrium")
     limits: Sides | None = Field(None, description="offsets that no motion from the region may leave")
+    candidate: CandidateEntry | None = Field(None, description="the engineer's own V and level, judged as given")
     criteria: Annotated[dict[Plain, CriterionEntry], _keep(Table)] = Field(description="what is asked for")
 
 
@@ -264,6 +268,7 @@ class ProjectEntry(Entry):
     """A project file."""
 
     dossier: Annotated[Text, _choice(FORMAT)] = Field(description="format of the file")
+    include: Words | None = Field(None, description="files in this folder that hold further models")
     document: DocumentEntry = Field(description="title-block data")
     assumptions: Annotated[dict[Plain, AssumptionEntry], _keep(Table)] | None = Field(
         None, description="the assumption register"

@@ -13,7 +13,7 @@ from pydantic_core import ErrorDetails
 
 from dossier.project.faults import Ledger, listed, suggestion
 from dossier.project.located import Items, Table, Text
-from dossier.project.schema import RESERVED, EquilibriumEntry, ProjectEntry
+from dossier.project.schema import FORMAT, EquilibriumEntry, ProjectEntry
 
 MOST_ROUNDS: Final = 20
 """Repairs go one level deeper per round; the format has eight levels."""
@@ -32,8 +32,9 @@ def shape(table: Table, ledger: Ledger) -> ProjectEntry | None:
     return None
 
 
-def _misplaced(line: int, column: int, word: str) -> Text:
+def _misplaced(line: int, column: int, word: str, file: str = "") -> Text:
     text = Text(word)
+    text.file = file
     text.source, text.start, text.end, text.style = "", 0, 0, ""
     text.line, text.column = line, column
     return text
@@ -72,13 +73,12 @@ class _Repair:
     def _unknown(self, holder: Any, name: str, place: tuple[int | str, ...]) -> None:
         key = holder.key(name)
         fields = sorted(_fields_at(place[:-1]))
-        hint = RESERVED.get(name) or suggestion(name, fields)
-        message = f"{name} is not supported by this version" if name in RESERVED else f"{name} is not a field here"
-        self.ledger.fault(key, message, expected="one of " + listed(fields), hint=hint)
+        hint = suggestion(name, fields)
+        self.ledger.fault(key, f"{name} is not a field here", expected="one of " + listed(fields), hint=hint)
         value = holder.pop(key)
         for field in fields:
             if hint == f"did you mean {field}?" and field not in holder:
-                holder[_misplaced(key.line, key.column, field)] = value
+                holder[_misplaced(key.line, key.column, field, key.file)] = value
                 self.missing.discard((*place[:-1], field))
 
     def _absent(self, holder: Any, name: str, place: tuple[int | str, ...]) -> None:
@@ -90,7 +90,7 @@ class _Repair:
                 where, f"the field {name} is missing", text=str(where) if isinstance(where, Text) else "",
                 expected=f"{name}: {_description(place)}", hint=f"add {name}",
             )  # fmt: skip
-        holder[_misplaced(holder.line, holder.column, name)] = Text.absent(holder.line, holder.column)
+        holder[_misplaced(holder.line, holder.column, name, holder.file)] = Text.absent(holder.line, holder.column)
 
     def _key_of(self, path: Sequence[int | str]) -> Text | None:
         parts = [p for p in path if p not in _UNION_TAGS]
@@ -124,6 +124,7 @@ class _Repair:
         else:
             return nothing
         result.line, result.column, result.is_absent = value.line, value.column, True
+        result.file = value.file
         return result
 
 
@@ -142,6 +143,8 @@ def _wanted(error: ErrorDetails, value: Any) -> tuple[str, str]:
     kind = error["type"]
     if kind == "choice":
         values = error.get("ctx", {})["choices"]
+        if values == (FORMAT,):
+            return f"dossier: {FORMAT}", "this version reads this format only; a later format needs a later version"
         return "one of " + ", ".join(values), suggestion(str(value), values)
     if kind == "text_expected":
         return "one value", "write it on one line, in quotes where it holds a colon or bracket"

@@ -95,6 +95,7 @@ ENDING_WORDS: Final = {
     "infeasible": "reported infeasible by the solver at this setting",
     "numerical failure": "numerical failure",
     "budget spent": "work budget spent",
+    "internal fault": "fault of the program",
     "out of reach": "out of this method’s reach",
 }
 

@@ -47,9 +47,9 @@ FEW: Final = 4
 """Corners tried, those before which the continuation ends first."""
 PER_CENT: Final = 100
 """Shares are whole per cents, so that the combination printed is short."""
-GAPS: Final = (0.01, 0.05, 0.1, 0.001)
+GAPS: Final = (0.01, 0.05, 0.1)
 """Shares of the way before and after the end between which it is enclosed."""
-SIZES: Final = tuple(Fraction(1, 2**k) for k in (1, 0, 3, 5))
+SIZES: Final = tuple(Fraction(2) ** k for k in (-1, 0, 1, 2, 3, 4, -3, -5))
 """Half widths of the box about the end, in reaches of the states."""
 BEND: Final = 1e-3
 """Weight of the plain movement beside its bend, so that a straight branch too is cut where it moves most."""

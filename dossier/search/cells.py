@@ -24,6 +24,9 @@ from dossier.search.goal import Goal
 from dossier.search.offsets import ScaledLoop
 from dossier.search.quadratic import Verify, seek_on_cell
 
+UNEVEN: Final = 4
+"""Cells may be so many times smaller than the budget's even cells; where those are too large still, it ends there."""
+
 Where = Callable[[Box], Equilibrium | None]
 GoalAt = Callable[[Equilibrium, Box | None], Goal]
 
@@ -62,6 +65,9 @@ def seek_cells(
                 done.append(claim)
                 continue
             why = tried[-1].remark if tried else why
+        if _share(box, whole) * effort.cells * UNEVEN < 1:
+            why = f"cells of {float(_share(box, whole)):.2g} of the box are still too large; {why}"
+            break
         halves = _halves(loop, box, whole, free)
         if halves is None or len(done) + len(waiting) + 2 > effort.cells:
             why = f"the budget of cells is spent; {why}" if halves is not None else why

@@ -46,11 +46,11 @@ class _Family:
     equilibrium: Equilibrium
     over: Scope
     whole: LinearForms | str
-    where: Where
+    where: Where | None
 
     def on(self, box: Box) -> LinearForms | str:
         """Forms for `box`, a part of the whole: derived again where they are sharper there."""
-        if self.over != NOMINAL and not self.equilibrium.fixed_for_all:
+        if self.over != NOMINAL and not self.equilibrium.fixed_for_all and self.where is not None:
             place = self.where(box)
             if place is None:
                 return "it is not proved where the equilibrium of a cell lies"
@@ -81,12 +81,12 @@ def seek_matrix(
     effort: Effort,
     suffix: str,
     verify: VerifyCell,
-    where: Where,
+    where: Where | None = None,
 ) -> tuple[tuple[Attempt, ...], MatrixClaim | None]:
     """A claim whose every cell `verify` accepts, or None with the reason; `where` tells of a moving equilibrium."""
     method = f"common quadratic function for the linear part ({region}, level {float(level):.6g})"
     subject = f"{case.name}.{suffix}"
-    moves = over != NOMINAL and not equilibrium.fixed_for_all
+    moves = over != NOMINAL and not equilibrium.fixed_for_all and where is not None
     forms = "" if moves else linear_forms(case, equilibrium, over)
     box = Box((), ()) if over == NOMINAL else spread_box(case)
     if isinstance(forms, str) and not box.names:

@@ -191,6 +191,23 @@ def largest_level(
     return (attempt,), proved.claim
 
 
+def prove_given(
+    case: Case, equilibrium: Equilibrium, over: Scope, function: Function, level: Fraction, effort: Effort,
+    suffix: str, verify: Verify,
+) -> tuple[Attempt, LyapunovClaim | None]:  # fmt: skip
+    """The engineer's own quadratic V at exactly its level, by Gram matrices."""
+    task = _task(case, equilibrium, over, Goal(case.region, ()), effort, suffix, verify)
+    method = f"the engineer's own V and level, Gram matrices, {over}"
+    if isinstance(task, Attempt):
+        return replace(task, subject=case.name, method=method), None
+    if np.linalg.eigvalsh(scaled_matrix(function, task.loop.scales))[0] <= 0:
+        return Attempt(case.name, method, "no candidate", "V is not positive definite"), None
+    claim = prove(task, function, level, "given")
+    if isinstance(claim, NoWitness):
+        return Attempt(case.name, method, "no candidate", claim.text), None
+    return Attempt(case.name, method, "found", "proved as given"), claim
+
+
 def _task(
     case: Case, equilibrium: Equilibrium, over: Scope, goal: Goal, effort: Effort, suffix: str, verify: Verify,
     cell: Box | None = None, room: Fraction = ROOMS[0],

@@ -40,7 +40,7 @@ SEEN_BY = {
     "shutil": ("dossier/evidence/store.py",),
     "time": ("dossier/evidence/provenance.py", "dossier/search/conic.py"),
 }
-"""Libraries and where they may be imported; `time` in `conic` only fills the run log."""
+"""Libraries and where they may be imported; `time` in `conic` fills the run log and tells a solver that hangs."""
 
 NOWHERE = ("importlib.import_module", "__import__", "eval", "exec", "pickle", "random", "socket", "urllib.request")
 """What would hide an import, run text as code, depend on chance or reach for a network."""

@@ -37,7 +37,9 @@ def sought(case: Case) -> CellsClaim | None:
     def verify(claim) -> bool:
         return all(p.result == "proved" for p in set_premises(case, ORIGIN, claim, of_cell=True))
 
-    return seek_cells(case, ORIGIN, Goal(case.region, ()), EFFORTS["quick"], "V2-cells", verify)[1]
+    return seek_cells(
+        case, ORIGIN, lambda _: ORIGIN, lambda *_: Goal(case.region, ()), EFFORTS["quick"], "V2-cells", verify
+    )[1]
 
 
 @pytest.fixture(scope="module")

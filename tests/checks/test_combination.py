@@ -66,9 +66,20 @@ def test_what_is_no_combination_of_this_loop_shows_nothing(damage):
     assert finding.result != "proved" and not finding.facts
 
 
-def test_a_point_that_moves_with_the_parameters_shows_nothing():
-    case = oscillator()
-    finding = check_combination(case, replace(POINT, fixed_for_all=False), claim_at(case, a=BEYOND))
+def test_a_point_that_moves_is_followed_to_the_combination():
+    """x' = p - x - x^3 rests where p = x + x^3: at p = 2 in x = 1 with the slope -(1 + 3 x^2) = -4 (elementary)."""
+    case = with_spread(loop_case({"x": "p - x - x^3"}, {}, {"p": "0"}), p=(0, 10))
+    case = replace(case, near=(Fraction(0),))
+    finding = check_combination(case, equilibrium_at(0), claim_at(case, p=2))
+    assert (finding.result, finding.strength) == ("proved", "enclosed")
+    rate = finding.facts["decay rate"]
+    assert rate.lower <= 4 <= rate.upper and rate.upper - rate.lower < Fraction(1, 10**9)
+
+
+def test_a_point_that_ceases_to_exist_on_the_way_shows_nothing():
+    """x' = p - x^2 rests at -sqrt(p) and sqrt(p) for p >= 0 only (elementary)."""
+    case = with_spread(loop_case({"x": "p - x^2"}, {}, {"p": "1"}), p=(-1, 1))
+    finding = check_combination(case, equilibrium_at(1), claim_at(case, p=-1))
     assert finding.result != "proved" and not finding.facts
 
 

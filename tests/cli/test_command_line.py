@@ -210,13 +210,39 @@ def test_an_interruption_leaves_the_earlier_dossier_and_nothing_half_written(num
 def test_a_bug_of_the_program_is_told_from_a_fault_of_the_project(project):
     broken = (
         "import sys, dossier.pipeline as p\n"
-        "p.assess = lambda *a: 1/0\n"
+        "p.render = lambda *a: 1/0\n"
         "from dossier.cli import main; sys.exit(main(sys.argv[1:]))"
     )
     done = dossier("build", project, code=broken)
     assert done.returncode == 3
     assert "a fault of the program, not of your project" in done.stderr and "Nothing was concluded" in done.stderr
     assert not (project.parent / "out").exists()
+
+
+TWO_POINTS = TINY.replace("operating_points:\n", "operating_points:\n  other:\n    model: lag\n    meaning: again\n"
+    "    equilibrium: {at: {x: 0}}\n    criteria: {C1: {claim: asymptotic_stability}}\n")  # fmt: skip
+
+
+def test_a_bug_in_one_operating_point_does_not_lose_the_others(tmp_path):
+    (tmp_path / "project.yaml").write_text(TWO_POINTS, encoding="utf-8")
+    broken = (
+        "import sys, dossier.pipeline as p\n"
+        "sought = p.find_claims\n"
+        "def find(case, *rest):\n"
+        "    if case.name == 'other': raise IndexError('a bug')\n"
+        "    return sought(case, *rest)\n"
+        "p.find_claims = find\n"
+        "from dossier.cli import main; sys.exit(main(sys.argv[1:]))"
+    )
+    done = dossier("build", tmp_path / "project.yaml", code=broken)
+    assert done.returncode == 3 and "Traceback" not in done.stderr
+    record = json.loads((tmp_path / "out" / "record.json").read_text(encoding="utf-8"))
+    points = record["operating_points"]
+    assert points["rest"]["criteria"]["C1"]["verdict"] == "proved"
+    assert points["other"]["criteria"]["C1"]["verdict"] == "not established"
+    assert "IndexError: a bug" in " ".join(points["other"]["warnings"])
+    assert "IndexError: a bug" in (tmp_path / "out" / "dossier.html").read_text(encoding="utf-8")
+    assert dossier("recheck", tmp_path / "out").returncode == 0
 
 
 def test_a_full_disk_leaves_the_earlier_dossier(built, tmp_path):

@@ -201,9 +201,12 @@ def test_a_range_that_reaches_beyond_the_stability_limit_is_refuted_by_its_far_e
     assert outcome.verdict == "refuted" and outcome.counter_example["combination"] == "K = 1387"
 
 
-def test_a_range_in_which_a_moving_equilibrium_loses_its_stability_is_not_proved():
+def test_a_range_in_which_a_moving_equilibrium_loses_its_stability_is_refuted():
     # C. Sparrow 1982 (from memory): 470/19 = 24.7368 lies in [24.7, 24.8].
-    assert verdicts("three_states", "lorenz_crossing") == {"C1": "not established"}
+    (outcome,) = point("three_states", "lorenz_crossing").outcomes
+    assert outcome.verdict == "refuted"
+    r = Fraction(outcome.counter_example["combination"].removeprefix("rho = ").removeprefix("≈ "))
+    assert Fraction(470, 19) < r <= Fraction("24.8")
 
 
 def near(enclosure: tuple[Fraction, Fraction], known: float, tolerance: float) -> bool:
@@ -244,3 +247,38 @@ def test_a_proved_set_of_hahns_system_lies_in_the_basin():
     for claim in sets:
         a, twice_b, c = (float(claim.function.get(e, 0)) for e in ((2, 0), (1, 1), (0, 2)))
         assert float(claim.level) / (2 * math.sqrt(a * c) + twice_b) < 1
+
+
+GIVEN = {
+    # B08: Khalil proves c < 9/8; the set is bounded up to 1.171875 = max over x1 of 5/8 x1^2 - x1^4/12 (elementary).
+    "soft_spring_below": "proved",
+    "soft_spring_above": None,
+    # B12: V first stops falling at 0.2448629 (own computation; the equilibrium is irrational).
+    "bistable_below": "proved",
+    "bistable_above": "refuted",
+    # B13: V' = -D v^2 is zero wherever nothing moves: no strict Lyapunov function (Kundur 1994, chapter 13).
+    "swing_energy": "refuted",
+    # C01: for r < 1, V' = -2 s (r x^2 - 2 r x y + y^2 + b z^2) is negative everywhere.
+    "convection_wide": "proved",
+    # C04: V first stops falling at 4.918758420 (own exact computation).
+    "three_below": "proved",
+    "three_above": "refuted",
+    # D04, D05: printed functions; V' is negative everywhere but at the origin.
+    "rational_printed": "proved",
+    "thesis_printed": "proved",
+}
+
+
+@pytest.mark.parametrize("name", GIVEN)
+def test_a_published_function_is_judged_as_given(name):
+    found = [f for f in point("given", name).findings if f.subject == f"{name}.V-given" and f.is_rigorous]
+    results = {f.result for f in found} - {"undecided"}
+    assert results == ({GIVEN[name]} if GIVEN[name] else set())
+
+
+@pytest.mark.parametrize(
+    "name", ["bistable_below", "convection_wide", "three_below", "rational_printed", "thesis_printed"]
+)
+def test_a_function_that_was_proved_as_given_carries_the_criterion(name):
+    outcome = next(o for o in point("given", name).outcomes if o.identifier.endswith(".C1"))
+    assert (outcome.verdict, outcome.evidence) == ("proved", (f"{name}.V-given",))

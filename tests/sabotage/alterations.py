@@ -111,6 +111,8 @@ def widened_region(file: Data) -> Iterator[Data]:
     """Search box, uniqueness box, parameter box, isolating interval: one side further out."""
     claim = file["claim"]
     paths = [("search", "sides", 0), ("solutions", 0, "uniqueness", "sides", 0), ("cells", 0, "parameters", "sides", 0)]
+    if claim.get("around"):
+        paths.append(("around", "sides", 0))
     if claim.get("parameters", {}).get("sides"):
         paths.append(("parameters", "sides", 0))
     for path in paths:

@@ -25,13 +25,17 @@ KINDS = {
     "sturm": ("rest", "M-u"),
     "cover": ("capped", "V2-nominal"),
     "cells": ("swing", "V2-cells"),
+    "branch": ("loaded", "B1"),
+    "absence": ("overloaded", "N1"),
+    "end": ("overloaded", "N2"),
+    "candidate": ("given", "V-given"),
 }
 """One certificate of every kind: its operating point and its own name there."""
 
 NOT_APPLICABLE = {
     *(("widened_region", k) for k in ("routh", "cover", "combination")),
-    *(("level", k) for k in ("combination", "cells")),
-    ("reordered_monomials", "combination"),
+    *(("level", k) for k in ("combination", "cells", "branch", "end")),
+    *(("reordered_monomials", k) for k in ("combination", "branch", "candidate", "end")),
 }
 """Certificates that state no region of their own; a combination has no level and no monomials either."""
 
@@ -66,6 +70,10 @@ WITNESSES = {
     "sturm": {"gain_crossings", "phase_crossings", "peak_candidates"},
     "cover": {"boxes"},
     "cells": {"cells"},
+    "branch": {"cells"},
+    "absence": {"boxes"},
+    "end": {"around", "share"},
+    "candidate": {"around"},
 }
 """Parts of a claim that only help to prove it: another uniqueness box, Gram matrix or interval may prove the same."""
 
@@ -113,6 +121,20 @@ FORGERIES = {
     "a combination outside of the tolerances": (
         "rest", "W-C1", lambda c: c.update(values={"k1": "1000", "m": "1"}), "C4",
     ),
+    "a list that leaves the nearest equilibrium out": (
+        "upright", "R1", lambda c: c.update(solutions=[], complete=False), "C1",
+    ),
+    "a cell of the branch left out": ("loaded", "B1", lambda c: c["cells"].clear(), "C1"),
+    "another equilibrium followed": (
+        "loaded", "B1", lambda c: [cell["middle"].__setitem__(0, "13/5") for cell in c["cells"]], "C1",
+    ),
+    "the end of the branch before it ends": (
+        "overloaded", "N2", lambda c: c.update(values={"t": "7/2"}), "C2",
+    ),
+    "a box about the end that holds nothing of it": (
+        "overloaded", "N2", lambda c: c["around"]["sides"].__setitem__(0, ["-1", "-1/2"]), "C2",
+    ),
+    "an absence at another combination": ("overloaded", "N1", lambda c: c.update(values={"t": "1"}), "C1"),
     "a cell left out": ("swing", "V2-cells", lambda c: c["cells"].pop(), "C1"),
     "a cell that reaches less far": (
         "swing", "V2-cells", lambda c: c["cells"][0]["parameters"]["sides"][0].__setitem__(1, "21/4"), "C1",

@@ -6,17 +6,19 @@ from fractions import Fraction
 from typing import Final
 
 from dossier.checks.along import combinations_to_try, range_along, value_at
-from dossier.checks.boxes import range_over
+from dossier.checks.boxes import range_over, split_widest
 from dossier.checks.criteria.common import conclude, open_question, refute, refute_by_end, within
 from dossier.checks.criteria.region import quantity_of
 from dossier.checks.knowledge import Knowledge
 from dossier.checks.lyapunov import parameter_box
-from dossier.checks.movement import combination_text, words_of_values
+from dossier.checks.movement import Movement, combination_text, words_of_values
 from dossier.checks.path import place_at
 from dossier.checks.solutions import lies_in
 from dossier.model.affine import spread_box
+from dossier.model.ball import Ball
 from dossier.model.case import NOMINAL, Criterion, at_combination
 from dossier.model.equilibrium import Equilibrium
+from dossier.model.expression import Expression
 from dossier.model.figures import span
 from dossier.model.finding import Enclosure, Finding, Premise
 from dossier.model.region import Box, Interval
@@ -125,9 +127,9 @@ def _existence_over_tolerances(knowledge: Knowledge, criterion: Criterion) -> Fi
             knowledge, criterion, "E", found.statement, found.strength, (absence.identifier,), {"combination": where}
         )
     finding = knowledge.branch()
-    if finding is None or knowledge.movement is None:
+    if finding is None or knowledge.movement is None or not knowledge.movement.cells:
         return open_question(knowledge, criterion, _MOVES)
-    hulls = [alone.course.hull() for alone in knowledge.movement.cells or ()]
+    hulls = [alone.course.hull() for alone in knowledge.movement.cells]
     inside = all(lies_in(hull, knowledge.case.search) for hull in hulls)
     premise = Premise(
         "search", "the equilibrium stays in the search box", "proved" if inside else "undecided", "enclosed",
@@ -143,7 +145,7 @@ _MOVES: Final = "the equilibrium moves with the parameters, and its branch is no
 def _value(knowledge: Knowledge, criterion: Criterion) -> Finding:
     chosen = knowledge.chosen
     if chosen is None:
-        return open_question(knowledge, criterion, "the operating point has no proved equilibrium")
+        return open_question(knowledge, criterion, knowledge.why_no_equilibrium)
     if _over_spreads(knowledge, criterion) and not chosen.fixed_for_all:
         return _moving_value(knowledge, criterion, chosen)
     parameters = parameter_box(knowledge.case, criterion.over)
@@ -176,6 +178,30 @@ def _violated(knowledge: Knowledge, criterion: Criterion, chosen: Equilibrium, w
     )
 
 
+def _ranges(knowledge: Knowledge, criterion: Criterion, movement: Movement, quantity: Expression) -> list[Ball] | None:
+    """The quantity on the cells of the branch, which are halved where that may decide; None without an enclosure."""
+    case = knowledge.case
+    waiting = [a.course.parameters for a in movement.cells or ()]
+    balls: list[Ball] = []
+    while waiting:
+        cell = waiting.pop()
+        place = movement.on(cell)
+        ball = None if place is None else range_along(case, place, quantity)
+        open_ = ball is None or within(Enclosure(ball.lower, ball.upper, "SI"), criterion) is not True
+        halves = split_widest(cell, spread_box(case))
+        if open_ and halves is not None and len(balls) + len(waiting) + 2 <= VALUE_CELLS:
+            waiting.extend(halves)
+        elif ball is None:
+            return None
+        else:
+            balls.append(ball)
+    return balls
+
+
+VALUE_CELLS: Final = 128
+"""Cells on which a quantity at a moving equilibrium is enclosed."""
+
+
 def _moving_value(knowledge: Knowledge, criterion: Criterion, chosen: Equilibrium) -> Finding:
     """Over the cells of the branch; a corner of the box, or the nominal combination, may refute."""
     case, movement = knowledge.case, knowledge.movement
@@ -194,11 +220,10 @@ def _moving_value(knowledge: Knowledge, criterion: Criterion, chosen: Equilibriu
         if value is not None and within(value, criterion) is False:
             return _violated(knowledge, criterion, chosen, words_of_values(case, values), value)
     finding = knowledge.branch()
-    if finding is None or movement is None:
+    if finding is None or movement is None or not movement.cells:
         return open_question(knowledge, criterion, _MOVES)
-    balls = [range_along(case, chosen.along(a.course), quantity) for a in movement.cells or ()]
-    known = [b for b in balls if b is not None]
-    if len(known) < len(balls):
+    known = _ranges(knowledge, criterion, movement, quantity)
+    if known is None:
         return open_question(knowledge, criterion, "the quantity has no finite enclosure at the equilibrium")
     value = Enclosure(min(b.lower for b in known), max(b.upper for b in known), "SI")
     inside = within(value, criterion)

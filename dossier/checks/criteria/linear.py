@@ -51,7 +51,7 @@ def establish_linear(knowledge: Knowledge, criterion: Criterion) -> tuple[Findin
     """Findings for stability, ``decay_rate``, ``damping_ratio`` and ``contraction``."""
     equilibrium = knowledge.chosen
     if equilibrium is None:
-        return (open_question(knowledge, criterion, "the operating point has no proved equilibrium"),)
+        return (open_question(knowledge, criterion, knowledge.why_no_equilibrium),)
     if criterion.claim == "contraction" and knowledge.case.model.time != "sampled":
         return (set_aside(knowledge, criterion, "not applicable", "contraction per sample needs a sampled model"),)
     found = [
@@ -230,7 +230,9 @@ def _by_set(knowledge: Knowledge, criterion: Criterion) -> Iterator[Finding]:
     """A proved attractive set shows asymptotic stability, also where the linear part does not decide."""
     if criterion.claim != "asymptotic_stability":
         return
-    for claim, finding in (*knowledge.sets(criterion.over), *knowledge.cells()):
+    own = knowledge.candidate()
+    given = () if own is None or criterion.over != NOMINAL else (own,)
+    for claim, finding in (*knowledge.sets(criterion.over), *knowledge.cells(), *given):
         statement = "the equilibrium attracts a whole neighbourhood and is stable"
         premises = (knowledge.place, *finding.premises)
         yield conclude(knowledge, criterion, finding.theorem, statement, premises, (claim.identifier,))

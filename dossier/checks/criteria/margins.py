@@ -18,7 +18,7 @@ def margin_claim_id(knowledge: Knowledge, loop: str) -> str:
 def establish_margins(knowledge: Knowledge, criterion: Criterion) -> tuple[Finding, ...]:
     """Findings for ``gain_margin``, ``phase_margin``, ``delay_margin`` and ``peak_sensitivity``."""
     if knowledge.chosen is None:
-        return (open_question(knowledge, criterion, "the operating point has no proved equilibrium"),)
+        return (open_question(knowledge, criterion, knowledge.why_no_equilibrium),)
     evidence = margin_claim_id(knowledge, criterion.loop)
     margins = next((m for m in knowledge.margins if m.loop == criterion.loop), None)
     if margins is None:

@@ -6,6 +6,7 @@ from collections.abc import Iterator
 from fractions import Fraction
 
 from dossier.checks.boxes import range_over
+from dossier.checks.candidate import holds_region
 from dossier.checks.cells import merged
 from dossier.checks.combination import OUTSIDE, count_of, words_of
 from dossier.checks.criteria.common import (
@@ -19,7 +20,7 @@ from dossier.checks.criteria.common import (
 from dossier.checks.knowledge import Knowledge
 from dossier.checks.linear import routh_claim_id
 from dossier.checks.lyapunov import Ellipsoid, ellipsoid, parameter_box
-from dossier.checks.sets import bound_over_set, covered_scale, covers
+from dossier.checks.sets import RANGE_PIECES, bound_over_set, covered_scale, covers
 from dossier.model.case import NOMINAL, Criterion
 from dossier.model.claim import CellsClaim, CoverClaim, LyapunovClaim
 from dossier.model.equilibrium import Equilibrium
@@ -41,7 +42,7 @@ def establish_region(knowledge: Knowledge, criterion: Criterion) -> tuple[Findin
     """Findings for ``attraction``, ``limits_kept`` and ``excursion``."""
     equilibrium = knowledge.chosen
     if equilibrium is None:
-        return (open_question(knowledge, criterion, "the operating point has no proved equilibrium"),)
+        return (open_question(knowledge, criterion, knowledge.why_no_equilibrium),)
     region = region_of(knowledge, criterion)
     if not region.is_bounded:
         missing = ", ".join(n for n, i in region.items() if not i.is_bounded)
@@ -52,6 +53,7 @@ def establish_region(knowledge: Knowledge, criterion: Criterion) -> tuple[Findin
         if shape is not None:
             found.append(_by_set(knowledge, criterion, region, claim, finding, shape))
     found += [_by_cells(knowledge, criterion, region, claim, finding) for claim, finding in knowledge.cells()]
+    found += _by_candidate(knowledge, criterion, equilibrium, region)
     return tuple(found) or (
         open_question(knowledge, criterion, "no set was proved attractive for the scope asked for"),
     )
@@ -91,6 +93,62 @@ def _by_set(
         premises.append(premise)
         facts.update(more)
     return conclude(knowledge, criterion, theorem, statement, tuple(premises), (claim.identifier,), facts)
+
+
+def _by_candidate(
+    knowledge: Knowledge, criterion: Criterion, equilibrium: Equilibrium, region: Box
+) -> Iterator[Finding]:
+    """By the engineer's own V, which may be any formula: its set lies in a box, which bounds what is asked."""
+    case, known = knowledge.case, knowledge.candidate()
+    if known is None or case.candidate is None or criterion.over != NOMINAL:
+        return
+    claim, finding = known
+    if claim.around is None:
+        return
+    inside = holds_region(case, case.candidate, claim.around, region)
+    premises = [
+        knowledge.place,
+        Premise(
+            "a", "every start of the region lies in the proved set", "proved" if inside else "undecided", "enclosed",
+            evidence=claim.identifier,
+        ),
+        *finding.premises,
+    ]  # fmt: skip
+    sides = [
+        Interval(b.lower + i.bounds[0], b.upper + i.bounds[1])
+        for b, i in zip(equilibrium.state, claim.around.intervals, strict=True)
+    ]
+    parameters = parameter_box(case, NOMINAL)
+    place = Box((*case.model.state_names, *parameters.names), (*sides, *parameters.intervals))
+    theorem, facts = finding.theorem, dict[str, Enclosure]()
+    statement = "every motion from the region stays in the set, exists for all time and converges"
+    if criterion.claim == "limits_kept":
+        theorem, statement = "T9", "no motion from the region leaves the limits"
+        for name, limit in case.limits.items():
+            if limit != Interval(None, None):
+                kept = limit.contains(claim.around[name])
+                text = f"{name} stays within its limits on the set"
+                premises.append(_bounded(f"limit {name}", text, kept, claim.identifier))
+        for signal in case.model.signals:
+            if signal.limits != Interval(None, None):
+                ball = range_over(inline_signals(symbol(signal.name), case.model), place, RANGE_PIECES)
+                kept = ball is not None and signal.limits.contains(Interval(ball.lower, ball.upper))
+                text = f"the signal {signal.name} stays within its limits on the set"
+                premises.append(_bounded(f"limit {signal.name}", text, kept, claim.identifier))
+    elif criterion.claim == "excursion":
+        theorem = "T9"
+        statement = f"the quantity {criterion.of_written} stays within its bounds along every motion from the region"
+        ball = range_over(quantity_of(knowledge, criterion), place, RANGE_PIECES)
+        lower, upper = stated_bounds(criterion)
+        kept = ball is not None and (lower is None or ball.lower >= lower) and (upper is None or ball.upper <= upper)
+        premises.append(_bounded("bound", "the quantity stays within the stated bounds", kept, claim.identifier))
+        if ball is not None:
+            facts["bound"] = Enclosure(ball.lower, ball.upper, "SI")
+    yield conclude(knowledge, criterion, theorem, statement, tuple(premises), (claim.identifier,), facts)
+
+
+def _bounded(label: str, statement: str, shown: bool, evidence: str) -> Premise:
+    return Premise(label, statement, "proved" if shown else "undecided", "enclosed", "", evidence)
 
 
 def _by_cells(knowledge: Knowledge, criterion: Criterion, region: Box, claim: CellsClaim, finding: Finding) -> Finding:
