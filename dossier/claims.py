@@ -28,6 +28,7 @@ from dossier.model.attempt import Attempt
 from dossier.model.case import NOMINAL, Case, Criterion
 from dossier.model.claim import CellsClaim, Claim, CoverClaim, EndClaim, LyapunovClaim, RootsClaim, SpectralRegion
 from dossier.model.equilibrium import Equilibrium
+from dossier.model.expression import Expression
 from dossier.model.finding import Enclosure
 from dossier.model.region import Box
 from dossier.search.branch import seek_branch, seek_end
@@ -37,6 +38,7 @@ from dossier.search.cover import seek_cover_candidate
 from dossier.search.effort import Effort
 from dossier.search.equilibria import seed_equilibria
 from dossier.search.frequency import seek_crossings
+from dossier.search.goal import Goal
 from dossier.search.goals import (
     ABOUT_SPECTRUM,
     SetTask,
@@ -46,6 +48,7 @@ from dossier.search.goals import (
     spectral_tasks,
     stronger_levels,
 )
+from dossier.search.kinks import cells_of_case, kink_slabs, of_case, verified_for, without_kinks
 from dossier.search.linearisation import seek_matrix
 from dossier.search.offsets import half_width
 from dossier.search.quadratic import prove_given, seek_quadratic
@@ -53,6 +56,9 @@ from dossier.search.worst import seek_worst
 
 END_BOXES: Final = 20_000
 """Boxes per face or box in which a branch is shown to end: a case that needs more is next to a fold."""
+
+FEW_CELLS: Final = 8
+"""Cells that a stronger level than the one asked for may cost where the equilibrium moves."""
 
 Progress = Callable[[str, str], None]
 """Called with the operating point and the stage that begins."""
@@ -154,6 +160,7 @@ def _spectral_claims(case: Case, chosen: Equilibrium, movement: Movement, effort
         attempts += tried
         if claim is None:
             continue
+        few = 1 if chosen.fixed_for_all else min(FEW_CELLS, effort.cells)
         for level in stronger_levels(task, values):
             more, better = seek_matrix(
                 case,
@@ -161,7 +168,7 @@ def _spectral_claims(case: Case, chosen: Equilibrium, movement: Movement, effort
                 task.over,
                 task.region,
                 level,
-                replace(effort, cells=1),
+                replace(effort, cells=few),
                 task.suffix,
                 cell_holds,
                 movement.on,
@@ -225,33 +232,60 @@ def _set_claims(case: Case, chosen: Equilibrium, movement: Movement, effort: Eff
 def _seek_set(
     case: Case, chosen: Equilibrium, movement: Movement, task: SetTask, effort: Effort
 ) -> tuple[tuple[Attempt, ...], Sets]:
-    """A set by exact Gram matrices; where it misses the region, then cell by cell, or by intervals."""
+    """A set by exact Gram matrices; where it misses the region, then cell by cell, or by intervals.
+
+    A loop with kinks is first sought as if it had none, inside the slabs where that is true.
+    """
+    smooth = without_kinks(case, chosen)
     tried: tuple[Attempt, ...] = ()
-    found: tuple[LyapunovClaim, ...] = ()
-    whole = Box((), ()) if task.over == NOMINAL else spread_box(case)
-    place = movement.on(whole)
-    if place is not None:
-        tried, found = seek_quadratic(
-            case, place, task.over, task.goal_at(case, place, whole), effort, task.suffix,
-            lambda claim: check_lyapunov(case, chosen, claim, movement.on).result == "proved",
-        )  # fmt: skip
-    if any(_serves(case, c, task.goal.region) for c in found):
+    found: Sets = ()
+    for loop, distances in (smooth,) if smooth is not None else ():
+        tried, found = _seek_gram(case, loop, distances, chosen, movement, task, effort)
+    if not found:
+        more, found = _seek_gram(case, case, (), chosen, movement, task, effort)
+        tried = (*tried, *more)
+    if task.over != NOMINAL or any(_serves(case, c, task.goal.region) for c in found):
         return tried, found
-    if task.over != NOMINAL:
-        more, cells = seek_cells(
-            case, chosen, movement.on, lambda rest, cell: task.goal_at(case, rest, cell), effort,
-            f"{task.suffix}-cells",
-            lambda claim: all(
-                p.result == "proved" for p in set_premises(case, chosen, claim, movement.on, of_cell=True)
-            ),
-        )  # fmt: skip
-        return (*tried, *more), (*found, *(() if cells is None else (cells,)))
     suffix = f"{task.suffix}-boxes" if found else task.suffix
     more, cover = seek_cover_candidate(
         case, chosen, task.goal, effort, suffix,
         lambda claim: check_cover(case, chosen, claim, effort.boxes).result == "proved",
     )  # fmt: skip
     return (*tried, *more), (*found, *(() if cover is None else (cover,)))
+
+
+def _seek_gram(
+    case: Case, loop: Case, distances: tuple[Expression, ...], chosen: Equilibrium, movement: Movement, task: SetTask,
+    effort: Effort,
+) -> tuple[tuple[Attempt, ...], Sets]:  # fmt: skip
+    """Sets by Gram matrices for `loop`, which is `case` where all `distances` are positive."""
+
+    def goal_at(rest: Equilibrium, cell: Box | None) -> Goal:
+        goal = task.goal_at(case, rest, cell)
+        return replace(goal, slabs=(*goal.slabs, *kink_slabs(case, rest, distances, task.over, cell)))
+
+    tried: tuple[Attempt, ...] = ()
+    found: tuple[LyapunovClaim, ...] = ()
+    whole = Box((), ()) if task.over == NOMINAL else spread_box(case)
+    place = movement.on(whole)
+    if place is not None:
+        tried, found = seek_quadratic(
+            loop, place, task.over, goal_at(place, whole), effort, task.suffix,
+            verified_for(case, lambda claim: check_lyapunov(case, chosen, claim, movement.on).result == "proved"),
+        )  # fmt: skip
+        found = tuple(of_case(case, c) for c in found)
+    if task.over == NOMINAL or any(_serves(case, c, task.goal.region) for c in found):
+        return tried, found
+    more, cells = seek_cells(
+        loop, chosen, movement.on, goal_at, effort, f"{task.suffix}-cells",
+        verified_for(
+            case,
+            lambda claim: all(
+                p.result == "proved" for p in set_premises(case, chosen, claim, movement.on, of_cell=True)
+            ),
+        ),
+    )  # fmt: skip
+    return (*tried, *more), (*found, *(() if cells is None else (cells_of_case(case, cells),)))
 
 
 def _serves(case: Case, claim: LyapunovClaim | CoverClaim | CellsClaim, region: Box) -> bool:

@@ -61,17 +61,29 @@ def is_positive_semidefinite(matrix: Sequence[Sequence[Fraction]]) -> bool:
 def is_positive_definite_for_all(middle: Sequence[Sequence[Fraction]], radius: Sequence[Sequence[Fraction]]) -> bool:
     """Every symmetric matrix within `radius` of `middle`, entry by entry, is positive definite.
 
-    |x'E x| <= ||E|| |x|^2 and the spectral norm of a symmetric E is at most its largest absolute row sum,
-    so it is enough that `middle` minus that sum times the identity is positive definite.
+    |x'E x| <= sum |e_ij| (x_i^2 + x_j^2)/2, so it is enough that `middle` minus the diagonal matrix of the row sums of
+    |E| is positive definite.  Rows and columns are first brought to diagonal entries near one, as radii of badly scaled
+    matrices would drown the small ones: D M D with D > 0 is definite exactly when M is.
     """
-    if not is_symmetric(middle):
+    if not is_symmetric(middle) or any(middle[i][i] <= 0 for i in range(len(middle))):
         return False
+    factors = [_root_magnitude(middle[i][i]) for i in range(len(middle))]
+    scaled, reach = _congruent(middle, factors), _congruent(radius, factors)
     sums = [
-        sum(map(max, row, column), Fraction(0)) for row, column in zip(radius, zip(*radius, strict=True), strict=True)
+        sum(map(max, row, column), Fraction(0)) for row, column in zip(reach, zip(*reach, strict=True), strict=True)
     ]
-    reach = max(sums, default=Fraction(0))
-    shifted = [[v - reach if i == j else v for j, v in enumerate(row)] for i, row in enumerate(middle)]
+    shifted = [[v - sums[i] if i == j else v for j, v in enumerate(row)] for i, row in enumerate(scaled)]
     return is_positive_definite(shifted)
+
+
+def _root_magnitude(value: Fraction) -> Fraction:
+    """The inverse of a power of two within a factor of two or so of the square root of `value` > 0."""
+    return Fraction(2) ** ((value.denominator.bit_length() - value.numerator.bit_length()) // 2)
+
+
+def _congruent(matrix: Sequence[Sequence[Fraction]], factors: Sequence[Fraction]) -> list[list[Fraction]]:
+    """D M D with D = diag(factors)."""
+    return [[a * v * b for v, b in zip(row, factors, strict=True)] for row, a in zip(matrix, factors, strict=True)]
 
 
 def inverse(matrix: Sequence[Sequence[Fraction]]) -> Matrix | None:

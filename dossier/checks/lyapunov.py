@@ -19,17 +19,18 @@ from dossier.checks.exact import (
     is_positive_semidefinite,
     is_well_formed,
     multiply,
+    quadratic_form,
     root_above,
     subtract,
     vanishes_only_at_zero,
 )
-from dossier.model.affine import spread_box
+from dossier.model.affine import affine_parts, offset_forms, spread_box
 from dossier.model.ball import Ball
 from dossier.model.case import NOMINAL, Case, Scope
 from dossier.model.claim import CoverClaim, DecreaseWitness, LyapunovClaim, Matrix
 from dossier.model.decrease import bernstein_coefficients, bernstein_count, decrease_form
 from dossier.model.equilibrium import Equilibrium
-from dossier.model.expression import conditions
+from dossier.model.expression import SATURATION, Expression, conditions, fold, neg, rebuild, sub
 from dossier.model.figures import figure, span
 from dossier.model.finding import Finding, Premise, Result, Strength, weakest
 from dossier.model.loop import model_hash, vector_field
@@ -182,16 +183,18 @@ def _sides(box: Box) -> str:
 
 
 def certified_field(
-    case: Case, equilibrium: Equilibrium, over: Scope, place: Box | None = None, order: int = 0
-) -> OffsetField | NotRational:
+    case: Case, equilibrium: Equilibrium, over: Scope, place: Box | None = None, order: int = 0,
+    equations: tuple[Expression, ...] | None = None,
+) -> OffsetField | NotRational:  # fmt: skip
     """The closed loop in offsets from `equilibrium` over the scope's symbolic parameters.
 
-    With a `place`, elementary functions are expanded to `order` there.
+    With a `place`, elementary functions are expanded to `order` there; `equations` that are equal to those of the case
+    on the set in question may take their place.
     """
     symbolic = () if over == NOMINAL else spread_box(case).names
     loop = vector_field(case)
     return offset_field(
-        loop.equations, loop.states, equilibrium.state,
+        equations or loop.equations, loop.states, equilibrium.state,
         {p.name: p.nominal for p in case.model.parameters}, symbolic, sampled=loop.sampled, place=place, order=order,
         course=equilibrium.course,
     )  # fmt: skip
@@ -200,13 +203,67 @@ def certified_field(
 def _field_on_set(
     case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, shape: Ellipsoid
 ) -> OffsetField | NotRational:
-    """As certified; where there are elementary functions, expanded on the bounding box of the set."""
-    field = certified_field(case, equilibrium, claim.over)
+    """As certified; where there are elementary functions, expanded on the bounding box of the set.
+
+    A saturation or absolute value whose argument is proved to keep its branch on the set is that branch.
+    """
+    equations = tuple(
+        _on_branch(e, case, equilibrium, claim, shape) for e in vector_field(case).equations
+    )  # fmt: skip
+    field = certified_field(case, equilibrium, claim.over, equations=equations)
     if not isinstance(field, NotRational):
         return field
     place = absolute_box(equilibrium, case.model.state_names, shape.half_widths)
     whole = Box((*place.names, *claim.parameters.names), (*place.intervals, *claim.parameters.intervals))
-    return certified_field(case, equilibrium, claim.over, whole, claim.expansion)
+    return certified_field(case, equilibrium, claim.over, whole, claim.expansion, equations)
+
+
+def _on_branch(
+    expression: Expression, case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, shape: Ellipsoid
+) -> Expression:
+    """`expression` with every kink resolved whose distance is affine in the offsets and keeps its sign on the set."""
+
+    def above_zero(distance: Expression) -> bool:
+        bound = affine_range(case, equilibrium, shape, distance, claim.over, claim.parameters)
+        return bound is not None and bound.lower > 0
+
+    def visit(node: Expression, args: tuple[Expression, ...]) -> Expression:
+        if node.op == "abs":
+            return args[0] if above_zero(args[0]) else neg(args[0]) if above_zero(neg(args[0])) else rebuild(node, args)
+        if node.op == SATURATION:
+            argument, lower, upper = args
+            if above_zero(sub(argument, lower)) and above_zero(sub(upper, argument)):
+                return argument
+        return rebuild(node, args)
+
+    return fold(expression, visit)
+
+
+def affine_range(
+    case: Case, equilibrium: Equilibrium, shape: Ellipsoid, quantity: Expression, over: Scope, cell: Box
+) -> Ball | None:
+    """Bounds over x* + the ellipsoid of a quantity that is affine in the offsets, for the combinations of a cell.
+
+    By the support function, max w'y = sqrt(level w'P^-1 w), convex in (constant, w), hence largest at the Bernstein
+    coefficients over the cell.  None for other quantities.
+    """
+    forms = offset_forms(case, equilibrium, quantity, over, None if over == NOMINAL else cell)
+    if forms is None:
+        return None
+    bounds = []
+    for form in forms:
+        parts = affine_parts(form, len(case.model.states))
+        if parts is None:
+            return None
+        bounds.append(_support(*parts, shape))
+    return Ball.from_bounds(min(b.lower for b in bounds), max(b.upper for b in bounds))
+
+
+def _support(constant: Ball, weights: tuple[Ball, ...], shape: Ellipsoid) -> Ball:
+    """Bounds of constant + w'y over the ellipsoid, for every value of the balls."""
+    reach = root_above(shape.level * quadratic_form(shape.inverse, [w.middle for w in weights]))
+    slack = sum((w.radius * h for w, h in zip(weights, shape.half_widths, strict=True)), Fraction(0))
+    return Ball(constant.middle, constant.radius + reach + slack)
 
 
 def _decrease(case: Case, equilibrium: Equilibrium, claim: LyapunovClaim, shape: Ellipsoid) -> Iterator[Premise]:

@@ -7,9 +7,9 @@ from fractions import Fraction
 from typing import Final
 
 from dossier.checks.boxes import range_over
-from dossier.checks.exact import quadratic_form, root_above, root_below
-from dossier.checks.lyapunov import Ellipsoid, absolute_box, parameter_box
-from dossier.model.affine import affine_parts, offset_forms
+from dossier.checks.exact import quadratic_form, root_below
+from dossier.checks.lyapunov import Ellipsoid, absolute_box, affine_range, parameter_box
+from dossier.model.affine import spread_box
 from dossier.model.ball import Ball
 from dossier.model.case import Case, Scope
 from dossier.model.equilibrium import Equilibrium
@@ -64,32 +64,10 @@ def bound_over_set(
     at_rest = range_over(quantity, place, RANGE_PIECES)
     if at_rest is None:
         return None
-    affine = _affine_bound(case, equilibrium, shape, quantity, over, cell)
+    affine = affine_range(case, equilibrium, shape, quantity, over, cell or spread_box(case))
     if affine is not None:
         return Bound(affine, at_rest, True)
     around = absolute_box(equilibrium, names, shape.half_widths)
     whole = Box(place.names, (*around.intervals, *box.intervals))
     ranged = range_over(quantity, whole, RANGE_PIECES)
     return None if ranged is None else Bound(ranged, at_rest, False)
-
-
-def _affine_bound(
-    case: Case, equilibrium: Equilibrium, shape: Ellipsoid, quantity: Expression, over: Scope, cell: Box | None
-) -> Ball | None:
-    forms = offset_forms(case, equilibrium, quantity, over, cell)
-    if forms is None:
-        return None
-    bounds = []
-    for form in forms:
-        parts = affine_parts(form, len(case.model.states))
-        if parts is None:
-            return None
-        bounds.append(_support(*parts, shape))
-    return Ball.from_bounds(min(b.lower for b in bounds), max(b.upper for b in bounds))
-
-
-def _support(constant: Ball, weights: tuple[Ball, ...], shape: Ellipsoid) -> Ball:
-    """Bounds of constant + w'y over the ellipsoid, for every value of the balls."""
-    reach = root_above(shape.level * quadratic_form(shape.inverse, [w.middle for w in weights]))
-    slack = sum((w.radius * h for w, h in zip(weights, shape.half_widths, strict=True)), Fraction(0))
-    return Ball(constant.middle, constant.radius + reach + slack)

@@ -243,20 +243,7 @@ def _is_definite(form: fmpq_mpoly, forms: LinearForms, variables: int) -> bool:
         if len(places) != len(("row", "column")) or max(places) >= variables:
             return False
         _add(middle, radius, places, ball)
-    if any(middle[i][i] <= 0 for i in range(variables)):
-        return False
-    factors = [_root_magnitude(middle[i][i]) for i in range(variables)]
-    return is_positive_definite_for_all(_congruent(middle, factors), _congruent(radius, factors))
-
-
-def _root_magnitude(value: Fraction) -> Fraction:
-    """The inverse of a power of two within a factor of two or so of the square root of `value` > 0."""
-    return Fraction(2) ** ((value.denominator.bit_length() - value.numerator.bit_length()) // 2)
-
-
-def _congruent(matrix: list[list[Fraction]], factors: list[Fraction]) -> list[list[Fraction]]:
-    """D M D with D = diag(factors): definite exactly when M is; entries of order one make the radii comparable."""
-    return [[a * v * b for v, b in zip(row, factors, strict=True)] for row, a in zip(matrix, factors, strict=True)]
+    return is_positive_definite_for_all(middle, radius)
 
 
 def _add(middle: list[list[Fraction]], radius: list[list[Fraction]], places: list[int], ball: Ball) -> None:

@@ -19,9 +19,10 @@ from flint import Ordering, fmpq_mpoly, fmpq_mpoly_ctx
 
 from dossier.model.ball import WORKING_BITS, Ball, enclose, evaluate, from_arb, precision, to_fmpq, to_fraction
 from dossier.model.course import Course, shift_of
-from dossier.model.expression import Expression, fold, names, number, rebuild, substitute, symbol
+from dossier.model.expression import Expression, fold, names, nodes, number, rebuild, substitute, symbol
 from dossier.model.region import Box
 from dossier.model.remainders import Expansion, Refusal, expansions, is_function, valid_box
+from dossier.model.taylor import expand_functions
 
 Exponents = tuple[int, ...]
 
@@ -242,6 +243,8 @@ def offset_field(
     shift = shifts(states, equilibrium, course)
     plans: dict[Expression, Expansion] = {}
     if place is not None:
+        converted, more = _without_parameter_functions(converted, states, symbolic, place, balls)
+        balls = {**balls, **more}
         bounds = balls | valid_box((*states, *symbolic), place)
         found = expansions(converted, dict(zip(states, equilibrium, strict=True)), bounds, order)
         if isinstance(found, Refusal):
@@ -279,6 +282,31 @@ def offset_field(
         ring, states, tuple(symbolic), {**balls, **shift}, numerators, denominator, sampled, all(vanish),
         terms_of.factors,
     )  # fmt: skip
+
+
+def _without_parameter_functions(
+    equations: tuple[Expression, ...], states: tuple[str, ...], symbolic: tuple[str, ...], place: Box,
+    balls: Mapping[str, Ball],
+) -> tuple[tuple[Expression, ...], dict[str, Ball]]:  # fmt: skip
+    """Functions of the symbolic parameters alone as Taylor polynomials with enclosed remainders (`model.taylor`).
+
+    Raises ArithmeticError where a function is not proved smooth enough over the parameters.
+    """
+    found: dict[Expression, None] = {}
+    for equation in equations:
+        for node in nodes(equation):
+            if is_function(node) and not (names(node) & set(states)):
+                found.setdefault(node)
+    if not found or not symbolic:
+        return equations, {}
+    parameters = Box(symbolic, tuple(place[n] for n in symbolic))
+    polynomials, more = expand_functions(tuple(found), parameters, balls)
+    known = dict(zip(found, polynomials, strict=True))
+
+    def convert(node: Expression) -> Expression:
+        return known[node] if node in known else rebuild(node, tuple(convert(a) for a in node.args))
+
+    return tuple(convert(e) for e in equations), more
 
 
 def shifts(states: tuple[str, ...], equilibrium: tuple[Ball, ...], course: Course | None) -> dict[str, Ball]:

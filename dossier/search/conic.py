@@ -201,11 +201,13 @@ def _solve(problem: cvxpy.Problem, solver: str) -> None:
 
 def _cones(dims: Any) -> list[tuple[str, int]]:
     """The cones in the order of the rows.  Raises _FailedError for one that no program here needs."""
-    if dims.exp or dims.p3d or getattr(dims, "pnd", None):
-        raise _FailedError("a program with exponential or power cones")
+    if dims.p3d or getattr(dims, "pnd", None):
+        raise _FailedError("a program with power cones")
     cones = [("zero", dims.zero)] if dims.zero else []
     cones += [("nonnegative", dims.nonneg)] if dims.nonneg else []
-    return [*cones, *(("second order", n) for n in dims.soc), *(("semidefinite", n) for n in dims.psd)]
+    cones += [("second order", n) for n in dims.soc]
+    cones += [("semidefinite", n) for n in dims.psd]
+    return [*cones, *([("exponential", dims.exp)] if dims.exp else [])]
 
 
 def _ending(problem: cvxpy.Problem) -> Solved:

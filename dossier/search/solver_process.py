@@ -119,7 +119,9 @@ def _clarabel(request: Message) -> Message:
         "second order": clarabel.SecondOrderConeT,
         "semidefinite": clarabel.PSDTriangleConeT,
     }
-    cones = [kinds[kind](size) for kind, size in request["cones"]]
+    cones: list[Any] = []
+    for kind, size in request["cones"]:
+        cones += [clarabel.ExponentialConeT() for _ in range(size)] if kind == "exponential" else [kinds[kind](size)]
     settings = clarabel.DefaultSettings()
     settings.verbose = False
     for name, value in request["options"].items():
@@ -141,7 +143,7 @@ def _scs(request: Message) -> Message:
     import scs  # noqa: PLC0415
 
     data = {"A": _unpacked("A", request), "b": request["b"], "c": request["q"], "P": _unpacked("P", request)}
-    letters = {"zero": "z", "nonnegative": "l"}
+    letters = {"zero": "z", "nonnegative": "l", "exponential": "ep"}
     cone: dict[str, Any] = {"q": [], "s": []}
     for kind, size in request["cones"]:
         if kind in letters:

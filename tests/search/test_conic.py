@@ -28,6 +28,17 @@ def test_two_solvers_agree():
         assert x.value == pytest.approx([0.6, 0.8], abs=1e-4)
 
 
+@pytest.mark.parametrize("solver", ["CLARABEL", "SCS"])
+def test_programs_with_every_kind_of_cone_are_understood(solver):
+    """max log det X with X <= A has X = A; the least norm on a line; both closed form."""
+    a = np.array([[2.0, 1.0], [1.0, 2.0]])
+    x, y = cvxpy.Variable((2, 2), symmetric=True), cvxpy.Variable(2)
+    goal = cvxpy.log_det(x) - cvxpy.norm(y)
+    assert solve(cvxpy.Problem(cvxpy.Maximize(goal), [x << a, cvxpy.sum(y) == 2]), solver).has_values
+    assert x.value == pytest.approx(a, abs=1e-3)
+    assert y.value == pytest.approx([1, 1], abs=1e-3)
+
+
 def test_an_infeasible_program_says_so_and_leaves_no_values():
     x = cvxpy.Variable()
     solved = solve(cvxpy.Problem(cvxpy.Minimize(x), [x >= 1, x <= 0]))

@@ -2,10 +2,22 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
+from fractions import Fraction
 
 from dossier.model.affine import spread_box
-from dossier.model.claim import CellsClaim, Claim, CoverClaim, LyapunovClaim, RootsClaim, SturmClaim
+from dossier.model.claim import (
+    AbsenceClaim,
+    BranchClaim,
+    CandidateClaim,
+    CellsClaim,
+    Claim,
+    CoverClaim,
+    EndClaim,
+    LyapunovClaim,
+    RootsClaim,
+    SturmClaim,
+)
 from dossier.model.dossier import PointEvidence
 from dossier.model.finding import Finding
 from dossier.model.theorem import THEOREMS
@@ -27,15 +39,23 @@ def certificate_blocks(context: Context, point: PointEvidence) -> Iterator[Block
     """Every certificate with a function V, then the evidence of other kinds."""
     sets = [c for c in point.claims if isinstance(c, LyapunovClaim | CoverClaim)]
     in_cells = [c for c in point.claims if isinstance(c, CellsClaim)]
-    others = [c for c in point.claims if isinstance(c, RootsClaim | SturmClaim)]
-    if sets or in_cells:
+    others = [c for c in point.claims if _content(c)]
+    given = [c for c in point.claims if isinstance(c, CandidateClaim)]
+    if sets or in_cells or given:
         yield Paragraph((wording.CERTIFICATE_CAUTION,), "caution")
     for claim in sets:
         yield from _set_blocks(context, point, claim)
     for claim in in_cells:
         yield from _cell_blocks(context, point, claim)
+    for claim in given:
+        yield from _given_blocks(context, point, claim)
     if others:
         yield _other_table(context, point)
+        for claim in others:
+            if isinstance(claim, BranchClaim | AbsenceClaim | EndClaim):
+                for finding in point.findings:
+                    if finding.subject == claim.identifier and finding.premises:
+                        yield premise_table(context, finding)
 
 
 def _set_blocks(context: Context, point: PointEvidence, claim: SetClaim) -> Iterator[Block]:
@@ -54,6 +74,27 @@ def _set_blocks(context: Context, point: PointEvidence, claim: SetClaim) -> Iter
     for finding in point.findings:
         if finding.subject == claim.identifier and finding.premises:
             yield premise_table(context, finding)
+
+
+def _given_blocks(context: Context, point: PointEvidence, claim: CandidateClaim) -> Iterator[Block]:
+    """The engineer's own function: proved, or refuted by a point."""
+    finding = next((f for f in point.findings if f.subject == claim.identifier), None)
+    verdict = "" if finding is None else f", {finding.result} as given"
+    yield Subheading((f"{claim.identifier}, the engineer’s own function{verdict}",), claim.identifier)
+    candidate, states = point.case.candidate, point.case.model.states
+    facts: list[tuple[str, Rich]] = []
+    if candidate is not None:
+        facts.append(("Function", (Mono(candidate.written),)))
+        facts.append(("Level", (numbers.number(candidate.level),)))
+        facts.append(("Symbols", ("offsets from the equilibrium, as numbers in the units of the states",)))
+    if claim.around is not None:
+        parts = []
+        for state, side in zip(states, claim.around.intervals, strict=True):
+            parts.append(f"{state.name} in {side_text(side, units.difference_unit(state.unit, state.scale))}")
+        facts.append(("Its set lies in", ("; ".join(parts),)))
+    yield Facts(tuple(facts))
+    if finding is not None:
+        yield premise_table(context, finding)
 
 
 def _cell_blocks(context: Context, point: PointEvidence, claim: CellsClaim) -> Iterator[Block]:
@@ -176,4 +217,17 @@ def _content(claim: Claim) -> str:
         peaks = wording.counted(len(claim.peak_candidates), "candidate")
         circle = len(claim.phase_crossings)
         return f"loop {claim.loop}: {real} of the real axis, {circle} of the unit circle, {peaks} for the peak"
+    if isinstance(claim, BranchClaim):
+        return f"the equilibrium of the operating point on {wording.counted(len(claim.cells), 'parameter cell')}"
+    if isinstance(claim, AbsenceClaim):
+        return f"no equilibrium at {_combination(claim.values)} (SI)"
+    if isinstance(claim, EndClaim):
+        share = numbers.percent_below(claim.share)
+        return (
+            f"the equilibrium ends between {share} and 100 % of the straight way to {_combination(claim.values)} (SI)"
+        )
     return ""
+
+
+def _combination(values: Mapping[str, Fraction]) -> str:
+    return ", ".join(f"{name} = {numbers.number(value)}" for name, value in values.items())

@@ -5,9 +5,10 @@ from __future__ import annotations
 from collections.abc import Iterator
 from typing import Final
 
-from dossier.model.claim import RootsClaim
+from dossier.model.claim import AbsenceClaim, BranchClaim, EndClaim, RootsClaim
 from dossier.model.dossier import PointEvidence
 from dossier.model.equilibrium import Equilibrium
+from dossier.model.finding import Finding
 from dossier.report import numbers, units, wording
 from dossier.report.blocks import Block, Bullets, Column, Paragraph, Row, Table
 from dossier.report.content.context import Context
@@ -24,8 +25,49 @@ def equilibrium_blocks(context: Context, point: PointEvidence) -> Iterator[Block
     if point.equilibria:
         yield from _tables(context, point)
         yield _class_table(point)
+    yield from _movement(context, point)
     if point.clusters:
         yield Bullets(tuple((f"Not resolved: {c}.",) for c in point.clusters))
+
+
+def _movement(context: Context, point: PointEvidence) -> Iterator[Block]:
+    """Where the equilibrium of the operating point lies over the tolerances, or where it ends."""
+    for claim in point.claims:
+        finding = next((f for f in point.findings if f.subject == claim.identifier and f.result == "proved"), None)
+        if finding is None or not isinstance(claim, BranchClaim | AbsenceClaim | EndClaim):
+            continue
+        if isinstance(claim, BranchClaim):
+            cells = wording.counted(len(claim.cells), "cell")
+            yield Paragraph(
+                rich(
+                    "Proved: over the tolerances and ranges the equilibrium of the operating point moves continuously "
+                    "and stays isolated (", context.link(claim.identifier), f", {cells}, theorem {claim.theorem}). "
+                    "It stays within the bounds below; every criterion over tolerances is about each combination’s "
+                    "own equilibrium.",
+                )
+            )  # fmt: skip
+            yield _bounds_at_rest(point, finding)
+        else:
+            yield Paragraph(
+                rich("Proved: ", finding.statement, " (", context.link(claim.identifier), ", SI)."), "caution"
+            )
+
+
+def _bounds_at_rest(point: PointEvidence, finding: Finding) -> Table:
+    rows = []
+    for state in point.case.model.states:
+        fact = finding.facts[f"{state.name} at rest"]
+        low, high = units.absolute_unit(state.unit, state.scale).from_si(fact.lower, fact.upper)
+        lower = "–" if low is None else numbers.below(low)
+        upper = "–" if high is None else numbers.above(high)
+        rows.append(Row(((spoken(state.name),), (lower,), (upper,), (units.unit_text(state.unit) or "1",))))
+    columns = (
+        Column("State", "short", 25),
+        Column("At least", "number", 25),
+        Column("At most", "number", 25),
+        Column("Unit", "short", 25),
+    )
+    return Table("The equilibrium over all combinations", columns, tuple(rows))
 
 
 def _completeness(context: Context, point: PointEvidence) -> Rich:

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 
 from dossier.model.dossier import PointEvidence
-from dossier.report import units, wording
+from dossier.report import numbers, units, wording
 from dossier.report.blocks import (
     Block,
     Card,
@@ -62,6 +62,9 @@ def _asked(context: Context, point: PointEvidence) -> Iterator[Block]:
     if case.set_values:
         facts.append(("Set here", ("; ".join(f"{n} = {units.written(v)}" for n, v in case.set_values),)))
     facts.append(("Equilibrium", (_equilibrium_words(point),)))
+    if case.candidate is not None:
+        level = numbers.number(case.candidate.level)
+        facts.append(("Own function V", rich(Mono(case.candidate.written), f" up to the level {level}")))
     yield Facts(tuple(facts))
     yield _sets_table(context, point)
     if case.model.time == "sampled":
