@@ -134,7 +134,9 @@ def _widest_margin(vertices: Array, region: SpectralRegion, level: float) -> Arr
     p, margin = program.matrix.value, program.margin.value
     if not solved.has_values or p is None or margin is None or float(margin) < LEAST_MARGIN:
         return None
-    return np.array(p)
+    found = np.array(p)
+    # What a solver says is not believed, not even that it kept its constraints.
+    return found if np.isfinite(found).all() and np.linalg.eigvalsh((found + found.T) / 2)[0] > 0 else None
 
 
 @dataclass(frozen=True)

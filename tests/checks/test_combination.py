@@ -90,7 +90,7 @@ RATE = Quantity(Fraction(1, 10), 0, "1/s", "0.1 1/s")
     ("claim", "value", "over", "expected"),
     [
         ("asymptotic_stability", BEYOND, TOLERANCES, "refuted"),
-        ("asymptotic_stability", EDGE, TOLERANCES, "not established"),
+        ("asymptotic_stability", EDGE, TOLERANCES, "refuted"),
         ("exponential_stability", EDGE, TOLERANCES, "refuted"),
         ("exponential_stability", WITHIN, TOLERANCES, "not established"),
         ("asymptotic_stability", BEYOND, NOMINAL, "not established"),

@@ -353,8 +353,8 @@ def test_one_slip_is_told_once_with_its_place_and_what_to_do(name: str) -> None:
 
 
 _SHOWN_OTHERWISE = {
-    "custom_tag", "empty_range", "region_without_zero", "not_yaml", "one_bound_in_brackets", "bounds_in_the_wrong_order",
-    "disturbance_without_zero", "table_where_a_value_is_meant",
+    "custom_tag", "empty_range", "region_without_zero", "not_yaml", "one_bound_in_brackets",
+    "bounds_in_the_wrong_order", "disturbance_without_zero", "table_where_a_value_is_meant",
 }  # fmt: skip
 """Faults that show the key, or the value in another form than it stands."""
 

@@ -282,3 +282,24 @@ def test_a_published_function_is_judged_as_given(name):
 def test_a_function_that_was_proved_as_given_carries_the_criterion(name):
     outcome = next(o for o in point("given", name).outcomes if o.identifier.endswith(".C1"))
     assert (outcome.verdict, outcome.evidence) == ("proved", (f"{name}.V-given",))
+
+
+@pytest.mark.parametrize(
+    ("name", "expected"),
+    [
+        # Stable exactly where the damping is positive (Routh and Hurwitz, second order).
+        ("corner_inside", {"C1": "proved"}),
+        ("corner_edge", {"C1": "refuted"}),
+        ("corner_bad", {"C1": "refuted", "C2": "proved"}),
+        ("island_bad", {"C1": "refuted", "C2": "proved"}),
+        ("island_sunk", {"C1": "proved"}),
+        # Triangular: the eigenvalues are the diagonal, whatever stands above it.
+        ("skew_left", {"C1": "proved", "C2": "proved", "C3": "refuted"}),
+        ("skew_right", {"C1": "refuted"}),
+        ("skew_barely", {"C1": "proved"}),
+    ],
+)
+def test_bad_places_of_a_parameter_box_are_found_and_good_boxes_proved(name, expected):
+    case = next(c for c in project("boxes").cases if c.name == name)
+    found = build_point(case, EFFORTS["standard"], lambda *_: None, Stopwatch())
+    assert {o.identifier.rpartition(".")[2]: o.verdict for o in found.outcomes} == expected

@@ -20,8 +20,8 @@ from dossier.checks.knowledge import Knowledge
 from dossier.checks.linear import routh_claim_id
 from dossier.checks.lyapunov import certified_field
 from dossier.model.affine import spread_box
-from dossier.model.case import NOMINAL, Criterion
-from dossier.model.claim import MatrixClaim, RouthClaim, SpectralRegion
+from dossier.model.case import NOMINAL, Case, Criterion, at_combination
+from dossier.model.claim import CombinationClaim, MatrixClaim, RouthClaim, SpectralRegion
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.finding import Enclosure, Finding
 from dossier.model.polynomial import NotRational
@@ -113,7 +113,8 @@ def _at_combinations(knowledge: Knowledge, criterion: Criterion) -> Iterator[Fin
         at = {"combination": words_of(knowledge.case, claim), "equilibrium": claim.equilibrium}
         outside, boundary = count_of(finding, OUTSIDE), count_of(finding, BOUNDARY)
         stability = criterion.claim in ("asymptotic_stability", "exponential_stability")
-        if stability and (outside or (boundary and criterion.claim == "exponential_stability")):
+        strict = criterion.claim == "exponential_stability" or _is_linear_at(knowledge, claim)
+        if stability and (outside or (boundary and strict)):
             what = _lying(outside or boundary, "outside" if outside else "on")
             yield refute(
                 knowledge, criterion, "T8", f"at {at['combination']}, {what}", finding.strength, (claim.identifier,), at
@@ -132,16 +133,16 @@ def _contradicts_stability(
 ) -> bool:
     """An eigenvalue outside refutes stability; one on the boundary only what needs strictness, or a linear model."""
     if criterion.claim == "asymptotic_stability":
-        return count.outside > 0 or (count.boundary > 0 and is_linear(knowledge, equilibrium))
+        return count.outside > 0 or (count.boundary > 0 and is_linear(knowledge.case, equilibrium))
     if criterion.claim == "exponential_stability":
         return count.outside + count.boundary > 0
     return False
 
 
-def is_linear(knowledge: Knowledge, equilibrium: Equilibrium) -> bool:
+def is_linear(case: Case, equilibrium: Equilibrium) -> bool:
     """The nominal model is affine in the states, so its linear part is the whole truth."""
     try:
-        field = certified_field(knowledge.case, equilibrium, NOMINAL)
+        field = certified_field(case, equilibrium, NOMINAL)
     except ArithmeticError:
         return False
     if isinstance(field, NotRational):
@@ -150,6 +151,12 @@ def is_linear(knowledge: Knowledge, equilibrium: Equilibrium) -> bool:
     return not any(any(e[:size]) for e in field.denominator.to_dict()) and all(
         sum(e[:size]) <= 1 for p in field.numerators for e in p.to_dict()
     )
+
+
+def _is_linear_at(knowledge: Knowledge, claim: CombinationClaim) -> bool:
+    """The model built with this combination is affine in the states (an affine model is so about any point)."""
+    chosen = knowledge.chosen
+    return chosen is not None and is_linear(at_combination(knowledge.case, claim.values), chosen)
 
 
 def _by_matrix(knowledge: Knowledge, criterion: Criterion) -> Iterator[Finding]:
