@@ -8,7 +8,7 @@ from fractions import Fraction
 from flint import arb, fmpq_mpoly
 
 from dossier.checks.boxes import condition_holds, constant_sign
-from dossier.checks.exact import is_positive_definite, is_positive_definite_for_all, root_above
+from dossier.checks.exact import is_positive_definite, is_positive_definite_for_all, is_symmetric, root_above
 from dossier.checks.lyapunov import parameter_box
 from dossier.model.affine import spread_box
 from dossier.model.ball import Ball, to_fmpq
@@ -92,7 +92,7 @@ def _premises(case: Case, equilibrium: Equilibrium, claim: MatrixClaim, where: W
         f"{len(cells)} cell{'' if len(cells) == 1 else 's'}",
     )  # fmt: skip
     if claim.over != NOMINAL and any(p.varies and p.has_spread for p in case.model.parameters):
-        common = len({c.matrix for c in claim.cells}) == 1
+        common = len({c.matrix for c in claim.cells}) == 1 and not any(c.slopes for c in claim.cells)
         yield _shown("common", "one P serves all cells, as parameters vary during a motion", common, claim, "exact")
     if claim.over == NOMINAL:
         yield _smooth(case, equilibrium, claim)
@@ -189,7 +189,7 @@ def _spectrum(case: Case, equilibrium: Equilibrium, claim: MatrixClaim, where: W
 
 def cell_holds(forms: LinearForms, cell: MatrixCell, region: SpectralRegion, level: Fraction) -> bool:
     """P > 0, and every Bernstein coefficient of the region's form over the cell is positive definite."""
-    if len(cell.matrix) != len(forms.states) or not is_positive_definite(cell.matrix):
+    if not _is_positive(forms, cell):
         return False
     if not forms.box.contains(cell.parameters):
         return False
@@ -197,12 +197,24 @@ def cell_holds(forms: LinearForms, cell: MatrixCell, region: SpectralRegion, lev
     if sign == 0:
         return False
     slope = tangent_above(level) if region == "sector" else level
-    form = spectral_form(forms, cell.matrix, region, slope, sign)
+    form = spectral_form(forms, cell, region, slope, sign)
     variables = len(forms.states) * (1 if region == "half-plane" else 2)
     return all(
         _is_definite(coefficient, forms, variables)
         for _, coefficient in bernstein_coefficients(form, forms.ring, cell.parameters)
     )
+
+
+def _is_positive(forms: LinearForms, cell: MatrixCell) -> bool:
+    """P of the cell is positive definite for every combination: it is affine, so the corners decide."""
+    size = len(forms.states)
+    if any(len(m) != size or any(len(row) != size for row in m) for m in (cell.matrix, *cell.slopes)):
+        return False
+    if not cell.slopes:
+        return is_positive_definite(cell.matrix)
+    if len(cell.slopes) != len(cell.parameters.names) or not all(map(is_symmetric, cell.slopes)):
+        return False
+    return all(is_positive_definite(cell.at(corner)) for corner in cell.parameters.corners())
 
 
 def tangent_above(sine: Fraction) -> Fraction:

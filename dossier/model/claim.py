@@ -56,10 +56,26 @@ SpectralRegion = Literal["half-plane", "disc", "sector"]
 
 @dataclass(frozen=True, slots=True)
 class MatrixCell:
-    """A part of the parameter box and the rational symmetric P that serves it."""
+    """A part of the parameter box and the rational symmetric P that serves it.
+
+    P is `matrix`, or with `slopes` (one symmetric matrix per parameter) `matrix` plus the sum of slope times (parameter
+    - middle of its side), so that every combination has its own.
+    """
 
     parameters: Box
     matrix: Matrix
+    slopes: tuple[Matrix, ...] = ()
+
+    def at(self, values: tuple[Fraction, ...]) -> Matrix:
+        """P at one combination of the cell."""
+        steps = [v - i.middle for v, i in zip(values, self.parameters.intervals, strict=True)]
+        return tuple(
+            tuple(
+                v + sum((m[i][j] * d for m, d in zip(self.slopes, steps, strict=False)), Fraction(0))
+                for j, v in enumerate(row)
+            )
+            for i, row in enumerate(self.matrix)
+        )
 
 
 @dataclass(frozen=True, slots=True)

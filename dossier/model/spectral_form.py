@@ -20,7 +20,7 @@ from flint import fmpq_mpoly
 
 from dossier.model.ball import Ball, from_arb, to_fraction
 from dossier.model.case import NOMINAL, Case, Scope
-from dossier.model.claim import Matrix, SpectralRegion
+from dossier.model.claim import MatrixCell, SpectralRegion
 from dossier.model.course import shift_of
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.expression import (
@@ -193,9 +193,32 @@ def vanishes_identically(expression: Expression, values: Mapping[str, Expression
     return isinstance(quotient, Quotient) and quotient.numerator.is_zero()
 
 
-def spectral_form(forms: LinearForms, matrix: Matrix, region: SpectralRegion, level: Fraction, sign: int) -> fmpq_mpoly:
+Entries = tuple[tuple[fmpq_mpoly, ...], ...]
+
+
+def entries_of(forms: LinearForms, cell: MatrixCell) -> Entries:
+    """P of a cell as polynomials in its parameters."""
+    ring = forms.ring
+    steps = [ring.gen(n) - ring.constant(side.middle) for n, side in cell.parameters.items()] if cell.slopes else []
+    rows = []
+    for i, row in enumerate(cell.matrix):
+        entries = []
+        for j, value in enumerate(row):
+            entry = ring.constant(value)
+            for slope, step in zip(cell.slopes, steps, strict=True):
+                if slope[i][j]:
+                    entry = entry + ring.constant(slope[i][j]) * step
+            entries.append(entry)
+        rows.append(tuple(entries))
+    return tuple(rows)
+
+
+def spectral_form(
+    forms: LinearForms, cell: MatrixCell, region: SpectralRegion, level: Fraction, sign: int
+) -> fmpq_mpoly:
     """The form that must be positive definite; `sign` is the proved sign of D.  For the sector, `level` is tan b."""
     ring, states = forms.ring, forms.states
+    matrix = entries_of(forms, cell)
     y = [ring.gen(s) for s in states]
     w = [ring.gen(partner(s)) for s in states]
     if region == "disc":
@@ -220,10 +243,10 @@ def _turned(forms: LinearForms, row: fmpq_mpoly) -> fmpq_mpoly:
     return row.compose(*images, ctx=forms.ring.context)
 
 
-def _bilinear(ring: Ring, matrix: Matrix, left: Sequence[fmpq_mpoly], right: Sequence[fmpq_mpoly]) -> fmpq_mpoly:
+def _bilinear(ring: Ring, matrix: Entries, left: Sequence[fmpq_mpoly], right: Sequence[fmpq_mpoly]) -> fmpq_mpoly:
     total = ring.constant(Fraction(0))
     for a, row in zip(left, matrix, strict=True):
         for value, b in zip(row, right, strict=True):
             if value:
-                total = total + ring.constant(value) * a * b
+                total = total + value * a * b
     return total

@@ -38,9 +38,17 @@ def shortened(matrix: Matrix, bits: int) -> Matrix:
 
     Raises ValueError where a diagonal entry is not positive.
     """
-    if any(row[i] <= 0 for i, row in enumerate(matrix)):
+    return rounded_like(matrix, matrix, bits)
+
+
+def rounded_like(matrix: Matrix, base: Matrix, bits: int) -> Matrix:
+    """Symmetric `matrix` with entry (i, j) rounded to about `bits` binary digits below sqrt(B_ii B_jj), B = `base`.
+
+    Raises ValueError where a diagonal entry of `base` is not positive.
+    """
+    if any(row[i] <= 0 for i, row in enumerate(base)):
         raise ValueError("a positive diagonal is needed")
-    scales = [_root_magnitude(row[i]) for i, row in enumerate(matrix)]
+    scales = [_root_magnitude(row[i]) for i, row in enumerate(base)]
     size = len(matrix)
 
     def entry(i: int, j: int) -> Fraction:
@@ -57,5 +65,10 @@ def _root_magnitude(value: Fraction) -> Fraction:
 
 def to_short(values: Array, bits: int) -> Matrix:
     """`shortened` of the symmetric part of a finite floating-point matrix."""
+    return shortened(exactly(values), bits)
+
+
+def exactly(values: Array) -> Matrix:
+    """The symmetric part of a finite floating-point matrix, as it is."""
     symmetric = (values + values.T) / 2
-    return shortened(tuple(tuple(Fraction(float(v)) for v in row) for row in symmetric), bits)
+    return tuple(tuple(Fraction(float(v)) for v in row) for row in symmetric)

@@ -109,6 +109,43 @@ def common_matrix(vertices: Array, centre: Array, region: SpectralRegion, level:
     return (result + result.T) / 2 / np.max(np.abs(result))
 
 
+def affine_matrices(
+    vertices: Array, signs: Array, centre: Array, region: SpectralRegion, level: float
+) -> tuple[Array, Array] | None:
+    """P0 (n x n) and P_k (k x n x n) such that P0 + sum of s_k P_k serves the vertex with the signs s (V x k).
+
+    With the widest margin; None where the program finds none.  The centre must be served by P0.
+    """
+    try:
+        shape = next(normal_shapes(centre))
+        factor = np.linalg.cholesky(shape / np.max(np.abs(shape))).T
+        inverse = np.linalg.inv(factor)
+    except np.linalg.LinAlgError:
+        factor = inverse = np.eye(len(centre))
+    turned = [factor @ a @ inverse for a in (*vertices, centre)]
+    rate = 1.0 if region == "disc" else float(np.max(np.abs(turned))) or 1.0
+    size, free = len(centre), signs.shape[1]
+    p0, margin = cvxpy.Variable((size, size), symmetric=True), cvxpy.Variable()
+    parts = [cvxpy.Variable((size, size), symmetric=True) for _ in range(free)]
+    scaled = level / rate if region == "half-plane" else level
+    slope = level / np.sqrt(1 - level**2) if region == "sector" else 0.0
+    constraints: list[Any] = [margin <= 1.0]
+    for a, s in zip(turned, (*signs, np.zeros(free)), strict=True):
+        p = p0 + sum(float(sign) * part for sign, part in zip(s, parts, strict=True))
+        m = _form(a / rate, slope * a / rate, p, scaled, region, cvxpy.bmat)
+        constraints += [p >> THINNEST * np.eye(size), p << np.eye(size)]
+        constraints.append((m + m.T) / 2 >> margin * np.eye(m.shape[0]))
+    solved = solve(cvxpy.Problem(cvxpy.Maximize(margin), constraints))
+    if not solved.has_values or p0.value is None or float(margin.value or 0) < LEAST_MARGIN:
+        return None
+    found = [np.array(p0.value), *(np.array(part.value) for part in parts)]
+    back = [factor.T @ p @ factor for p in found]
+    back = [(p + p.T) / 2 / np.max(np.abs(back[0])) for p in back]
+    if not np.isfinite(back).all() or np.linalg.eigvalsh(back[0])[0] <= 0:
+        return None
+    return back[0], np.array(back[1:])
+
+
 def _by_cuts(vertices: Array, region: SpectralRegion, level: float) -> Array | None:
     """The widest margin over a growing choice of vertices: those that the last P served worst are added."""
     chosen = list(range(min(FIRST_CUTS, len(vertices))))

@@ -8,7 +8,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, replace
 from fractions import Fraction
-from itertools import islice
+from itertools import islice, product
 from typing import Final
 
 import numpy as np
@@ -22,9 +22,9 @@ from dossier.model.loop import model_hash
 from dossier.model.polynomial import terms
 from dossier.model.region import Box, Interval
 from dossier.model.spectral_form import LinearForms, linear_forms
-from dossier.search.balancing import balance, to_short
+from dossier.search.balancing import balance, exactly, rounded_like, to_short
 from dossier.search.effort import Effort
-from dossier.search.inequality import Array, common_matrix, decay_matrix, is_inside
+from dossier.search.inequality import Array, affine_matrices, common_matrix, decay_matrix, is_inside
 from dossier.search.lyapunov_equation import from_equation
 from dossier.search.rounding import rescale
 
@@ -36,6 +36,8 @@ COMMON_BITS: Final = (24, 40)
 """Rounding of a P found by a conic program, whose own digits end there."""
 VERTICES: Final = 256
 """Most vertices of a cell put into one conic program."""
+MOST_SLOPES: Final = 6
+"""Parameters on which P may depend: 64 vertices in one conic program."""
 
 
 @dataclass(frozen=True)
@@ -117,8 +119,13 @@ def _cells(task: _Task, whole: Box) -> tuple[list[MatrixCell], str]:
             if outside is not None:
                 return done, f"an eigenvalue lies outside the region at {outside} (floating point)"
             room = task.budget - len(done) - len(waiting)
-            tried = (_with(matrix, task, box, room) for matrix in _candidates(forms, task.region, task.level))
+            tried = (
+                _with(MatrixCell(box, matrix), task, room) for matrix in _candidates(forms, task.region, task.level)
+            )
             found = next((cells for cells in tried if cells), None)
+            if found is None and not task.common:
+                tried = (_with(cell, task, room) for cell in _affine_candidates(forms, box, task))
+                found = next((cells for cells in tried if cells), None)
             if found is not None:
                 done.extend(found)
                 continue
@@ -146,13 +153,14 @@ def _reason(task: _Task, box: Box, forms: LinearForms | str, *, first: bool) -> 
     return "no P was found" if first else "the budget of parameter cells is spent"
 
 
-def _with(matrix: Matrix, task: _Task, box: Box, room: int) -> list[MatrixCell]:
-    """Cells with the same P that make up `box`, halved where the proof needs it; empty where it does not come out."""
-    waiting, cells = [box], []
+def _with(candidate: MatrixCell, task: _Task, room: int) -> list[MatrixCell]:
+    """Cells with the same P that make up the candidate's, halved where the proof needs it; empty where it fails."""
+    waiting, cells = [candidate.parameters], []
     while waiting:
         part = waiting.pop()
         forms = task.family.on(part)
-        cell = MatrixCell(part, matrix)
+        middle = tuple(i.middle for i in part.intervals)
+        cell = MatrixCell(part, candidate.at(middle), candidate.slopes)
         if isinstance(forms, LinearForms) and task.verify(forms, cell, task.region, task.level):
             cells.append(cell)
         elif not part.names or len(cells) + len(waiting) + 2 > room or not _plausible(forms, cell, task):
@@ -160,6 +168,41 @@ def _with(matrix: Matrix, task: _Task, box: Box, room: int) -> list[MatrixCell]:
         else:
             waiting.extend(_halves(forms, part))
     return cells
+
+
+def _affine_candidates(forms: LinearForms, box: Box, task: _Task) -> Iterator[MatrixCell]:
+    """A P that is affine in the parameters, rounded, for the unscaled states."""
+    free = [k for k, side in enumerate(box.intervals) if side.width]
+    if not free or len(free) > MOST_SLOPES:
+        return
+    middle = [i.middle for i in box.intervals]
+    centre = _entries(forms, tuple(middle))
+    scales = balance(_floats(centre))
+    back = tuple(1 / s for s in scales)
+    signs, vertices = [], []
+    for choice in product((-1, 1), repeat=len(free)):
+        point = list(middle)
+        for k, sign in zip(free, choice, strict=True):
+            point[k] = box.intervals[k].bounds[sign > 0]
+        signs.append(choice)
+        vertices.append(_scaled(_entries(forms, tuple(point)), scales))
+    if not np.isfinite(vertices).all():
+        return
+    found = affine_matrices(
+        np.array(vertices), np.array(signs, float), _scaled(centre, scales), task.region, float(task.level)
+    )
+    if found is None:
+        return
+    size = len(forms.states)
+    nothing = tuple((Fraction(0),) * size for _ in range(size))
+    base = exactly(found[0])
+    for bits in COMMON_BITS:
+        slopes = [nothing] * len(box.names)
+        for k, part in zip(free, found[1], strict=True):
+            half = box.intervals[k].width / 2
+            rounded = rescale(rounded_like(exactly(part), base, bits), back)
+            slopes[k] = tuple(tuple(v / half for v in row) for row in rounded)
+        yield MatrixCell(box, rescale(to_short(found[0], bits), back), tuple(slopes))
 
 
 def _plausible(forms: LinearForms | str, cell: MatrixCell, task: _Task) -> bool:

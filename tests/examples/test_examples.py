@@ -24,17 +24,23 @@ FILES = [
     ("dc_bus", "project.yaml"),
     ("dc_bus", "widened_search.yaml"),
     ("magnetic_bearing", "project.yaml"),
+    pytest.param("crane_trolley", "project.yaml", marks=pytest.mark.slow),
 ]
 
 
-@pytest.fixture(scope="module")
-def examples() -> dict[tuple[str, str], Evidence]:
-    built = {}
-    for folder, name in FILES:
-        project = read_project(FOLDER / folder / name)
+class Built(dict[tuple[str, str], Evidence]):
+    """Every example, built when it is first asked for."""
+
+    def __missing__(self, key: tuple[str, str]) -> Evidence:
+        project = read_project(FOLDER / key[0] / key[1])
         assert isinstance(project, Project), project
-        built[folder, name] = build_evidence(project, project.cases, "quick", "", lambda *_: None, Stopwatch())
-    return built
+        self[key] = build_evidence(project, project.cases, "quick", "", lambda *_: None, Stopwatch())
+        return self[key]
+
+
+@pytest.fixture(scope="module")
+def examples() -> Built:
+    return Built()
 
 
 def expected(folder: str, name: str) -> dict:
@@ -247,3 +253,71 @@ def test_the_rotor_returns_from_every_corner_within_its_bounds(examples):
         assert np.abs(path[0, :, -1]).max() < 1e-6
     assert peaks == pytest.approx([62.1e-6, 1.148], rel=0.02)
     assert peaks[0] < gap < 120e-6 and peaks[1] < current < 2.4
+
+
+# --- crane trolley -----------------------------------------------------------------------------------
+
+CRANE = {"M": 850.0, "mL": 600.0, "L": 6.0, "b": 220.0, "d": 0.06, "g": 9.81}
+CRANE_BOX = {"M": (824.5, 875.5), "mL": (100, 1200), "L": (3, 9), "b": (132, 308), "d": (0.03, 0.09)}
+CRANE_GAINS = np.array([900.0, 2300.0, -5200.0, -1500.0])
+
+
+def crane_parts(p: dict) -> tuple[np.ndarray, np.ndarray]:
+    """A and B of the open loop x' = A x + B u."""
+    trolley = np.array([0, -p["b"], p["mL"] * p["g"], p["mL"] * p["d"]]) / p["M"]
+    swing = -(np.array([0, 0, p["g"], p["d"]]) + trolley) / p["L"]
+    a = np.array([[0, 1, 0, 0], trolley, [0, 0, 0, 1], swing])
+    return a, np.array([0, 1, 0, -1 / p["L"]]) / p["M"]
+
+
+def crane_decay(p: dict) -> float:
+    a, b = crane_parts(p)
+    return -max(np.linalg.eigvals(a - np.outer(b, CRANE_GAINS)).real)
+
+
+def test_the_crane_decays_as_expected_for_every_load_and_rope():
+    random = np.random.default_rng(1)
+    corners_ = [dict(zip(CRANE_BOX, v, strict=True)) for v in product(*CRANE_BOX.values())]
+    inside = [{n: random.uniform(*side) for n, side in CRANE_BOX.items()} for _ in range(3000)]
+    worst = min(crane_decay({**CRANE, **p}) for p in (*corners_, *inside))
+    assert worst == pytest.approx(0.13509, abs=1e-5)
+    assert expected("crane_trolley", "project.yaml")["over_target.C2"]["at_most"] == pytest.approx(worst, abs=1e-5)
+
+
+def test_the_margins_of_the_crane_come_out_of_its_response():
+    a, b = crane_parts(CRANE)
+
+    def response(w: float) -> complex:
+        return complex(CRANE_GAINS @ np.linalg.solve(1j * w * np.eye(4) - a, b))
+
+    grid = np.logspace(-3, 3, 20_001)
+    size = np.abs([response(w) for w in grid]) - 1
+    places = np.flatnonzero(np.diff(np.sign(size)))
+    crossovers = [brentq(lambda w: abs(response(w)) - 1, grid[i], grid[i + 1]) for i in places]
+    least = min(abs(np.angle(-response(w))) for w in crossovers)
+    assert len(crossovers) == 3
+    assert least == pytest.approx(expected("crane_trolley", "project.yaml")["over_target.C9"]["value"], rel=1e-6)
+    values = np.array([response(w) for w in grid])
+    crossing = np.flatnonzero(np.diff(np.sign(values.imag)))
+    assert (values.real[crossing] > 0).all()
+
+
+@pytest.mark.slow
+def test_the_crane_returns_from_the_corners_and_swings_less_than_proved(examples):
+    bound = outcomes(examples["crane_trolley", "project.yaml"])["over_target.C5"].value
+    peak = 0.0
+    for values in product(*CRANE_BOX.values()):
+        p = {**CRANE, **dict(zip(CRANE_BOX, values, strict=True))}
+
+        def flow(_, state, p=p):
+            _, v, th, w = state
+            pull = p["mL"] * np.sin(th) * (p["L"] * w**2 + p["g"] * np.cos(th)) + p["mL"] * p["d"] * w * np.cos(th)
+            push = -CRANE_GAINS @ state - p["b"] * v + pull
+            speed_up = push / (p["M"] + p["mL"] * np.sin(th) ** 2)
+            return [v, speed_up, w, -(p["g"] * np.sin(th) + p["d"] * w + np.cos(th) * speed_up) / p["L"]]
+
+        for start in product((1,), (-0.4, 0.4), (-0.1, 0.1), (-0.12, 0.12)):
+            motion = solve_ivp(flow, (0, 60), start, rtol=1e-7, atol=1e-9, max_step=0.1)
+            peak = max(peak, float(np.abs(motion.y[2]).max()))
+            assert np.abs(motion.y[:, -1]).max() < 2.1e-4
+    assert 0.185 < peak < 0.186 < float(bound.upper) <= 0.30

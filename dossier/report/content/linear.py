@@ -37,7 +37,8 @@ def linear_blocks(context: Context, point: PointEvidence) -> Iterator[Block]:
     for claim in claims:
         if isinstance(claim, RouthClaim) and 1 < len(claim.polynomial) <= LARGEST_POLYNOMIAL + 1:
             yield Equations((_polynomial(claim),), f"characteristic polynomial, {claim.identifier}")
-        if isinstance(claim, MatrixClaim) and len(claim.cells) == 1 and len(claim.cells[0].matrix) <= LARGEST_MATRIX:
+        small = isinstance(claim, MatrixClaim) and len(claim.cells[0].matrix) <= LARGEST_MATRIX
+        if isinstance(claim, MatrixClaim) and len(claim.cells) == 1 and small and not claim.cells[0].slopes:
             yield Equations((_matrix(claim),), f"matrix of the Lyapunov inequality, {claim.identifier}")
 
 
@@ -110,7 +111,8 @@ def _combination_words(case: Case, claim: CombinationClaim, finding: Finding | N
 
 
 def _matrix_words(claim: MatrixClaim) -> tuple[Rich, str]:
-    return _region(claim), f"Lyapunov inequality, {wording.counted(len(claim.cells), 'parameter cell')}"
+    affine = ", P affine in the parameters" if any(c.slopes for c in claim.cells) else ""
+    return _region(claim), f"Lyapunov inequality, {wording.counted(len(claim.cells), 'parameter cell')}{affine}"
 
 
 def _routh_words(claim: RouthClaim) -> tuple[Rich, str]:
