@@ -21,15 +21,16 @@ from dossier.checks.linear import classify, routh_claim
 from dossier.checks.lyapunov import check_lyapunov, ellipsoid, set_premises
 from dossier.checks.movement import Movement, check_absence, check_branch, check_end
 from dossier.checks.sets import covers
-from dossier.checks.spectral import cell_holds
+from dossier.checks.spectral import cell_holds, check_matrix, widened
 from dossier.checks.spectrum import spectral_values
 from dossier.model.affine import spread_box
 from dossier.model.attempt import Attempt
-from dossier.model.case import NOMINAL, Case, Criterion
+from dossier.model.case import NOMINAL, Case, Criterion, with_spreads
 from dossier.model.claim import CellsClaim, Claim, CoverClaim, EndClaim, LyapunovClaim, RootsClaim, SpectralRegion
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.expression import Expression
 from dossier.model.finding import Enclosure
+from dossier.model.loop import model_hash
 from dossier.model.region import Box
 from dossier.search.branch import seek_branch, seek_end
 from dossier.search.candidate import given_scopes, quadratic_terms, seek_given
@@ -42,6 +43,7 @@ from dossier.search.goal import Goal
 from dossier.search.goals import (
     ABOUT_SPECTRUM,
     SetTask,
+    SpectralTask,
     effective_scope,
     loops,
     set_tasks,
@@ -56,6 +58,9 @@ from dossier.search.worst import seek_worst
 
 END_BOXES: Final = 20_000
 """Boxes per face or box in which a branch is shown to end: a case that needs more is next to a fold."""
+
+WIDER: Final = tuple(Fraction(v) for v in ("4", "3", "2.5", "2", "1.75", "1.5", "1.25", "1.1"))
+"""Factors by which spreads are widened to show a reserve, the widest first."""
 
 FEW_CELLS: Final = 8
 """Cells that a stronger level than the one asked for may cost where the equilibrium moves."""
@@ -178,7 +183,29 @@ def _spectral_claims(case: Case, chosen: Equilibrium, movement: Movement, effort
                 attempts += more
                 break
         claims.append(claim)
+        if task.over != NOMINAL and chosen.fixed_for_all:
+            wider, more = _tolerance_reserve(case, chosen, task, effort)
+            attempts += more
+            claims += wider
     return tuple(claims), tuple(attempts)
+
+
+def _tolerance_reserve(case: Case, chosen: Equilibrium, task: SpectralTask, effort: Effort) -> Found:
+    """The same statement, at the level asked for, for spreads widened as far as one or a few cells reach."""
+    for scale in WIDER:
+        box = widened(spread_box(case), scale)
+        wide = with_spreads(case, box)
+        _, claim = seek_matrix(
+            wide, chosen, task.over, task.region, task.level, replace(effort, cells=min(FEW_CELLS, effort.cells)),
+            f"{task.suffix}-wide", cell_holds,
+        )  # fmt: skip
+        if claim is not None:
+            claim = replace(claim, model_hash=model_hash(case))
+            if check_matrix(case, chosen, claim).result == "proved":
+                said = f"proved for spreads {float(scale):.4g} times as wide"
+                attempt = Attempt(claim.identifier, "tolerance reserve", "found", said, {"cells": len(claim.cells)})
+                return (claim,), (attempt,)
+    return (), ()
 
 
 def _margin_claims(case: Case, chosen: Equilibrium) -> Found:

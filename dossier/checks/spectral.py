@@ -18,7 +18,7 @@ from dossier.model.decrease import bernstein_coefficients
 from dossier.model.equilibrium import Equilibrium
 from dossier.model.expression import SATURATION, Condition, Expression, conditions, nodes, sub
 from dossier.model.figures import figure
-from dossier.model.finding import Enclosure, Finding, Premise, Strength, weakest
+from dossier.model.finding import SCALE, Enclosure, Finding, Premise, Strength, weakest
 from dossier.model.loop import model_hash, vector_field
 from dossier.model.polynomial import collapse, terms
 from dossier.model.region import Box, Interval
@@ -53,11 +53,15 @@ def check_matrix(case: Case, equilibrium: Equilibrium, claim: MatrixClaim, where
     """
     premises = tuple(_premises(case, equilibrium, claim, where))
     result, strength = weakest(premises)
+    facts = {"level": Enclosure(claim.level, claim.level, "1")}
+    if result == "proved" and claim.over != NOMINAL:
+        scale = proved_scale(spread_box(case), [c.parameters for c in claim.cells])
+        facts[SCALE] = Enclosure(scale, scale, "1")
     scope = "at the nominal parameters" if claim.over == NOMINAL else "for every parameter combination"
     text = region_text(claim.region, claim.level)
     return Finding(
         claim.identifier, "interval" if strength == "enclosed" else "exact", result, strength, claim.over, "T1",
-        f"{text}, {scope}", premises, {"level": Enclosure(claim.level, claim.level, "1")}, (claim.identifier,),
+        f"{text}, {scope}", premises, facts, (claim.identifier,),
     )  # fmt: skip
 
 
@@ -97,7 +101,7 @@ def _premises(case: Case, equilibrium: Equilibrium, claim: MatrixClaim, where: W
     if claim.over == NOMINAL:
         yield _smooth(case, equilibrium, claim)
     elif equilibrium.fixed_for_all or where is None:
-        yield _regular(case, claim, [(equilibrium, parameter_box(case, claim.over))])
+        yield _regular(case, claim, [(equilibrium, _all_parameters(case, hull_of(whole, cells)))])
     else:
         places = [(where(box), box) for box in cells]
         yield _regular(case, claim, [(e, _all_parameters(case, box)) for e, box in places if e is not None])
@@ -159,7 +163,8 @@ def _spectrum(case: Case, equilibrium: Equilibrium, claim: MatrixClaim, where: W
         if place is None or (moves and place.course is None):
             why = "it is not proved where the equilibrium of a cell lies"
             break
-        if claim.over != NOMINAL and (isinstance(whole, str) or whole.local):
+        fits = not isinstance(whole, str) and not whole.local and whole.box.contains(cell.parameters)
+        if claim.over != NOMINAL and not fits:
             forms = linear_forms(case, place, claim.over, cell.parameters)
         if isinstance(forms, str):
             why = forms
@@ -202,6 +207,38 @@ def cell_holds(forms: LinearForms, cell: MatrixCell, region: SpectralRegion, lev
     return all(
         _is_definite(coefficient, forms, variables)
         for _, coefficient in bernstein_coefficients(form, forms.ring, cell.parameters)
+    )
+
+
+def hull_of(whole: Box, cells: Sequence[Box]) -> Box:
+    """The smallest box that holds `whole` and all cells; cells that are not over the same parameters are left out."""
+    sides = []
+    for i, side in enumerate(whole.intervals):
+        ends = [side.bounds, *(c.intervals[i].bounds for c in cells if c.names == whole.names and c.is_bounded)]
+        sides.append(Interval(min(e[0] for e in ends), max(e[1] for e in ends)))
+    return Box(whole.names, tuple(sides))
+
+
+def proved_scale(whole: Box, cells: Sequence[Box]) -> Fraction:
+    """The largest factor, at least 1, by which `whole` may be widened about its middle and is still covered by `cells`.
+
+    Only the factor at which the widened box meets the hull of the cells is looked at.
+    """
+    hull = hull_of(whole, cells)
+    ratios = [
+        min(side.middle - outer.bounds[0], outer.bounds[1] - side.middle) / (side.width / 2)
+        for side, outer in zip(whole.intervals, hull.intervals, strict=True)
+        if side.width
+    ]
+    scale = min(ratios, default=Fraction(1))
+    return scale if scale > 1 and covers_exactly(list(cells), widened(whole, scale)) else Fraction(1)
+
+
+def widened(whole: Box, scale: Fraction) -> Box:
+    """The box scaled about its middle."""
+    return Box(
+        whole.names,
+        tuple(Interval(i.middle - scale * i.width / 2, i.middle + scale * i.width / 2) for i in whole.intervals),
     )
 
 

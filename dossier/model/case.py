@@ -193,6 +193,13 @@ def at_combination(case: Case, values: Mapping[str, Fraction]) -> Case:
     return replace(case, model=replace(case.model, parameters=parameters))
 
 
+def with_spreads(case: Case, box: Box) -> Case:
+    """`case` with other spreads of the parameters in `box`."""
+    sides = dict(box.items())
+    parameters = tuple(replace(p, spread=sides.get(p.name, p.spread)) for p in case.model.parameters)
+    return replace(case, model=replace(case.model, parameters=parameters))
+
+
 def value_of(quantity: Quantity) -> Ball:
     """The SI value (dB for gains) of a stated quantity; exact unless it carries pi."""
     if quantity.pi_power == 0:

@@ -69,17 +69,32 @@ def bernstein_coefficients(
         k = tuple(int(exponents[place]) for place in places)
         rest = tuple(0 if i in places else int(e) for i, e in enumerate(exponents))
         power_form.setdefault(k, {})[rest] = coefficient
-    parts = {k: ring.context.from_dict(d) for k, d in power_form.items()}
-    for index in product(*(range(d + 1) for d in degrees)):
-        total = ring.constant(Fraction(0))
-        for k, part in parts.items():
-            if all(a <= b for a, b in zip(k, index, strict=True)):
-                weight = prod(
-                    (Fraction(comb(b, a), comb(d, a)) for a, b, d in zip(k, index, degrees, strict=True)),
-                    start=Fraction(1),
-                )
-                total = total + part * ring.constant(weight)
-        yield index, total
+    zero = ring.constant(Fraction(0))
+    table = {
+        k: ring.context.from_dict(power_form[k]) if k in power_form else zero
+        for k in product(*(range(d + 1) for d in degrees))
+    }
+    # One parameter after the other: the weights of the double sum are products over the parameters.
+    for axis, degree in enumerate(degrees):
+        weights = [
+            [ring.constant(Fraction(comb(b, a), comb(degree, a))) for a in range(b + 1)] for b in range(degree + 1)
+        ]
+        table = {
+            index: _weighted(table, index, axis, weights[index[axis]]) for index in table
+        }  # fmt: skip
+    yield from table.items()
+
+
+def _weighted(
+    table: Mapping[Exponents, fmpq_mpoly], index: Exponents, axis: int, weights: list[fmpq_mpoly]
+) -> fmpq_mpoly:
+    """The sum of the entries up to `index` along one axis, each with its weight."""
+    total = None
+    for place, weight in enumerate(weights):
+        part = table[(*index[:axis], place, *index[axis + 1 :])]
+        if part:
+            total = part * weight if total is None else total + part * weight
+    return table[index] * 0 if total is None else total
 
 
 def _on_unit_box(polynomial: fmpq_mpoly, ring: Ring, parameters: Box) -> fmpq_mpoly:

@@ -15,6 +15,10 @@ Strength = Literal["exact", "enclosed", "floating", "sampled"]
 WEAKEST_STRENGTH_FIRST: Final[tuple[Strength, ...]] = ("sampled", "floating", "enclosed", "exact")
 
 
+SCALE: Final = "proved scale of the spreads"
+"""Fact of a claim over tolerances: it holds on the spreads widened about their middles by this factor, at least 1."""
+
+
 @dataclass(frozen=True, slots=True)
 class Enclosure:
     """A measured quantity as a closed enclosure in `unit`; an end None: no finite value exists there."""

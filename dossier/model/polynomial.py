@@ -13,7 +13,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, field
 from fractions import Fraction
-from functools import reduce
+from functools import cache, reduce
 
 from flint import Ordering, fmpq_mpoly, fmpq_mpoly_ctx
 
@@ -27,6 +27,11 @@ from dossier.model.taylor import expand_functions
 Exponents = tuple[int, ...]
 
 
+@cache
+def _context(size: int) -> fmpq_mpoly_ctx:
+    return fmpq_mpoly_ctx.get(tuple(f"g{i}" for i in range(size)), Ordering.degrevlex)
+
+
 @dataclass(frozen=True)
 class Ring:
     """Q[names]; `gens` maps a name to its polynomial."""
@@ -35,8 +40,8 @@ class Ring:
 
     @property
     def context(self) -> fmpq_mpoly_ctx:
-        """The flint context (cached by flint itself)."""
-        return fmpq_mpoly_ctx.get(tuple(f"g{i}" for i in range(len(self.names))), Ordering.degrevlex)
+        """The flint context, one per number of generators."""
+        return _context(len(self.names))
 
     def gen(self, name: str) -> fmpq_mpoly:
         """The polynomial `name`."""

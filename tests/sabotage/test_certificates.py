@@ -23,7 +23,7 @@ KINDS = {
     "combination": ("rest", "W-C1"),
     "gram": ("hold", "V2"),
     "sturm": ("rest", "M-u"),
-    "cover": ("capped", "V2-nominal"),
+    "cover": ("capped", "V2-nominal-boxes"),
     "cells": ("swing", "V2-cells"),
     "branch": ("loaded", "B1"),
     "absence": ("overloaded", "N1"),
@@ -181,7 +181,7 @@ def test_a_set_proved_at_nominal_is_no_evidence_over_tolerances(damaged, capsys)
 
 def test_a_nominal_set_relabelled_as_one_over_tolerances_is_refused(damaged, capsys):
     folder = damaged("capped")
-    rewrite(folder, "certificates/capped.V2-nominal.json", lambda d: d["claim"].update(over="tolerances"))
+    rewrite(folder, "certificates/capped.V2-nominal-boxes.json", lambda d: d["claim"].update(over="tolerances"))
     honest = make_everything_true_but_the_verdicts(folder, "capped")
     assert honest["C1"]["verdict"] == "not established"
     assert any("capped.C1" in line for line in refusals(folder, capsys))

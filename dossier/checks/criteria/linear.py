@@ -23,7 +23,7 @@ from dossier.model.affine import spread_box
 from dossier.model.case import NOMINAL, Case, Criterion, at_combination
 from dossier.model.claim import CombinationClaim, MatrixClaim, RouthClaim, SpectralRegion
 from dossier.model.equilibrium import Equilibrium
-from dossier.model.finding import Enclosure, Finding
+from dossier.model.finding import SCALE, Enclosure, Finding
 from dossier.model.polynomial import NotRational
 
 QUANTITY: Final = {
@@ -174,8 +174,15 @@ def _by_matrix(knowledge: Knowledge, criterion: Criterion) -> Iterator[Finding]:
         if strict and serves and finding is not None:
             yield conclude(
                 knowledge, criterion, finding.theorem, finding.statement, (knowledge.place, *finding.premises),
-                (claim.identifier,), _value_over(knowledge, criterion, claim),
+                (claim.identifier,), _value_over(knowledge, criterion, claim) | _scale(criterion, finding),
             )  # fmt: skip
+
+
+def _scale(criterion: Criterion, finding: Finding) -> dict[str, Enclosure]:
+    """By how much the spreads may be widened with the criterion still proved."""
+    fact = finding.facts.get(SCALE)
+    wider = fact is not None and fact.lower is not None and fact.lower > 1
+    return {SCALE: fact} if fact is not None and wider and criterion.over != NOMINAL else {}
 
 
 def _value_over(knowledge: Knowledge, criterion: Criterion, claim: MatrixClaim) -> dict[str, Enclosure]:

@@ -3,8 +3,10 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
+from fractions import Fraction
 
 from dossier.model.dossier import PointEvidence
+from dossier.model.finding import SCALE
 from dossier.report import numbers, units, wording
 from dossier.report.blocks import (
     Block,
@@ -127,6 +129,14 @@ def _card_facts(context: Context, point: PointEvidence, identifier: str) -> tupl
         left = f", reserve {gauge.text}" if gauge is not None else ""
         words = f"required {asked}, obtained {value}{left} ("
         facts.append(("Value", rich(words, context.links(outcome.evidence), ")")))
+    scales = [
+        f for f in point.findings if f.subject == identifier and f.result == "proved" and SCALE in f.facts
+    ]  # fmt: skip
+    if outcome.verdict == "proved" and scales:
+        widest = max(scales, key=lambda f: f.facts[SCALE].lower or Fraction(1))
+        factor = numbers.below(widest.facts[SCALE].lower or Fraction(1))
+        words = f"still proved with every spread {factor} times as wide about its middle ("
+        facts.append(("Tolerance reserve", rich(words, context.links(widest.evidence), ")")))
     if outcome.sub_scope:
         facts.append(("Proved part", (outcome.sub_scope,)))
     if outcome.counter_example:
