@@ -12,7 +12,7 @@ from flint import arb
 
 from dossier.model.ball import WORKING_BITS, evaluate, precision
 from dossier.model.case import Candidate
-from dossier.model.expression import PI, Expression, div, mul, number, power, substitute, symbol
+from dossier.model.expression import PI, Expression, div, mul, names, number, power, substitute, symbol
 from dossier.project.dimensions import Scope, check_formula
 from dossier.project.faults import Ledger
 from dossier.project.models import ModelReading
@@ -44,11 +44,16 @@ def read_candidate(entry: CandidateEntry | None, reading: ModelReading, ledger: 
     units = [reading.units[n] for n in states]
     if len(ledger.faults) > before or checked is None or level is None or any(u is None for u in units):
         return None
+    if names(checked.expression) - set(states):
+        return None
     places = {n: _in_units(n, u) for n, u in zip(states, units, strict=True) if u is not None}
     return Candidate(substitute(checked.expression, places), level.factor, str(entry.function))
 
 
 def _is_nonzero_at_rest(function: Expression, states: tuple[str, ...]) -> bool:
+    """Proved; False too where a name is unknown, which happens only beside a table that could not be read."""
+    if names(function) - set(states):
+        return False
     with precision(WORKING_BITS):
         value = evaluate(function, dict.fromkeys(states, arb(0)))
     return bool(value.is_finite() and (value > 0 or value < 0))

@@ -138,12 +138,14 @@ def thin(points: Sequence[Point], deviation: float = LEAST_DEVIATION) -> list[Po
 
 
 def _farthest(points: Sequence[Point], first: int, last: int) -> tuple[int, float]:
+    """The point between `first` and `last` that lies farthest from the straight piece between them."""
     (x, y), (u, v) = points[first], points[last]
-    length = math.hypot(u - x, v - y)
+    squared = (u - x) ** 2 + (v - y) ** 2
     place, most = first, 0.0
     for i in range(first + 1, last):
         a, b = points[i][0] - x, points[i][1] - y
-        distance = abs((u - x) * b - (v - y) * a) / length if length > 1e-9 else math.hypot(a, b)  # noqa: PLR2004
+        share = min(1.0, max(0.0, ((u - x) * a + (v - y) * b) / squared)) if squared > 0 else 0.0
+        distance = math.hypot(a - share * (u - x), b - share * (v - y))
         if distance > most:
             place, most = i, distance
     return place, most

@@ -15,8 +15,8 @@ MODULES = {p.relative_to(ROOT).as_posix(): p for p in sorted(PACKAGE.rglob("*.py
 
 SEEN_BY = {
     "cvxpy": ("dossier/search/",),
-    "clarabel": (),
-    "scs": (),
+    "clarabel": ("dossier/search/solver_process.py",),
+    "scs": ("dossier/search/solver_process.py",),
     "scipy": ("dossier/search/",),
     "sympy": (),
     "weasyprint": ("dossier/report/pdf.py",),

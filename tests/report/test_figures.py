@@ -11,7 +11,7 @@ from xml.etree import ElementTree
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import example, given
 from hypothesis import strategies as st
 from loop_cases import equilibrium_at, loop_case
 
@@ -367,6 +367,7 @@ def test_ticks_are_evenly_spaced_inside_the_range(low, width, about):
     assert about / 2.6 <= (high - low) / (gaps[0] if len(gaps) else step) <= about * 2.6
 
 
+@example([(43.0, 0.0), (137.0, 167.0), (137.0, 166.0)])
 @given(st.lists(st.tuples(st.floats(0, 640), st.floats(0, 300)), min_size=2, max_size=40))
 def test_thinning_moves_no_line_further_than_allowed(points):
     kept = thin(points, 0.5)
