@@ -21,6 +21,9 @@ from typing import Final, cast
 from dossier import __version__
 from dossier.exits import FAULTY_INPUT, PROGRAM_FAULT, PROVED, REFUSED
 
+STARTER_NAMES: Final = ("axis", "equilibria", "linear", "regions", "margins")
+"""As in `dossier.report.locate`, which is not loaded for the help."""
+
 EFFORT_NAMES: Final = ("quick", "standard", "thorough")
 SEARCHING: Final = ("dossier.search", "cvxpy", "clarabel", "scs", "scipy", "sympy", "weasyprint")
 """What a recheck must work without: searches, solvers and the PDF library."""
@@ -80,6 +83,10 @@ def _parser() -> argparse.ArgumentParser:
     inspect.set_defaults(run=_inspect)
     new = commands.add_parser("new", help="write a commented project file to start from")
     new.add_argument("folder", type=Path, metavar="DIR", help="folder of the new project")
+    new.add_argument(
+        "--about", choices=STARTER_NAMES, default="axis",
+        help="what the example in it asks: axis (some of everything, the default), or one family of claims",
+    )  # fmt: skip
     new.set_defaults(run=_new)
     schema = commands.add_parser("schema", help="print the format as a JSON Schema, for editors")
     schema.set_defaults(run=_schema)
@@ -141,7 +148,7 @@ def _new(options: argparse.Namespace) -> int:
 
     terminal = Terminal()
     try:
-        written = write_new_project(options.folder, starter())
+        written = write_new_project(options.folder, starter(options.about))
     except FileExistsError as error:
         terminal.error(f"{error.filename} exists already; nothing was written")
         return FAULTY_INPUT

@@ -24,9 +24,13 @@ def templates(candidates: tuple[Path, ...] = CANDIDATES) -> Path:
     raise FileNotFoundError(f"the dossier's templates are missing: {ENTRY} was looked for in {places}")
 
 
-def starter() -> bytes:
-    """The commented project file that a new project starts from."""
-    return (templates() / "starter.yaml").read_bytes()
+STARTERS = ("axis", "equilibria", "linear", "regions", "margins")
+"""Commented projects to start from: one with everything, and one for each family of claims."""
+
+
+def starter(name: str) -> bytes:
+    """A commented project file that a new project starts from; `name` is one of `STARTERS`."""
+    return (templates() / "starters" / f"{name}.yaml").read_bytes()
 
 
 def font(name: str) -> Path:

@@ -12,6 +12,12 @@ from pathlib import Path
 
 import pytest
 
+from dossier.cli import STARTER_NAMES
+from dossier.evidence.provenance import Stopwatch
+from dossier.pipeline import build_evidence
+from dossier.project.reader import Project, read_project
+from dossier.report.locate import STARTERS, templates
+
 ROOT = Path(__file__).parents[2]
 FAULTS = ROOT / "tests" / "faults"
 
@@ -300,6 +306,21 @@ def test_recheck_of_what_is_no_whole_dossier_is_exit_code_four(damage, built, tm
     done = dossier("recheck", folder)
     assert done.returncode == 4
     assert "refused" in done.stdout and "Traceback" not in done.stderr
+
+
+@pytest.mark.parametrize("about", STARTERS)
+def test_every_starter_is_understood_and_all_it_asks_is_proved(tmp_path, about):
+    assert dossier("new", tmp_path / about, "--about", about).returncode == 0
+    project = read_project(tmp_path / about / "project.yaml")
+    assert isinstance(project, Project) and project.warnings == ()
+    evidence = build_evidence(project, project.cases, "quick", "", lambda *_: None, Stopwatch())
+    verdicts = {o.identifier: o.verdict for p in evidence.points for o in p.outcomes}
+    assert set(verdicts.values()) == {"proved"}, verdicts
+
+
+def test_the_help_names_the_starters_there_are():
+    assert STARTER_NAMES == STARTERS
+    assert sorted(f"{n}.yaml" for n in STARTERS) == sorted(p.name for p in (templates() / "starters").iterdir())
 
 
 def test_a_new_project_is_sound_and_proves_what_it_asks_for(tmp_path):
