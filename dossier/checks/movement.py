@@ -61,7 +61,9 @@ class Movement:
             return None
         found = alone_on(family, cell, near.course.at(values))
         # The same equilibrium at the middle of the cell, hence on all of it (as in `same_on`).
-        if found is None or not found.holds(values, near.state_at(values)):
+        if found is None or not (
+            found.holds(values, near.state_at(values)) or near.holds(values, found.state_at(values))
+        ):
             return None
         return self.equilibrium.along(found.course)
 
