@@ -91,10 +91,13 @@ def _premises(case: Case, equilibrium: Equilibrium, claim: MatrixClaim, where: W
         return
     whole = Box((), ()) if claim.over == NOMINAL else spread_box(case)
     cells = [c.parameters for c in claim.cells]
+    complete = covers_exactly(cells, whole)
     yield _shown(
-        "vertices", "the cells cover the parameter box", covers_exactly(cells, whole), claim, "exact",
+        "vertices", "the cells cover the parameter box", complete, claim, "exact",
         f"{len(cells)} cell{'' if len(cells) == 1 else 's'}",
     )  # fmt: skip
+    if not complete:
+        return
     if claim.over != NOMINAL and any(p.varies and p.has_spread for p in case.model.parameters):
         common = len({c.matrix for c in claim.cells}) == 1 and not any(c.slopes for c in claim.cells)
         yield _shown("common", "one P serves all cells, as parameters vary during a motion", common, claim, "exact")

@@ -17,7 +17,7 @@ _NAME: Final = re.compile(r"[A-Za-z_][A-Za-z0-9_]*")
 _TAKEN: Final = (*FUNCTIONS, "pi")
 
 
-EVIDENCE_NAME: Final = re.compile(r"[ELRMVPW][0-9]*")
+EVIDENCE_NAME: Final = re.compile(r"[BELMNPRVW][0-9]*|nominal|tight|free|cells|boxes|wide|given")
 """Names under an operating point that the program gives to its own evidence: E1, L1, R1, M1, V2, ..."""
 
 
@@ -27,7 +27,7 @@ def check_criterion_names(names: Iterable[Text], ledger: Ledger) -> None:
         if not name.is_absent and EVIDENCE_NAME.fullmatch(name) is not None:
             ledger.fault(
                 name, f"{name} is how the dossier names its own evidence", expected="another name for the criterion",
-                hint=f"such as C{name[1:] or 1}",
+                hint=f"such as C{name[1:] or 1}" if name[1:].isdigit() or len(name) == 1 else f"such as {name}_case",
             )  # fmt: skip
 
 

@@ -306,6 +306,7 @@ def test_rules_of_reading_are_kept(tmp_path: Path, old: str, new: str, message: 
         ("(u - b*v)/m", "(u - b*v)/(m*(2*x - 1)*x0)", "becomes 0"),
         ("(u - b*v)/m", "(sat(u, k*x0, -k*x0) - b*v)/m", "the lower limit lies above the upper one"),
         ("C1: {claim: attraction}", "E1: {claim: attraction}", "names its own evidence"),
+        ("C1: {claim: attraction}", "cells: {claim: attraction}", "names its own evidence"),
         ("C1: {claim: attraction}", "C1: {claim: phase_margin, loop: u, at_least: 40 %}", "a percentage is a ratio"),
         ("C1: {claim: attraction}", "C1: {claim: global_attraction}", "the model has a domain"),
         ("models:\n", "assumptions: {A 1: {text: t, basis: b, covers: [cart]}}\nmodels:\n", "an assumption"),

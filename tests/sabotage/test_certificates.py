@@ -112,7 +112,7 @@ def scaled(field, factor):
 
 
 FORGERIES = {
-    "a faster decay than the loop has": ("rest", "P-C1", scaled("level", 2), "C1"),
+    "a faster decay than the loop has": ("rest", "P-C1 P-C1-wide", scaled("level", 2), "C1"),
     "a set far larger than the proved one": ("hold", "V2 V2-tight", scaled("level", 100), "C1"),
     "a set beyond the next equilibrium": ("lean", "V2-nominal V2-nominal-tight", scaled("level", 50), "C1"),
     "a combination within every bound": (
@@ -150,7 +150,7 @@ FORGERIES = {
     ),
     "a crossing of the unit circle left out": ("rest", "M-u", lambda c: c.update(phase_crossings=[]), "C2"),
     "an inequality for half of the parameter box": (
-        "rest", "P-C1", lambda c: c["cells"][0]["parameters"]["sides"][0].__setitem__(1, "10"), "C1",
+        "rest", "P-C1 P-C1-wide", lambda c: c["cells"][0]["parameters"]["sides"][0].__setitem__(1, "10"), "C1",
     ),
 }  # fmt: skip
 
